@@ -1,0 +1,102 @@
+package rules
+
+import "time"
+
+// A Site is one site file: a network, its stations and the rules that hold for them.
+type Site struct {
+	Network  Network
+	Stations []Station // in the file's order; ids are unique
+	Digest   string    // sha256, hex, of the canonical form of all that can change a row
+}
+
+// Station gives the station of an id, nil if there is none.
+func (s *Site) Station(id string) *Station {
+	for i := range s.Stations {
+		if s.Stations[i].ID == id {
+			return &s.Stations[i]
+		}
+	}
+	return nil
+}
+
+// A Network is the stations under one configuration.
+type Network struct {
+	ID, Name, Contact, Licence, Citation string
+}
+
+// A Station is a place with a position and instruments.
+type Station struct {
+	ID           string // [a-z0-9_-]{1,40}: it stands in broker subjects and folder names
+	Name         string
+	LatitudeDeg  float64 // north positive, -90..90
+	LongitudeDeg float64 // east positive, -180..180
+	ElevationM   float64 // above sea level, -430..9000
+	Time         Timing
+	Horizon      []HorizonPoint // sorted by azimuth; empty is a flat horizon
+	Instruments  []Instrument   // in the file's order; ids are unique
+	Weather      []WeatherInput
+	Housekeeping []HousekeepingInput
+	Limits       Limits // the published ones with the network's and the station's overrides applied
+	Line         int    // of the site file
+}
+
+// Timing is how a station's logger stamps its records.
+type Timing struct {
+	LabelEnd bool          // the stamp is the end of the interval, not its start
+	Interval time.Duration // 1 s to 60 s between records
+}
+
+// A HorizonPoint is a corner of the horizon mask, degrees; azimuth from north, clockwise.
+type HorizonPoint struct{ AzimuthDeg, ElevationDeg float64 }
+
+// An Instrument is one physical device, or the place of one: an exchange is a new serial in its calibrations.
+type Instrument struct {
+	ID           string
+	Measures     Quantity
+	Class        string // ISO 9060:2018 "A", "B", "C"; empty if not classified
+	Primary      bool   // of two that measure one quantity, the one whose value is used first
+	Input        Input
+	Calibrations []Calibration // sorted by From; no overlap
+	Shaded       bool          // a pyrgeometer kept out of the beam
+	Line         int
+}
+
+// An Input says which channels an instrument reads and in which unit.
+type Input struct {
+	Signal     string  // channel of the thermopile's voltage; empty if Irradiance is given
+	SignalUnit string  // "mV", "uV" or "V"
+	Irradiance string  // channel that already holds the quantity's own unit; empty if Signal is given
+	Case       string  // channel of the body temperature of a pyrgeometer
+	CaseUnit   string  // "degC" (default), "K", "ohm_10k" (thermistor) or "ohm_pt100"
+	Dome       string  // channel of the dome temperature; empty if the dome is coupled or not measured
+	DomeUnit   string  // as CaseUnit
+	SignalMin  float64 // the logger's range in the signal's unit; NaN if not stated
+	SignalMax  float64
+}
+
+// A Calibration is one period of an instrument's calibration history.
+type Calibration struct {
+	From, To           time.Time // half open; zero To is open
+	Serial             string
+	SensitivityUVPerW  float64 // uV/(W/m2)
+	UncertaintyPercent float64 // k=2
+	Scale              string  // "WRR", "WISG", "SI" or empty
+	Certificate        string
+	K1, K2, K3         float64 // pyrgeometer coefficients after Philipona et al. 1995: 0, 1, 0 is the one-temperature form
+	ZeroWm2            float64 // subtracted after conversion
+	TemperatureCoeff   []float64
+	Line               int
+}
+
+// A WeatherInput is one weather channel.
+type WeatherInput struct {
+	Quantity Quantity
+	Channel  string
+	Unit     string // "degC", "K", "%", "1", "hPa", "Pa", "m/s"
+}
+
+// A HousekeepingInput is one housekeeping channel with its sound range; NaN is unbounded.
+type HousekeepingInput struct {
+	Name, Channel string
+	Low, High     float64
+}
