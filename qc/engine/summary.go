@@ -1,0 +1,18 @@
+package engine
+
+import "fluxwarden/qc/fault"
+
+// HistoryDays is how many day summaries the judge looks back on: what it has learnt by a day is a function of these alone.
+const HistoryDays = 30
+
+// HindsightDays bounds how far back before its raising an episode may reach, and so which days' verdicts it can change.
+const HindsightDays = 10
+
+// A DaySummary is all that later days may know of a day: what was learnt, quantised, the episodes that ended in it and those
+// still open at its end. It is stored as JSON; fields are only added.
+type DaySummary struct {
+	Station string          `json:"station"`
+	Day     int64           `json:"day"`
+	Open    []fault.Episode `json:"open,omitempty"`
+	Closed  []fault.Episode `json:"closed,omitempty"`
+}
