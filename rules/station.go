@@ -6,7 +6,8 @@ import "time"
 type Site struct {
 	Network  Network
 	Stations []Station // in the file's order; ids are unique
-	Digest   string    // sha256, hex, of the canonical form of all that can change a row
+	Digest   string    // sha256, hex, of the canonical form of all that can change a row; the stations' order is not part of it
+	Warnings []Problem // what is allowed but looks like a slip, in the order of lines
 }
 
 // Station gives the station of an id, nil if there is none.
@@ -36,8 +37,19 @@ type Station struct {
 	Instruments  []Instrument   // in the file's order; ids are unique
 	Weather      []WeatherInput
 	Housekeeping []HousekeepingInput
+	Sky          Sky
 	Limits       Limits // the published ones with the network's and the station's overrides applied
+	Digest       string // sha256, hex, of the station's own part: a change elsewhere in the file leaves it alone
 	Line         int    // of the site file
+}
+
+// Sky is the clear-sky model of a station and what it assumes where nothing is learnt; NaN where the file says nothing.
+type Sky struct {
+	Model   string  // "bird", "ineichen" or "solis"
+	OzoneCm float64 // total column, 0.05..0.7
+	WaterCm float64 // precipitable water, 0.01..10
+	AOD     float64 // broadband aerosol optical depth, 0..5
+	Albedo  float64 // of the ground, 0..1
 }
 
 // Timing is how a station's logger stamps its records.
@@ -51,10 +63,11 @@ type HorizonPoint struct{ AzimuthDeg, ElevationDeg float64 }
 
 // An Instrument is one physical device, or the place of one: an exchange is a new serial in its calibrations.
 type Instrument struct {
-	ID           string
+	ID           string // [A-Za-z0-9_-]{1,40}
+	Serial       string // for calibrations that state none
 	Measures     Quantity
-	Class        string // ISO 9060:2018 "A", "B", "C"; empty if not classified
-	Primary      bool   // of two that measure one quantity, the one whose value is used first
+	Class        string // ISO 9060:2018 "A", "B", "C" (a pyrheliometer also "AA"); empty if not classified
+	Primary      bool   // of those that measure one quantity, the one whose value is used first; a single one is primary
 	Input        Input
 	Calibrations []Calibration // sorted by From; no overlap
 	Shaded       bool          // a pyrgeometer kept out of the beam
@@ -76,15 +89,15 @@ type Input struct {
 
 // A Calibration is one period of an instrument's calibration history.
 type Calibration struct {
-	From, To           time.Time // half open; zero To is open
+	From, To           time.Time // UTC, half open; zero To is open; one without an end in the file ends where the next begins
 	Serial             string
-	SensitivityUVPerW  float64 // uV/(W/m2)
-	UncertaintyPercent float64 // k=2
+	SensitivityUVPerW  float64 // uV/(W/m2), for par uV/(umol/(m2 s)); above zero, 0 if the logger converts and none is stated
+	UncertaintyPercent float64 // k=2; 0 if not stated
 	Scale              string  // "WRR", "WISG", "SI" or empty
 	Certificate        string
-	K1, K2, K3         float64 // pyrgeometer coefficients after Philipona et al. 1995: 0, 1, 0 is the one-temperature form
-	ZeroWm2            float64 // subtracted after conversion
-	TemperatureCoeff   []float64
+	K1, K2, K3         float64   // pyrgeometer coefficients after Philipona et al. 1995: 0, 1, 0 is the one-temperature form
+	ZeroWm2            float64   // subtracted after conversion
+	TemperatureCoeff   []float64 // a, b, ...: sensitivity times 1 + a (T-20) + b (T-20)^2 + ..., T in degrees C
 	Line               int
 }
 
