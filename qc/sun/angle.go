@@ -35,3 +35,5 @@ func wrap360(deg float64) float64 {
 
 // wrap180 brings an angle into [-180, 180).
 func wrap180(deg float64) float64 { return wrap360(deg+180) - 180 }
+
+func sqrt(x float64) float64 { return math.Sqrt(x) }
