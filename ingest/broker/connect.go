@@ -1,0 +1,114 @@
+package broker
+
+import (
+	"context"
+	"fmt"
+	"math/rand/v2"
+	"time"
+
+	"github.com/nats-io/nats.go"
+	"github.com/nats-io/nats.go/jetstream"
+)
+
+const (
+	retryFirst     = 100 * time.Millisecond
+	retryMost      = 10 * time.Second
+	connectTimeout = 5 * time.Second
+	reconnectBytes = 8 << 20 // written while there is no connection; more is refused
+)
+
+// A State is what is known of the connection.
+type State struct {
+	Connected bool
+	URL       string
+	Err       error // why not, or what went wrong on a connection that still stands
+	Closed    bool  // for good: the program has closed it, or the broker will not have it
+}
+
+// ConnectSettings say where the broker is and who we are.
+type ConnectSettings struct {
+	URL         string        // nats://host:port, several with commas; not used with Embedded
+	Embedded    *Embedded     // connect inside the process
+	Credentials string        // file with a JWT and its key; optional
+	Options     []nats.Option // further ones, such as TLS
+	Name        string        // of this connection, for the broker's own lists
+	OnState     func(State)   // called from the client's goroutines; optional
+}
+
+// Broker is a connection that comes back by itself, and JetStream on it.
+type Broker struct {
+	Conn *nats.Conn
+	JS   jetstream.JetStream
+}
+
+// Connect connects and goes on trying for ever, with growing and jittered pauses, also where the broker is down at the start.
+// It returns at once; what becomes of it is told to OnState.
+func Connect(s ConnectSettings) (*Broker, error) {
+	tell := s.OnState
+	if tell == nil {
+		tell = func(State) {}
+	}
+	state := func(err error) func(*nats.Conn) {
+		return func(c *nats.Conn) {
+			tell(State{Connected: c.IsConnected(), URL: c.ConnectedUrlRedacted(), Err: err, Closed: c.IsClosed()})
+		}
+	}
+	options := []nats.Option{
+		nats.Name(s.Name), nats.RetryOnFailedConnect(true), nats.MaxReconnects(-1), nats.Timeout(connectTimeout),
+		nats.CustomReconnectDelay(retryDelay), nats.PingInterval(pingInterval), nats.MaxPingsOutstanding(2),
+		nats.ReconnectBufSize(reconnectBytes),
+		nats.ConnectHandler(state(nil)), nats.ReconnectHandler(state(nil)), nats.ClosedHandler(func(c *nats.Conn) { state(c.LastError())(c) }),
+		nats.DisconnectErrHandler(func(c *nats.Conn, err error) { state(err)(c) }),
+		nats.ErrorHandler(func(c *nats.Conn, _ *nats.Subscription, err error) { state(err)(c) }),
+	}
+	if s.Credentials != "" {
+		options = append(options, nats.UserCredentials(s.Credentials))
+	}
+	url := s.URL
+	if s.Embedded != nil {
+		url = nats.DefaultURL
+		options = append(options, s.Embedded.InProcess())
+	}
+	conn, err := nats.Connect(url, append(options, s.Options...)...)
+	if err != nil {
+		return nil, fmt.Errorf("broker: %s: %w: is the address right", s.URL, err)
+	}
+	js, err := jetstream.New(conn)
+	if err != nil {
+		conn.Close()
+		return nil, fmt.Errorf("broker: jetstream: %w", err)
+	}
+	return &Broker{conn, js}, nil
+}
+
+// Close ends the connection for good.
+func (b *Broker) Close() { b.Conn.Close() }
+
+// retryDelay doubles from a tenth of a second to ten, each with up to half of it added by chance, so that many
+// stations do not come back at one moment.
+func retryDelay(attempts int) time.Duration {
+	d := retryMost
+	if attempts < 7 {
+		d = retryFirst << max(attempts, 0)
+	}
+	return d + rand.N(d/2)
+}
+
+// retry calls f until it succeeds, or says that trying again is of no use, or ctx ends.
+func retry(ctx context.Context, f func(context.Context) (again bool, err error)) error {
+	for attempt := 0; ; attempt++ {
+		once, cancel := context.WithTimeout(ctx, connectTimeout)
+		again, err := f(once)
+		cancel()
+		if err == nil || !again {
+			return err
+		}
+		timer := time.NewTimer(retryDelay(attempt))
+		select {
+		case <-ctx.Done():
+			timer.Stop()
+			return fmt.Errorf("%w (last: %w)", ctx.Err(), err)
+		case <-timer.C:
+		}
+	}
+}

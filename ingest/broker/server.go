@@ -1,0 +1,135 @@
+package broker
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"log/slog"
+	"os"
+	"path/filepath"
+	"time"
+
+	"github.com/nats-io/nats-server/v2/server"
+	"github.com/nats-io/nats.go"
+)
+
+// Limits and times of the embedded server.
+const (
+	// MessageBytesMax is what the server takes from any connection: a journal frame of many readings must fit. A client
+	// that sends more is cut off by the protocol; one that sends more than a payload may have gets an answer from the gate.
+	MessageBytesMax  = 8 << 20
+	memoryBytesMax   = 64 << 20 // for streams in memory: there are none of ours
+	readyWait        = 30 * time.Second
+	connectionsMax   = 8192
+	pingInterval     = 10 * time.Second
+	clientPendingMax = 64 << 20
+)
+
+// EmbeddedSettings are what the embedded server is given. None has a default but Name.
+type EmbeddedSettings struct {
+	Name       string // of the server; empty is "fluxwarden"
+	StoreDir   string // made where it is absent
+	Listen     bool   // take TCP connections; without it there are only those of this process
+	Host       string // to listen on; empty is 127.0.0.1
+	Port       int    // to listen on; 0 is any free one
+	StoreBytes int64  // all streams together; the streams' own bounds must fit in
+	Log        *slog.Logger
+}
+
+// Embedded is a NATS server in this process, with JetStream on disk and every write synced.
+type Embedded struct {
+	server *server.Server
+	unlock func()
+}
+
+// StartEmbedded starts the server and waits until it answers. One store directory is for one process: a second one is
+// refused, since two would overwrite each other's files.
+func StartEmbedded(ctx context.Context, s EmbeddedSettings) (*Embedded, error) {
+	if s.StoreDir == "" || s.StoreBytes <= 0 {
+		return nil, errors.New("broker: settings: a store directory and its size in bytes are needed")
+	}
+	if err := os.MkdirAll(s.StoreDir, 0o750); err != nil {
+		return nil, fmt.Errorf("broker: store directory: %w: make it writable for uid %d, or name another", err, os.Getuid())
+	}
+	unlock, err := lockFile(filepath.Join(s.StoreDir, "lock"))
+	if err != nil {
+		return nil, fmt.Errorf("broker: store directory %s: %w", s.StoreDir, err)
+	}
+	srv, err := server.NewServer(embeddedOptions(s))
+	if err != nil {
+		unlock()
+		return nil, fmt.Errorf("broker: embedded server: %w", err)
+	}
+	log := &serverLog{log: s.Log}
+	srv.SetLogger(log, false, false)
+	srv.Start()
+	e := &Embedded{srv, unlock}
+	if err := waitReady(ctx, srv); err != nil {
+		e.Stop()
+		if last := log.lastError(); last != "" {
+			err = fmt.Errorf("%w: %s", err, last)
+		}
+		return nil, fmt.Errorf("broker: embedded server on %s:%d: %w", s.host(), s.Port, err)
+	}
+	if !srv.JetStreamEnabled() {
+		e.Stop()
+		return nil, fmt.Errorf("broker: embedded server: its store in %s could not be opened: %s", s.StoreDir, log.lastError())
+	}
+	return e, nil
+}
+
+func (s *EmbeddedSettings) host() string {
+	if s.Host == "" {
+		return "127.0.0.1"
+	}
+	return s.Host
+}
+
+func embeddedOptions(s EmbeddedSettings) *server.Options {
+	name, port := s.Name, s.Port
+	if name == "" {
+		name = "fluxwarden"
+	}
+	if port == 0 {
+		port = server.RANDOM_PORT
+	}
+	return &server.Options{
+		ServerName: name, Host: s.host(), Port: port, DontListen: !s.Listen,
+		JetStream: true, StoreDir: s.StoreDir, SyncAlways: true,
+		JetStreamMaxStore: s.StoreBytes, JetStreamMaxMemory: memoryBytesMax,
+		MaxPayload: MessageBytesMax, MaxPending: clientPendingMax, MaxConn: connectionsMax,
+		PingInterval: pingInterval, NoSigs: true, NoLog: false,
+	}
+}
+
+func waitReady(ctx context.Context, srv *server.Server) error {
+	ready := make(chan bool, 1)
+	go func() { ready <- srv.ReadyForConnections(readyWait) }()
+	select {
+	case ok := <-ready:
+		if !ok {
+			return errors.New("not ready: is the port in use")
+		}
+		return nil
+	case <-ctx.Done():
+		return ctx.Err()
+	}
+}
+
+// URL is where clients on this machine reach the server; empty where it does not listen.
+func (e *Embedded) URL() string {
+	if e.server.Addr() == nil {
+		return ""
+	}
+	return e.server.ClientURL()
+}
+
+// InProcess is the option that connects to the server without a socket.
+func (e *Embedded) InProcess() nats.Option { return nats.InProcessServer(e.server) }
+
+// Stop ends the server, waits for it, and gives its directory free.
+func (e *Embedded) Stop() {
+	e.server.Shutdown()
+	e.server.WaitForShutdown()
+	e.unlock()
+}
