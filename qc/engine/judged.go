@@ -29,6 +29,8 @@ type Judged struct {
 	ClearGlobalWm2, ClearDirectWm2, ClearDiffuseWm2, ClearLWDownWm2 []float64 // what a cloudless sky would give
 
 	Series []Series // one an instrument, in the site file's order, then the weather
+
+	sun sunDay
 }
 
 // A Series is one instrument's judged minutes, or one weather quantity's.
@@ -45,9 +47,13 @@ type Series struct {
 	Verdict    []rules.Verdict
 	Missed     []rules.TestSet
 	Passed     []rules.TestSet
-	Faults     []rules.FaultSet                 // open episodes that reach this minute
+	Faults     []rules.FaultSet                 // episodes that reach this minute
 	Restored   []bool                           // the value was restored from a fault
 	Outcomes   [rules.TestCount][]rules.Outcome // of the tests that this series has; nil for the others
+
+	marked       []bool    // the logger sent a mark instead of a value
+	bodyC, domeC []float64 // of a pyrgeometer; nil for others
+	net          []float64 // thermopile signal over sensitivity, W/m2; NaN where the logger converts
 }
 
 // Primary gives the series whose values stand in the quantity's columns, nil if the station has none.
@@ -60,18 +66,80 @@ func (j *Judged) Primary(q rules.Quantity) *Series {
 	return nil
 }
 
-// floats cuts slices of PerDay from one allocation.
+// newJudged makes the columns of a day; its sun is filled in, no row is known yet.
+func newJudged(p *Plan, day int64) *Judged {
+	j := &Judged{Station: p.Station.ID, Records: make([]uint16, minute.PerDay)}
+	f := floats{}
+	for _, c := range []*[]float64{&j.ZenithDeg, &j.ApparentZenithDeg, &j.AzimuthDeg, &j.CosZenith, &j.ExtraterrestrialWm2,
+		&j.ClearGlobalWm2, &j.ClearDirectWm2, &j.ClearDiffuseWm2, &j.ClearLWDownWm2} {
+		*c = f.cut()
+	}
+	j.Series = make([]Series, len(p.series))
+	for i := range p.series {
+		j.Series[i] = p.series[i].columns(&f)
+	}
+	j.reset(p, day)
+	return j
+}
+
+// reset makes the columns ready for another day.
+func (j *Judged) reset(p *Plan, day int64) {
+	j.Day, j.Rows = day, 0
+	clear(j.Records)
+	nan := math.NaN()
+	for i := range j.ClearGlobalWm2 {
+		j.ClearGlobalWm2[i], j.ClearDirectWm2[i], j.ClearDiffuseWm2[i], j.ClearLWDownWm2[i] = nan, nan, nan, nan
+	}
+	for i := range j.Series {
+		for r := 0; r < minute.PerDay; r++ {
+			j.Series[i].clearRow(r)
+		}
+	}
+	j.sun.fill(p, j)
+}
+
+func (s *seriesPlan) columns(f *floats) Series {
+	out := Series{Instrument: s.id, Quantity: s.quantity, Primary: s.primary,
+		Measured: f.cut(), Value: f.cut(), SD: f.cut(), Min: f.cut(), Max: f.cut(), U95: f.cut(),
+		N: make([]uint32, minute.PerDay), Verdict: make([]rules.Verdict, minute.PerDay), Missed: make([]rules.TestSet, minute.PerDay),
+		Passed: make([]rules.TestSet, minute.PerDay), Faults: make([]rules.FaultSet, minute.PerDay), Restored: make([]bool, minute.PerDay),
+		marked: make([]bool, minute.PerDay)}
+	if s.quantity.Longwave() {
+		out.bodyC, out.domeC, out.net = f.cut(), f.cut(), f.cut()
+	}
+	for t := range out.Outcomes {
+		if s.tests.Has(rules.Test(t)) {
+			out.Outcomes[t] = make([]rules.Outcome, minute.PerDay)
+		}
+	}
+	return out
+}
+
+// set notes what a test said of a row.
+func (out *Series) set(t rules.Test, r int, o rules.Outcome) {
+	if out.Outcomes[t] == nil {
+		return
+	}
+	out.Outcomes[t][r] = o
+	bit := t.Of()
+	out.Missed[r] &^= bit
+	out.Passed[r] &^= bit
+	switch o {
+	case rules.Pass:
+		out.Passed[r] |= bit
+	case rules.Miss:
+		out.Missed[r] |= bit
+	}
+}
+
+// floats cuts slices of a day's length from large allocations.
 type floats struct{ rest []float64 }
 
 func (f *floats) cut() []float64 {
+	if len(f.rest) < minute.PerDay {
+		f.rest = make([]float64, 32*minute.PerDay)
+	}
 	s := f.rest[:minute.PerDay:minute.PerDay]
 	f.rest = f.rest[minute.PerDay:]
 	return s
-}
-
-func fillNaN(s []float64) {
-	nan := math.NaN()
-	for i := range s {
-		s[i] = nan
-	}
 }

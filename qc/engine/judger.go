@@ -1,8 +1,12 @@
 package engine
 
 import (
+	"math"
+
 	"fluxwarden/qc/fault"
+	"fluxwarden/qc/limit"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
 )
 
 // A Judger carries one station's judging from minute to minute and from day to day:
@@ -16,40 +20,182 @@ type Judger struct {
 	plan    *Plan
 	history []DaySummary
 	judged  *Judged
+	block   *minute.Block
+	watcher *fault.Watcher
+	runs    []limit.Run // one a series
+	minute  fault.Minute
 }
 
 // NewJudger makes a judger that stands at the end of the last day of history. History is ascending and may be longer than
 // HistoryDays or have holes; what is older than HistoryDays before the next day is not used.
 func NewJudger(plan *Plan, history []DaySummary) *Judger {
-	return &Judger{plan: plan, history: history}
+	return &Judger{plan: plan, history: append([]DaySummary(nil), history...), runs: make([]limit.Run, len(plan.series))}
 }
 
 // Begin starts a day. The Judged that it returns grows with Advance and belongs to the caller; days before it that had no
 // reading need not be given.
 func (j *Judger) Begin(day int64) *Judged {
-	j.judged = newJudged(j.plan, day)
-	return j.judged
+	return j.BeginWith(j.plan.NewJudged(day))
+}
+
+// BeginWith starts a day in columns made by Plan.NewJudged or Plan.Reset. Rows that Plan.Prepare has filled already are not
+// prepared again if the caller then uses AdvancePrepared.
+func (j *Judger) BeginWith(judged *Judged) *Judged {
+	j.judged, j.block = judged, nil
+	var facts []fault.DayFacts
+	var carry *fault.Carry
+	for i := range j.history {
+		if h := &j.history[i]; h.Day < judged.Day {
+			if h.Day >= judged.Day-HistoryDays {
+				facts = append(facts, h.Facts)
+			}
+			carry = &h.Carry
+		}
+	}
+	j.watcher = fault.NewWatcher(j.plan.setup, judged.Day, facts, carry)
+	for i := range j.runs {
+		j.runs[i] = limit.Run{Value: math.NaN()}
+		if carry != nil && i < len(carry.Runs) {
+			j.runs[i] = limit.Run{Value: carry.Runs[i].Value.Float(), Count: carry.Runs[i].Count}
+		}
+	}
+	return judged
 }
 
 // Advance judges the rows of the block beyond those judged already, up to block.Rows.
 func (j *Judger) Advance(block *minute.Block) {
-	j.judged.Rows = block.Rows
+	if block.Rows > j.judged.Rows {
+		j.plan.Prepare(j.judged, block, j.judged.Rows, block.Rows)
+	}
+	j.AdvancePrepared(block)
+}
+
+// AdvancePrepared is Advance for rows that Plan.Prepare has been through already.
+func (j *Judger) AdvancePrepared(block *minute.Block) {
+	j.block = block
+	for r := j.judged.Rows; r < block.Rows; r++ {
+		j.sequence(r)
+		j.judged.Rows = r + 1
+	}
+}
+
+// sequence is the part of a minute that needs the minutes before it.
+func (j *Judger) sequence(r int) {
+	p, l := j.plan, &j.plan.Station.Limits
+	sun := &j.judged.sun.rows[r]
+	for i := range p.series {
+		s := &j.judged.Series[i]
+		j.runs[i].Next(s.Measured[r])
+		if s.Outcomes[rules.Stuck] != nil {
+			s.set(rules.Stuck, r, limit.Stuck(&j.runs[i], s.Quantity, sun, l))
+		}
+		if s.Outcomes[rules.Spike] != nil {
+			s.set(rules.Spike, r, rules.NoHistory) // until the next minute is there
+			if r >= 2 {
+				s.set(rules.Spike, r-1, j.spike(s, r-1))
+			}
+		}
+	}
+	j.watch(r)
+}
+
+// spike holds row r against its neighbours.
+func (j *Judger) spike(s *Series, r int) rules.Outcome {
+	l := &j.plan.Station.Limits
+	v := s.Value
+	if s.Quantity.Longwave() {
+		nan := math.NaN()
+		return limit.Spike(v[r-1], v[r], v[r+1], nan, nan, nan, l.SpikeLWWm2, false)
+	}
+	return limit.Spike(v[r-1], v[r], v[r+1], j.expected(s.Quantity, r-1), j.expected(s.Quantity, r), j.expected(s.Quantity, r+1), l.SpikeWm2, true)
+}
+
+// expected is what the other two of global, direct and diffuse say that this one should be; NaN where they do not.
+func (j *Judger) expected(q rules.Quantity, r int) float64 {
+	g, b, d := measuredOf(j.plan, j.judged, rules.Global, r), measuredOf(j.plan, j.judged, rules.Direct, r), measuredOf(j.plan, j.judged, rules.Diffuse, r)
+	mu := j.judged.CosZenith[r]
+	switch q {
+	case rules.Global:
+		return float64(b*mu) + d
+	case rules.Diffuse:
+		return g - float64(b*mu)
+	case rules.Direct:
+		if mu > 0.05 {
+			return (g - d) / mu
+		}
+	}
+	return math.NaN()
+}
+
+// watch hands the minute to the diagnosis.
+func (j *Judger) watch(r int) {
+	m, d := &j.minute, j.judged
+	m.Minute = d.Day*minute.PerDay + int64(r)
+	m.ZenithDeg, m.AzimuthDeg, m.Mu = d.ApparentZenithDeg[r], d.AzimuthDeg[r], math.Max(d.CosZenith[r], 0)
+	m.SaWm2 = d.ExtraterrestrialWm2[r]
+	m.Hidden = d.sun.rows[r].Hidden
+	m.Records = int(d.Records[r])
+	m.AnyConflict = false
+	for q := range m.Value {
+		m.Value[q], m.Marked[q], m.Run[q] = math.NaN(), false, 0
+	}
+	m.BodyC, m.NetWm2 = math.NaN(), math.NaN()
+	for i := range j.plan.series {
+		s := &d.Series[i]
+		if !s.Primary {
+			continue
+		}
+		m.Value[s.Quantity], m.Marked[s.Quantity], m.Run[s.Quantity] = s.Measured[r], s.marked[r], j.runs[i].Count
+		if s.Missed[r].Has(rules.Conflict) {
+			m.AnyConflict = true
+		}
+		if s.Quantity == rules.LWDown {
+			m.BodyC, m.NetWm2 = s.bodyC[r], s.net[r]
+		}
+	}
+	j.watcher.Minute(m)
+	d.ClearGlobalWm2[r], d.ClearDirectWm2[r] = RoundIrradiance(m.Clear[rules.Global]), RoundIrradiance(m.Clear[rules.Direct])
+	d.ClearDiffuseWm2[r], d.ClearLWDownWm2[r] = RoundIrradiance(m.Clear[rules.Diffuse]), RoundIrradiance(m.Clear[rules.LWDown])
 }
 
 // Tick says that nothing more will come before the minute (counted from 1970): gaps are seen by it. It changes no row.
-func (j *Judger) Tick(minuteUTC int64) {}
+func (j *Judger) Tick(minuteUTC int64) {
+	if j.watcher != nil {
+		j.watcher.Tick(minuteUTC)
+	}
+}
 
-// End closes the day: its rows become minute.PerDay, and what later days may know of it is returned.
+// End closes the day: its rows become minute.PerDay, the block's with them, and what later days may know of it is returned.
 func (j *Judger) End() DaySummary {
-	return DaySummary{}
+	if j.block != nil && j.block.Rows < minute.PerDay {
+		j.block.Rows = minute.PerDay
+		j.Advance(j.block)
+	}
+	s := DaySummary{Station: j.plan.Station.ID, Day: j.judged.Day}
+	s.Facts, s.Carry = j.watcher.EndDay()
+	for i := range j.runs {
+		s.Carry.Runs = append(s.Carry.Runs, fault.RunState{Value: fault.Number(j.runs[i].Value), Count: j.runs[i].Count})
+	}
+	for _, e := range j.watcher.Episodes() {
+		if e.To == fault.Open {
+			s.Open = append(s.Open, e)
+		} else {
+			s.Closed = append(s.Closed, e)
+		}
+	}
+	s.Carry.Open = s.Open
+	j.history = append(j.history, s)
+	for len(j.history) > HistoryDays+1 {
+		j.history = append(j.history[:0], j.history[1:]...)
+	}
+	return s
 }
 
 // Episodes lists the episodes that are open now, and those that ended on the day begun last, by the minute they were raised.
 // Those that ended on earlier days stand in these days' summaries.
-func (j *Judger) Episodes() []fault.Episode { return nil }
-
-// Settle works out verdicts, reasons and restored values of the judged rows from their tests and from the episodes
-// that reach them. It may be called again when episodes have changed.
-func Settle(plan *Plan, j *Judged, episodes []fault.Episode) {}
-
-func newJudged(plan *Plan, day int64) *Judged { return &Judged{Station: plan.Station.ID, Day: day} }
+func (j *Judger) Episodes() []fault.Episode {
+	if j.watcher == nil {
+		return nil
+	}
+	return j.watcher.Episodes()
+}

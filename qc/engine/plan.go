@@ -2,9 +2,13 @@ package engine
 
 import (
 	"fmt"
+	"math"
 	"time"
 
+	"fluxwarden/qc/fault"
+	"fluxwarden/qc/limit"
 	"fluxwarden/qc/minute"
+	"fluxwarden/qc/sun"
 	"fluxwarden/rules"
 )
 
@@ -12,75 +16,107 @@ import (
 // shared.
 type Plan struct {
 	Station *rules.Station
-	layout  minute.Layout
-	series  []seriesPlan
-	// where the primary series of each quantity stands, -1 if there is none
-	primary [rules.QuantityCount]int
+
+	layout      minute.Layout
+	site        sun.Site
+	horizon     *sun.Horizon // nil is a flat horizon
+	pressureHPa float64      // of the standard atmosphere at the station
+	series      []seriesPlan
+	primary     [rules.QuantityCount]int // where the primary series of each quantity stands, -1 if there is none
+	nothing     []float64                // a column without a value
+	setup       *fault.Setup
 }
 
 // A seriesPlan is how one series is made from channels.
 type seriesPlan struct {
-	id         string
-	quantity   rules.Quantity
-	primary    bool
-	class      string
-	instrument *rules.Instrument // nil for weather
-	weather    *rules.WeatherInput
-	signal     int // block columns; -1 where there is none
-	bodyCol    int
-	domeCol    int
+	id            string
+	quantity      rules.Quantity
+	primary       bool
+	instrument    *rules.Instrument // nil for weather
+	weather       *rules.WeatherInput
+	signal        int // block columns; -1 where there is none
+	bodyCol       int
+	domeCol       int
+	microvolts    float64 // in one unit of the signal
+	periods       []calibrationPeriod
+	tests         rules.TestSet
+	zeroAllowance float64 // how far below nothing a sound one may read, W/m2
 }
 
 // NewPlan compiles a station that has passed rules.Parse. It errs only where the station contradicts itself.
 func NewPlan(st *rules.Station) (*Plan, error) {
-	p := &Plan{Station: st}
+	p := &Plan{Station: st, site: sun.Site{LatitudeDeg: st.LatitudeDeg, LongitudeDeg: st.LongitudeDeg, ElevationM: st.ElevationM},
+		pressureHPa: StandardPressure(st.ElevationM), nothing: make([]float64, minute.PerDay)}
+	fillNaN(p.nothing)
 	p.layout.LabelEnd, p.layout.Interval = st.Time.LabelEnd, st.Time.Interval
 	if p.layout.Interval <= 0 {
 		p.layout.Interval = time.Minute
 	}
-	columns := map[string]int{}
-	column := func(channel string) int {
-		if channel == "" {
-			return -1
+	if len(st.Horizon) > 0 {
+		points := make([][2]float64, len(st.Horizon))
+		for i, h := range st.Horizon {
+			points[i] = [2]float64{h.AzimuthDeg, h.ElevationDeg}
 		}
-		if i, ok := columns[channel]; ok {
-			return i
+		h, err := sun.NewHorizon(points)
+		if err != nil {
+			return nil, fmt.Errorf("station %s: horizon: %w", st.ID, err)
 		}
-		columns[channel] = len(p.layout.Channels)
-		p.layout.Channels = append(p.layout.Channels, channel)
-		return columns[channel]
+		p.horizon = &h
 	}
 	for i := range p.primary {
 		p.primary[i] = -1
 	}
-	counts := [rules.QuantityCount]int{}
-	for i := range st.Instruments {
-		counts[st.Instruments[i].Measures]++
-	}
-	for i := range st.Instruments {
-		in := &st.Instruments[i]
-		s := seriesPlan{id: in.ID, quantity: in.Measures, class: in.Class, instrument: in, primary: in.Primary || counts[in.Measures] == 1,
-			bodyCol: column(in.Input.Case), domeCol: column(in.Input.Dome)}
-		if in.Input.Irradiance != "" {
-			s.signal = column(in.Input.Irradiance)
-		} else {
-			s.signal = column(in.Input.Signal)
-		}
-		if err := p.add(s); err != nil {
-			return nil, err
-		}
+	if err := p.addInstruments(); err != nil {
+		return nil, err
 	}
 	for i := range st.Weather {
 		w := &st.Weather[i]
-		s := seriesPlan{id: w.Channel, quantity: w.Quantity, weather: w, primary: true, signal: column(w.Channel), bodyCol: -1, domeCol: -1}
+		s := seriesPlan{id: w.Channel, quantity: w.Quantity, weather: w, primary: true, signal: p.column(w.Channel), bodyCol: -1, domeCol: -1}
 		if err := p.add(s); err != nil {
 			return nil, err
 		}
 	}
 	for i := range st.Housekeeping {
-		column(st.Housekeeping[i].Channel)
+		p.column(st.Housekeeping[i].Channel)
 	}
+	p.setup = p.faultSetup()
 	return p, nil
+}
+
+func (p *Plan) addInstruments() error {
+	counts := [rules.QuantityCount]int{}
+	for i := range p.Station.Instruments {
+		counts[p.Station.Instruments[i].Measures]++
+	}
+	for i := range p.Station.Instruments {
+		in := &p.Station.Instruments[i]
+		signal := in.Input.Irradiance
+		if signal == "" {
+			signal = in.Input.Signal
+		}
+		err := p.add(seriesPlan{id: in.ID, quantity: in.Measures, instrument: in, primary: in.Primary || counts[in.Measures] == 1,
+			signal: p.column(signal), bodyCol: p.column(in.Input.Case), domeCol: p.column(in.Input.Dome),
+			microvolts: signalMicrovolts(in.Input.SignalUnit), periods: periodsOf(in),
+			zeroAllowance: limit.NightZeroAllowance(in.Class, in.Measures, &p.Station.Limits)})
+		if err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// column gives the block column of a channel, adding it if it is new; -1 for no channel.
+func (p *Plan) column(channel string) int {
+	if channel == "" {
+		return -1
+	}
+	for i, c := range p.layout.Channels {
+		if c == channel {
+			return i
+		}
+	}
+	p.layout.Channels = append(p.layout.Channels, channel)
+	return len(p.layout.Channels) - 1
 }
 
 func (p *Plan) add(s seriesPlan) error {
@@ -93,9 +129,44 @@ func (p *Plan) add(s seriesPlan) error {
 		}
 		p.primary[s.quantity] = len(p.series)
 	}
+	s.tests = testsOf(s.quantity)
 	p.series = append(p.series, s)
 	return nil
 }
 
+// faultSetup is what the diagnosis needs to know of the station.
+func (p *Plan) faultSetup() *fault.Setup {
+	u := &fault.Setup{Station: p.Station.ID, GapMinutes: int64(p.Station.Limits.GapMinutes), LatitudeDeg: p.Station.LatitudeDeg,
+		ElevationM: p.Station.ElevationM}
+	for q := range rules.Quantity(rules.RadiationCount) {
+		k := p.primary[q]
+		if k < 0 {
+			continue
+		}
+		s := &p.series[k]
+		in := fault.Instrument{ID: s.id, Class: s.instrument.Class, Present: true, HasBody: s.bodyCol >= 0, SensitivityUVPerW: 1}
+		if s.instrument.Input.Irradiance == "" && len(s.instrument.Calibrations) > 0 {
+			in.SensitivityUVPerW = s.instrument.Calibrations[len(s.instrument.Calibrations)-1].SensitivityUVPerW
+			in.Volts = true
+		}
+		u.Instruments[q] = in
+	}
+	return u
+}
+
 // Layout is how the station's stamps become minutes and which channels the judge reads.
 func (p *Plan) Layout() minute.Layout { return p.layout }
+
+// NewJudged makes the columns of a day, with its sun worked out and no row known yet. It is the costly part of a day that needs
+// nothing else, and may be called for many days at the same time.
+func (p *Plan) NewJudged(day int64) *Judged { return newJudged(p, day) }
+
+// Reset makes the columns of a judged day ready for another day of the same plan.
+func (p *Plan) Reset(j *Judged, day int64) { j.reset(p, day) }
+
+func fillNaN(s []float64) {
+	nan := math.NaN()
+	for i := range s {
+		s[i] = nan
+	}
+}

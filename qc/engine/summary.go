@@ -13,6 +13,8 @@ const HindsightDays = 10
 type DaySummary struct {
 	Station string          `json:"station"`
 	Day     int64           `json:"day"`
-	Open    []fault.Episode `json:"open,omitempty"`
+	Facts   fault.DayFacts  `json:"facts"`
+	Carry   fault.Carry     `json:"carry"`
+	Open    []fault.Episode `json:"-"` // they stand in the carry
 	Closed  []fault.Episode `json:"closed,omitempty"`
 }

@@ -1,0 +1,104 @@
+package engine
+
+import (
+	"math"
+
+	"fluxwarden/qc/fault"
+	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
+)
+
+// Settle works out verdicts, reasons and restored values of the judged rows from their tests and from the episodes that
+// reach them. It may be called again when episodes have changed; what it writes depends on its arguments alone.
+func Settle(plan *Plan, j *Judged, episodes []fault.Episode) {
+	for i := range plan.series {
+		settleTests(plan, j, i)
+	}
+	first := j.Day * minute.PerDay
+	for k := range episodes {
+		e := &episodes[k]
+		from, to := e.From-first, e.To-first
+		if to <= 0 || from >= int64(j.Rows) {
+			continue
+		}
+		lo, hi := int(max(from, 0)), int(min(to, int64(j.Rows)))
+		for i := range plan.series {
+			settleEpisode(plan, j, i, e, lo, hi)
+		}
+	}
+}
+
+// settleTests gives the verdict that the tests alone come to.
+func settleTests(plan *Plan, j *Judged, i int) {
+	s := &j.Series[i]
+	for r := 0; r < j.Rows; r++ {
+		s.Faults[r], s.Restored[r] = 0, false
+		s.Value[r] = s.Measured[r]
+		if math.IsNaN(s.Value[r]) {
+			s.Verdict[r] = rules.Absent
+			continue
+		}
+		s.Verdict[r] = testsEffect(s, plan.series[i].zeroAllowance, j.ApparentZenithDeg[r], r).Verdict()
+	}
+}
+
+// testsEffect is what the missed tests of a row come to. Closure near the horizon is only said; so is a night value
+// off nothing, as long as the zero offset that the class may have explains it.
+func testsEffect(s *Series, zeroAllowance, apparentZenithDeg float64, r int) rules.Effect {
+	missed := s.Missed[r]
+	if missed == 0 {
+		return rules.NoEffect
+	}
+	const special = rules.TestSet(1<<rules.Closure | 1<<rules.NightZero)
+	effect := rules.TestsEffect(missed &^ special)
+	if missed.Has(rules.Closure) {
+		effect = max(effect, rules.ClosureEffect(apparentZenithDeg))
+	}
+	if missed.Has(rules.NightZero) {
+		if math.Abs(s.Measured[r]) > zeroAllowance {
+			effect = max(effect, rules.TestEffect(rules.NightZero))
+		} else {
+			effect = max(effect, rules.Report)
+		}
+	}
+	return effect
+}
+
+// settleEpisode applies one episode to one series over rows [lo, hi) where the kind reaches it.
+func settleEpisode(plan *Plan, j *Judged, i int, e *fault.Episode, lo, hi int) {
+	s := &j.Series[i]
+	if !fault.Concerns(e, plan.setup, s.Instrument, s.Quantity) {
+		return
+	}
+	for r := lo; r < hi; r++ {
+		if math.IsNaN(s.Measured[r]) || !fault.Reaches(e, s.Quantity, s.Measured[r], j.ApparentZenithDeg[r], j.AzimuthDeg[r]) {
+			if math.IsNaN(s.Measured[r]) {
+				s.Faults[r] |= e.Kind.Of()
+			}
+			continue
+		}
+		s.Faults[r] |= e.Kind.Of()
+		restored, ok := math.NaN(), false
+		if e.Severity == rules.Act {
+			restored, ok = fault.Restore(e, s.Quantity, plan.setup, func(q rules.Quantity) float64 { return measuredOf(plan, j, q, r) })
+		}
+		effect := rules.FaultEffect(e.Kind, e.Severity)
+		if ok {
+			s.Value[r], s.Restored[r] = RoundIrradiance(restored), true
+			effect = rules.RestoredEffect
+		}
+		if v := effect.Verdict(); v > s.Verdict[r] {
+			s.Verdict[r] = v
+		} else if ok && s.Verdict[r] == rules.Rejected {
+			// the tests rejected what was measured, not what has been restored
+			s.Verdict[r] = rules.Questioned
+		}
+	}
+}
+
+func measuredOf(plan *Plan, j *Judged, q rules.Quantity, r int) float64 {
+	if s := plan.primarySeries(j, q); s != nil {
+		return s.Measured[r]
+	}
+	return math.NaN()
+}

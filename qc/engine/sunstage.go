@@ -1,0 +1,65 @@
+package engine
+
+import (
+	"math"
+
+	"fluxwarden/qc/exact"
+	"fluxwarden/qc/limit"
+	"fluxwarden/qc/minute"
+	"fluxwarden/qc/sun"
+)
+
+// Resolutions that values are rounded to before they are stored or compared with a limit's edge, as powers of two so that the
+// rounded value is exact in binary.
+const (
+	irradiancePerWm2 = 64   // 1/64 W/m2
+	anglePerDegree   = 1024 // 1/1024 degree
+)
+
+// RoundIrradiance rounds to the stored resolution of an irradiance, 1/64 W/m2, half to even.
+func RoundIrradiance(v float64) float64 {
+	return math.RoundToEven(v*irradiancePerWm2)/irradiancePerWm2 + 0
+}
+
+func roundAngle(v float64) float64 { return math.RoundToEven(v*anglePerDegree)/anglePerDegree + 0 }
+
+// A sunDay is where the sun stands in each minute of a day, worked out once.
+type sunDay struct {
+	day  int64
+	rows []limit.Sun
+}
+
+// StandardPressure is the pressure of the standard atmosphere at an elevation, hPa: 1013.25 (1 - 2.25577e-5 h)^5.25588 (ISO
+// 2533:1975, from memory), h in metres.
+func StandardPressure(elevationM float64) float64 {
+	return 1013.25 * exact.Pow(1-float64(2.25577e-5*elevationM), 5.25588)
+}
+
+// refractionTemperatureC is the air temperature that refraction is worked out with. The live one would make geometry depend on a
+// weather channel for less than 0.02 degrees at the horizon.
+const refractionTemperatureC = 10
+
+// fill works out the sun for the day, mid-minute, and writes it to the judged columns.
+func (s *sunDay) fill(p *Plan, j *Judged) {
+	s.day = j.Day
+	if s.rows == nil {
+		s.rows = make([]limit.Sun, minute.PerDay)
+	}
+	day := sun.NewDay(j.Day, p.site)
+	for i := range s.rows {
+		at := day.AtMinute(float64(60*i + 30))
+		apparent := sun.ApparentZenith(at.ZenithDeg, p.pressureHPa, refractionTemperatureC)
+		cosApparent := at.CosZenith
+		if at.ZenithDeg > 45 { // nearer the zenith refraction changes the cosine by less than 2e-4 of it
+			cosApparent = exact.Cos(apparent * (math.Pi / 180))
+		}
+		sa := p.Station.Limits.SolarConstantWm2 / (at.DistanceAU * at.DistanceAU)
+		hidden := p.horizon != nil && p.horizon.Hides(apparent, at.AzimuthDeg)
+		s.rows[i] = limit.SunOf(roundAngle(at.ZenithDeg), at.CosZenith, roundAngle(apparent), cosApparent, sa, hidden)
+		j.ZenithDeg[i] = s.rows[i].ZenithDeg
+		j.ApparentZenithDeg[i] = s.rows[i].ApparentZenithDeg
+		j.AzimuthDeg[i] = roundAngle(at.AzimuthDeg)
+		j.CosZenith[i] = s.rows[i].BeamMu
+		j.ExtraterrestrialWm2[i] = RoundIrradiance(sa)
+	}
+}

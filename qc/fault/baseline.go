@@ -1,0 +1,143 @@
+package fault
+
+import (
+	"math"
+	"slices"
+
+	"fluxwarden/qc/exact"
+	"fluxwarden/rules"
+)
+
+// A Baseline is what the days before have taught of a station: how its sound instruments stand to each other and how clear its
+// sky is. A sound station can live with a closure of 0.97; what counts is a change.
+type Baseline struct {
+	closure   [sectors]float64 // global over direct on the horizontal plus diffuse, by the sun's sector
+	known     bool             // closure rests on enough sunlit minutes
+	overcast  float64          // global over diffuse without a beam
+	overcastN int
+	zero      [3]float64 // night value of global, direct, diffuse, W/m2
+	zeroKnown [3]bool
+	linke     float64 // Linke turbidity of the site's clear minutes
+	kGlobal   float64 // measured over modelled clear-sky global
+	kDiffuse  float64
+	kBeam     float64
+	skyKnown  bool
+	bodyAir   [2]float64 // pyrgeometer body less air, by night and by day, K
+	bodyKnown [2]bool
+	kLW       float64 // measured over modelled clear-sky longwave
+	lwKnown   bool
+	pressure  float64 // station pressure over the standard one
+	elevation float64
+}
+
+// The sun's sectors: morning and afternoon, by height.
+const sectors = 6
+
+func sectorOf(v *view) int {
+	s := 0
+	switch {
+	case v.zenithDeg > 75:
+		s = 2
+	case v.zenithDeg > 60:
+		s = 1
+	}
+	if v.azimuthDeg > 180 {
+		s += 3
+	}
+	return s
+}
+
+// closureAt is the closure that the station's sound instruments have with the sun where it is.
+func (b *Baseline) closureAt(v *view) float64 { return b.closure[sectorOf(v)] }
+
+const (
+	// trustedMinutes is how many minutes a day's fact must rest on to be taken.
+	trustedMinutes = 20
+	// defaultLinke is the turbidity assumed before the site's own is known: a mean value of temperate lowland (from memory).
+	defaultLinke = 3.5
+)
+
+// learn makes the baseline from the facts of the days before.
+func learn(s *Setup, day int64, facts []DayFacts) Baseline {
+	b := Baseline{linke: defaultLinke, kGlobal: 1, kDiffuse: 1, kBeam: 1, kLW: 1, overcast: 1, elevation: s.ElevationM}
+	b.pressure = exact.Pow(1-float64(2.25577e-5*s.ElevationM), 5.25588)
+	all, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Closure })
+	b.known = n >= 100
+	if !b.known {
+		all = 1
+	}
+	for k := range b.closure {
+		b.closure[k] = all
+		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Sector[k] }); b.known && n >= 100 {
+			b.closure[k] = m
+		}
+	}
+	if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Overcast }); n >= 60 {
+		b.overcast, b.overcastN = m, n
+	}
+	for k := range b.zero {
+		m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Zero[k] })
+		if n >= 60 {
+			b.zero[k], b.zeroKnown[k] = m, true
+		}
+	}
+	if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Linke }); n >= 60 {
+		b.linke, b.skyKnown = m, true
+		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.ClearGlobal }); n >= 60 {
+			b.kGlobal = m
+		}
+		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.ClearDiffuse }); n >= 60 {
+			b.kDiffuse = m
+		}
+	}
+	for k := range b.bodyAir {
+		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.BodyAir[k] }); n >= 60 {
+			b.bodyAir[k], b.bodyKnown[k] = m, true
+		}
+	}
+	if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.ClearLW }); n >= 60 {
+		b.kLW, b.lwKnown = m, true
+	}
+	return b
+}
+
+// medianOf is the median over days of one fact, of the days that rest on enough minutes, and how many minutes they are
+// together; NaN and 0 without any.
+func medianOf(facts []DayFacts, least int, pick func(*DayFacts) Fact) (float64, int) {
+	var values [32]float64
+	k, n := 0, 0
+	for i := range facts {
+		f := pick(&facts[i])
+		if f.N >= least && k < len(values) && !math.IsNaN(f.Median.Float()) {
+			values[k] = f.Median.Float()
+			k++
+			n += f.N
+		}
+	}
+	if k == 0 {
+		return math.NaN(), 0
+	}
+	v := values[:k]
+	slices.Sort(v)
+	if k%2 == 1 {
+		return v[k/2], n
+	}
+	return (v[k/2-1] + v[k/2]) / 2, n
+}
+
+// clearSky fills in what a cloudless sky would give.
+func (b *Baseline) clearSky(m *Minute) {
+	nan := math.NaN()
+	for q := range m.Clear {
+		m.Clear[q] = nan
+	}
+	if m.Mu > 0 && m.ZenithDeg < 90 {
+		g, n := b.ineichen(m)
+		m.Clear[rules.Direct] = n
+		m.Clear[rules.Diffuse] = math.Max(0, b.kDiffuse*(g-float64(n*m.Mu)))
+		m.Clear[rules.Global] = math.Max(0, b.kGlobal*g)
+	} else {
+		m.Clear[rules.Global], m.Clear[rules.Direct], m.Clear[rules.Diffuse] = 0, 0, 0
+	}
+	m.Clear[rules.LWDown] = b.kLW * clearLongwave(m.Value[rules.AirTemperature], m.Value[rules.Humidity])
+}

@@ -1,0 +1,43 @@
+package fault
+
+import "fluxwarden/rules"
+
+// caseCount is how many cases catalogueOfCases has. The order is fixed: a carry names them by number.
+const caseCount = 27
+
+var threeShortwave = []rules.Quantity{rules.Global, rules.Direct, rules.Diffuse}
+
+// catalogueOfCases lists what can be told from single minutes, in the order in which one minute is asked.
+var catalogueOfCases [caseCount]faultCase
+
+func init() {
+	catalogueOfCases = [caseCount]faultCase{
+		{kind: rules.SignalLost, quantity: rules.Global, raise: 4, most: 8, evidence: signalLost, number: "seen_instead_of_expected", unit: "W/m2"},
+		{kind: rules.SignalLost, quantity: rules.Direct, raise: 4, most: 8, evidence: signalLost, number: "seen_instead_of_expected", unit: "W/m2"},
+		{kind: rules.SignalLost, quantity: rules.Diffuse, raise: 4, most: 8, evidence: signalLost, number: "seen_instead_of_expected", unit: "W/m2"},
+		{kind: rules.SignalLost, quantity: rules.Reflected, raise: 4, most: 8, evidence: signalBlank},
+		{kind: rules.SignalLost, quantity: rules.LWDown, raise: 4, most: 8, evidence: signalBlank},
+		{kind: rules.SignalLost, quantity: rules.LWUp, raise: 4, most: 8, evidence: signalBlank},
+		{kind: rules.SignalLost, quantity: rules.UV, raise: 4, most: 8, evidence: signalBlank},
+		{kind: rules.SignalLost, quantity: rules.PAR, raise: 4, most: 8, evidence: signalBlank},
+		{kind: rules.SignalFrozen, quantity: rules.Global, raise: 5, most: 8, evidence: signalFrozen, number: "value", unit: "W/m2"},
+		{kind: rules.SignalFrozen, quantity: rules.Direct, raise: 5, most: 8, evidence: signalFrozen, number: "value", unit: "W/m2"},
+		{kind: rules.SignalFrozen, quantity: rules.Diffuse, raise: 5, most: 8, evidence: signalFrozen, number: "value", unit: "W/m2"},
+		{kind: rules.SignalFrozen, quantity: rules.LWDown, raise: 5, most: 8, evidence: longwaveFrozen, number: "value", unit: "W/m2"},
+		{kind: rules.SignalFrozen, quantity: rules.LWUp, raise: 5, most: 8, evidence: longwaveFrozen, number: "value", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quantity: rules.Direct, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quantity: rules.Diffuse, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
+		{kind: rules.UnitSlip, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
+		{kind: rules.UnitSlip, quantity: rules.Direct, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
+		{kind: rules.UnitSlip, quantity: rules.Diffuse, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
+		{kind: rules.ChannelsSwapped, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: channelsSwapped, number: "diffuse_above_global", unit: "W/m2"},
+		{kind: rules.PointingLost, quantity: rules.Direct, instrument: Tracker, needs: threeShortwave, raise: 6, most: 24, evidence: pointingLost, number: "global_over_clear_sky", unit: "1"},
+		{kind: rules.ShadeOff, quantity: rules.Diffuse, needs: threeShortwave, raise: 6, most: 15, evidence: shadeOff, number: "share_of_beam_on_diffuse", unit: "1"},
+		{kind: rules.Noise, quantity: rules.Global, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},
+		{kind: rules.Noise, quantity: rules.Direct, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},
+		{kind: rules.Noise, quantity: rules.Diffuse, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},
+		{kind: rules.RangeClipped, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 8, evidence: rangeClipped, number: "rail", unit: "W/m2"},
+		{kind: rules.ThermistorBad, quantity: rules.LWDown, raise: 5, most: 10, evidence: thermistorBad, number: "body_less_air", unit: "K"},
+	}
+}

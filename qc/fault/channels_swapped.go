@@ -1,0 +1,40 @@
+package fault
+
+import (
+	"math"
+
+	"fluxwarden/rules"
+)
+
+// swapFactors turn what came by the other's channel into what it is: with voltages the coefficients stayed where they were.
+func (s *Setup) swapFactors() (toGlobal, toDiffuse float64) {
+	g, d := &s.Instruments[rules.Global], &s.Instruments[rules.Diffuse]
+	if !g.Volts || !d.Volts {
+		return 1, 1
+	}
+	return d.SensitivityUVPerW / g.SensitivityUVPerW, g.SensitivityUVPerW / d.SensitivityUVPerW
+}
+
+// channelsSwapped: global and diffuse close with the direct beam when they change places, and not as they are.
+func channelsSwapped(w *Watcher, c *faultCase, v *view) hint {
+	g, b, d := v.g(), v.b(), v.d()
+	if !v.sunUp || math.IsNaN(g+b+d) {
+		return nothing
+	}
+	toG, toD := w.setup.swapFactors()
+	beam := float64(b * v.mu)
+	if beam < 60 {
+		return nothing
+	}
+	closure := w.base.closureAt(v)
+	asIs := math.Abs(g - float64(closure*(beam+d)))
+	swapped := math.Abs(d*toG - float64(closure*(beam+g*toD)))
+	room := v.scale(w)
+	switch {
+	case swapped < 1.5*room && asIs > 4*room && d-g > 40:
+		return hint{0.5, d - g}
+	case asIs < 2*room:
+		return hint{odds: -1}
+	}
+	return nothing
+}

@@ -1,0 +1,91 @@
+package fault
+
+import (
+	"math"
+
+	"fluxwarden/rules"
+)
+
+// Concerns says whether an episode is about a quantity's instrument: its own, or one that the tracker or the logger upsets.
+func Concerns(e *Episode, s *Setup, instrument string, q rules.Quantity) bool {
+	switch e.Instrument {
+	case Tracker:
+		return q == rules.Direct || q == rules.Diffuse
+	case Logger:
+		return int(q) < rules.RadiationCount
+	}
+	if e.Kind == rules.ChannelsSwapped && (q == rules.Global || q == rules.Diffuse) {
+		return instrument == s.Instruments[q].ID
+	}
+	return e.Instrument == instrument
+}
+
+// Reaches says whether the episode spoils one minute of one quantity: a clip its rail, gain, tilt, pointing and shade the
+// sunlit minutes, a shadow its bearing.
+func Reaches(e *Episode, q rules.Quantity, measured, apparentZenithDeg, azimuthDeg float64) bool {
+	const sunlit = 91
+	switch e.Kind {
+	case rules.RangeClipped:
+		rail, ok := e.number("rail")
+		return ok && measured > rail-1
+	case rules.PointingLost, rules.ShadeOff, rules.SensorTilted, rules.SensitivityWrong, rules.SensitivityDrift, rules.DomeSoiled,
+		rules.UnitSlip, rules.ChannelsSwapped, rules.PolarityReversed, rules.DomeFouled:
+		return apparentZenithDeg < sunlit || q.Longwave()
+	case rules.DomeWet, rules.DomeSnow:
+		return apparentZenithDeg < sunlit || q.Longwave()
+	case rules.ClockShift:
+		return apparentZenithDeg < 97 && q.Shortwave()
+	case rules.Shadow:
+		from, ok1 := e.number("bearing_from")
+		to, ok2 := e.number("bearing_to")
+		return ok1 && ok2 && azimuthDeg >= from && azimuthDeg <= to && apparentZenithDeg < sunlit
+	}
+	return true
+}
+
+func (e *Episode) number(name string) (float64, bool) {
+	for i := range e.Evidence {
+		if e.Evidence[i].Name == name {
+			return e.Evidence[i].Value, true
+		}
+	}
+	return math.NaN(), false
+}
+
+// Restore gives the value that a restorable fault has hidden, from what was measured; ok is false where it cannot be had.
+func Restore(e *Episode, q rules.Quantity, s *Setup, measured func(rules.Quantity) float64) (float64, bool) {
+	v := math.NaN()
+	switch e.Kind {
+	case rules.PolarityReversed:
+		v = -measured(q)
+	case rules.ChannelsSwapped:
+		toG, toD := s.swapFactors()
+		if q == rules.Global {
+			v = measured(rules.Diffuse) * toG
+		} else {
+			v = measured(rules.Global) * toD
+		}
+	case rules.ZeroOffset:
+		if off, ok := e.number("offset"); ok {
+			v = measured(q) - off
+		}
+	}
+	return v, !math.IsNaN(v)
+}
+
+// explains says whether the open episode accounts for what the new one would say.
+func explains(open, e *Episode) bool {
+	if open.Severity != rules.Act {
+		return false
+	}
+	if open.Instrument == e.Instrument {
+		return open.Kind != e.Kind && open.Kind != rules.DataGap
+	}
+	switch open.Kind {
+	case rules.PointingLost, rules.ShadeOff:
+		return e.Kind != rules.SignalFrozen && e.Kind != rules.DataGap && e.Kind != rules.ThermistorBad
+	case rules.ClockShift, rules.ChannelsSwapped:
+		return e.Kind != rules.SignalFrozen && e.Kind != rules.DataGap && e.Kind != rules.ThermistorBad
+	}
+	return false
+}

@@ -1,0 +1,56 @@
+package fault
+
+import (
+	"math"
+
+	"fluxwarden/rules"
+)
+
+// signalBlank: the instrument's channel is blank, or holds the logger's mark, while the station's records go on. Odds: a logger's
+// single blank happens; ten in a row hardly do (own choice: 0.4 a minute).
+func signalBlank(w *Watcher, c *faultCase, v *view) hint {
+	switch {
+	case !math.IsNaN(v.value[c.quantity]):
+		return hint{odds: -8}
+	case c.quantity == rules.LWDown && !math.IsNaN(v.net):
+		return nothing // the thermopile speaks; it is the body temperature that is missing
+	}
+	return hint{0.4, 0}
+}
+
+// signalLost is signalBlank, and besides an input that floats about nothing while the other two of global, direct and
+// diffuse ask for much: an open circuit. A shadow on the pyrheliometer leaves a little of the beam and lasts minutes, a slipped
+// unit follows the sun a thousandfold smaller, so minutes that could be these count for less.
+func signalLost(w *Watcher, c *faultCase, v *view) hint {
+	x := v.value[c.quantity]
+	if math.IsNaN(x) {
+		return hint{0.4, 0}
+	}
+	want := v.expected[c.quantity]
+	if !v.sunUp || math.IsNaN(want) {
+		if math.Abs(x) > openCircuitWm2 && v.sunUp {
+			return hint{odds: -8}
+		}
+		return nothing
+	}
+	switch {
+	case math.Abs(x) > openCircuitWm2:
+		return hint{odds: -8}
+	case want < openCircuitWants(c.quantity) || want < 3*v.scale(w):
+		return nothing
+	case math.Abs(1000*x-want) < 0.15*want:
+		return nothing
+	}
+	return hint{0.2, x - want}
+}
+
+// openCircuitWm2 is how far from nothing an open input may float.
+const openCircuitWm2 = 5
+
+// openCircuitWants is how much the partners must ask for before nothing counts as too little.
+func openCircuitWants(q rules.Quantity) float64 {
+	if q == rules.Direct {
+		return 120
+	}
+	return 60
+}

@@ -1,0 +1,126 @@
+package fault
+
+import (
+	"math"
+
+	"fluxwarden/rules"
+)
+
+// A suspicion is how strongly one kind of fault is suspected of one instrument: a running sum of log odds that cannot fall
+// below nothing (Page 1954, Biometrika 41, 100: the cumulative-sum test), so that its last rise from nothing is the likeliest
+// beginning.
+type suspicion struct {
+	Score float64 // log odds against being sound, 0..cap
+	Since int64   // the minute at which the present rise began; noMinute at rest
+	Last  int64   // the last minute that spoke for it
+	For   int     // minutes that spoke for it since then
+	Sum   float64 // of the evidence number of those minutes
+}
+
+// mean is the evidence number's mean over the minutes that spoke for it.
+func (s *suspicion) mean() float64 {
+	if s.For == 0 {
+		return math.NaN()
+	}
+	return s.Sum / float64(s.For)
+}
+
+// A hint is what one minute says of one case: its log odds, and a number for the technician.
+type hint struct{ odds, number float64 }
+
+var nothing = hint{}
+
+// A faultCase is one kind of fault on one instrument as it can be told from single minutes.
+type faultCase struct {
+	kind       rules.FaultKind
+	quantity   rules.Quantity // whose primary instrument is suspected
+	instrument string         // Tracker or Logger instead of the instrument; empty otherwise
+	needs      []rules.Quantity
+	raise      float64 // odds at which it is raised
+	most       float64 // where the score stops growing: how much it takes to end the episode
+	evidence   func(w *Watcher, c *faultCase, v *view) hint
+	number     string // name and unit of the hint's number
+	unit       string
+}
+
+// applies says whether the station has what the case needs.
+func (w *Watcher) applies(c *faultCase) bool {
+	if !w.setup.Instruments[c.quantity].Present {
+		return false
+	}
+	for _, q := range c.needs {
+		if int(q) < rules.RadiationCount && !w.setup.Instruments[q].Present {
+			return false
+		}
+	}
+	return true
+}
+
+func (c *faultCase) of(s *Setup) string {
+	if c.instrument != "" {
+		return c.instrument
+	}
+	return s.Instruments[c.quantity].ID
+}
+
+// step takes one minute's hint into case i and raises or ends its episode.
+func (w *Watcher) step(i int, c *faultCase, h hint) {
+	s := &w.cases[i]
+	switch {
+	case h.odds > 0:
+		if s.Score <= 0 && s.Since == noMinute {
+			*s = suspicion{Since: w.now.minute}
+		}
+		s.Score = math.Min(c.most, s.Score+h.odds)
+		s.Last = w.now.minute
+		s.For++
+		s.Sum += h.number
+	case h.odds < 0 && s.Since != noMinute:
+		s.Score = math.Max(0, s.Score+h.odds)
+	default:
+		return
+	}
+	open := w.openIndex(c.of(w.setup), c.kind)
+	if open >= 0 {
+		w.open[open].Evidence = w.evidenceOf(c, s)
+		if s.Score <= 0 {
+			w.finish(open, s.Last+1)
+		}
+	}
+	if s.Score <= 0 {
+		*s = suspicion{Since: noMinute}
+		return
+	}
+	if open < 0 && s.Score >= c.raise {
+		w.raise(Episode{Instrument: c.of(w.setup), Kind: c.kind, Severity: rules.Act, From: w.hindsight(s.Since), Raised: w.now.minute,
+			Confidence: confidence(s.Score), Evidence: w.evidenceOf(c, s)})
+	}
+}
+
+// hindsight bounds how far back an episode may reach.
+func (w *Watcher) hindsight(since int64) int64 {
+	return max(since, w.now.minute-hindsightMinutes)
+}
+
+const hindsightMinutes = 10 * 1440
+
+func (w *Watcher) evidenceOf(c *faultCase, s *suspicion) []Evidence {
+	out := []Evidence{{"minutes", float64(s.For), "min"}}
+	if c.number != "" {
+		out = append(out, Evidence{c.number, roundTo(s.mean(), 1000), c.unit})
+	}
+	return out
+}
+
+// confidence turns log odds into a probability with even prior odds.
+func confidence(odds float64) float64 {
+	p := 1 - 1/(1+expOf(odds))
+	return roundTo(math.Min(p, 0.999), 1000)
+}
+
+func roundTo(v, per float64) float64 {
+	if math.IsNaN(v) || math.IsInf(v, 0) {
+		return 0
+	}
+	return math.RoundToEven(v*per) / per
+}

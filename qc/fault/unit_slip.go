@@ -1,0 +1,21 @@
+package fault
+
+import "math"
+
+// unitSlip: the value follows what its partners ask for at a thousandth or a thousandfold.
+func unitSlip(w *Watcher, c *faultCase, v *view) hint {
+	x, want := v.value[c.quantity], v.expectedWithout(c.quantity)
+	if !v.sunUp || math.IsNaN(x) || math.IsNaN(want) || want < 60 {
+		return nothing
+	}
+	room := 0.1*want + v.scale(w)
+	for _, factor := range [...]float64{1000, 0.001} {
+		if math.Abs(factor*x-want) < room && math.Abs(x-want) > 3*v.scale(w) {
+			return hint{0.35, 1 / factor}
+		}
+	}
+	if math.Abs(x) < 5 {
+		return hint{odds: -0.3} // about nothing, but it does not follow
+	}
+	return hint{odds: -2}
+}

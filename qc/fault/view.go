@@ -1,0 +1,98 @@
+package fault
+
+import (
+	"math"
+
+	"fluxwarden/qc/exact"
+	"fluxwarden/rules"
+)
+
+// historyViews is how many minutes the evidence can look back on.
+const historyViews = 3
+
+// A view is one minute as the evidence looks at it. Irradiances are in W/m2, NaN where absent.
+type view struct {
+	minute     int64
+	zenithDeg  float64
+	azimuthDeg float64
+	mu         float64
+	sa         float64
+	sunUp      bool // high enough for global, direct and diffuse to be held against each other
+	night      bool
+	conflict   bool
+	value      [rules.QuantityCount]float64
+	marked     [rules.QuantityCount]bool
+	run        [rules.QuantityCount]int
+	bodyC, net float64
+	clear      [rules.RadiationCount]float64
+	// what the other two of global, direct and diffuse say that this one should be, at the station's own closure
+	expected [3]float64
+	sum      float64 // direct on the horizontal plus diffuse, at the station's own closure
+	steady   bool    // the sum moved little since the minute before
+}
+
+const (
+	// evidenceMu is the least cosine of the sun at which shortwave instruments are held against each other.
+	evidenceMu = 0.1
+	// nightZenithDeg is where no shortwave is left.
+	nightZenithDeg = 97
+)
+
+func (v *view) forget() {
+	nan := math.NaN()
+	*v = view{minute: noMinute, sum: nan, bodyC: nan, net: nan}
+	for i := range v.value {
+		v.value[i] = nan
+	}
+	for i := range v.clear {
+		v.clear[i] = nan
+	}
+	for i := range v.expected {
+		v.expected[i] = nan
+	}
+}
+
+func (v *view) g() float64 { return v.value[rules.Global] }
+func (v *view) b() float64 { return v.value[rules.Direct] }
+func (v *view) d() float64 { return v.value[rules.Diffuse] }
+
+// look makes the view of a minute and fills in the minute's clear sky.
+func (v *view) look(w *Watcher, m *Minute) {
+	v.minute, v.zenithDeg, v.azimuthDeg, v.mu, v.sa = m.Minute, m.ZenithDeg, m.AzimuthDeg, m.Mu, m.SaWm2
+	v.sunUp = m.Mu > evidenceMu && !m.Hidden
+	v.night = m.ZenithDeg > nightZenithDeg
+	v.conflict = m.AnyConflict
+	v.value, v.marked, v.run = m.Value, m.Marked, m.Run
+	v.bodyC, v.net = m.BodyC, m.NetWm2
+	w.base.clearSky(m)
+	v.clear = m.Clear
+	c := w.base.closureAt(v)
+	beam := float64(v.b() * v.mu)
+	v.sum = c * (beam + v.d())
+	v.expected[rules.Global] = v.sum
+	v.expected[rules.Diffuse] = v.g()/c - beam
+	v.expected[rules.Direct] = math.NaN()
+	if v.mu > evidenceMu {
+		v.expected[rules.Direct] = (v.g()/c - v.d()) / v.mu
+	}
+	before := &w.before[0]
+	v.steady = before.minute == v.minute-1 && math.Abs(v.sum-before.sum) < 0.03*v.sum+3
+}
+
+// scale is how well one expected value can be held against one measured, W/m2: a share of it, the offset of a good instrument, and,
+// on the edge of a cloud, part of what changed within the minute, for instruments do not follow alike.
+func (v *view) scale(w *Watcher) float64 {
+	moved := 0.0
+	for i := range w.before {
+		if p := &w.before[i]; p.minute >= v.minute-2 && !math.IsNaN(p.sum) && !math.IsNaN(v.sum) {
+			moved = math.Max(moved, math.Abs(v.sum-p.sum))
+		}
+	}
+	return 8 + float64(0.03*math.Abs(v.sum)) + float64(0.5*moved)
+}
+
+func expOf(x float64) float64 { return exact.Exp(x) }
+
+// expectedWithout is expected for evidence that looks at values which may be grossly wrong: what the partners say, at the station's
+// own closure.
+func (v *view) expectedWithout(q rules.Quantity) float64 { return v.expected[q] }

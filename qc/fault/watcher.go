@@ -1,0 +1,175 @@
+package fault
+
+import (
+	"fmt"
+	"hash/fnv"
+	"slices"
+
+	"fluxwarden/rules"
+)
+
+// A Watcher holds, for one station and one day, how strongly each kind of fault is suspected of each instrument, and turns
+// suspicions that cross the odds into episodes.
+type Watcher struct {
+	setup  *Setup
+	day    int64
+	base   Baseline
+	facts  gatherFacts
+	cases  [caseCount]suspicion
+	open   []Episode
+	closed []Episode // on this day
+	last   int64     // the last minute with a record; noMinute before the first
+	now    view
+	before [historyViews]view // the minutes before, newest first
+}
+
+const noMinute = int64(-1) << 40
+
+// A Carry is what a day hands on to the next, quantised.
+type Carry struct {
+	LastRecord int64         `json:"last_record"`
+	Cases      []CarriedCase `json:"cases,omitempty"`
+	Open       []Episode     `json:"open,omitempty"`
+	Runs       []RunState    `json:"runs,omitempty"`
+	Slow       SlowCarry     `json:"slow"`
+}
+
+// A CarriedCase is one suspicion that is not at rest.
+type CarriedCase struct {
+	Case  int    `json:"case"`
+	Score Number `json:"score"`
+	Since int64  `json:"since"`
+	Last  int64  `json:"last"`
+	For   int    `json:"for"`
+	Sum   Number `json:"sum"`
+}
+
+// NewWatcher starts a day from what the days before have taught (facts, ascending, at most thirty days old) and what the last
+// of them carried over; carry is nil before the first day.
+func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watcher {
+	w := &Watcher{setup: setup, day: day, last: noMinute}
+	w.base = learn(setup, day, facts)
+	w.facts.reset()
+	for i := range w.cases {
+		w.cases[i].Since = noMinute
+	}
+	if carry != nil {
+		w.last = carry.LastRecord
+		w.open = slices.Clone(carry.Open)
+		for _, c := range carry.Cases {
+			if c.Case < len(w.cases) {
+				w.cases[c.Case] = suspicion{Score: c.Score.Float(), Since: c.Since, Last: c.Last, For: c.For, Sum: c.Sum.Float()}
+			}
+		}
+		w.facts.slow = carry.Slow
+	}
+	for i := range w.before {
+		w.before[i].forget()
+	}
+	return w
+}
+
+// Minute takes one minute into account. It fills m.Clear.
+func (w *Watcher) Minute(m *Minute) {
+	w.Tick(m.Minute)
+	if m.Records > 0 {
+		if w.last != noMinute && m.Minute-w.last > w.setup.GapMinutes {
+			w.seeGap(m.Minute)
+		}
+		w.closeGap(m.Minute)
+		w.last = m.Minute
+	}
+	w.now.look(w, m)
+	if m.Records > 0 {
+		for i := range catalogueOfCases {
+			c := &catalogueOfCases[i]
+			if w.applies(c) {
+				w.step(i, c, c.evidence(w, c, &w.now))
+			}
+		}
+		w.facts.minute(w, &w.now)
+	}
+	copy(w.before[1:], w.before[:historyViews-1])
+	w.before[0] = w.now
+}
+
+// Tick says that nothing more will come before the minute.
+func (w *Watcher) Tick(minuteUTC int64) {
+	if w.last != noMinute && minuteUTC-w.last > w.setup.GapMinutes {
+		w.seeGap(minuteUTC)
+	}
+}
+
+// EndDay closes the day and gives what later days may know of it.
+func (w *Watcher) EndDay() (DayFacts, Carry) {
+	facts := w.facts.close(w)
+	w.judgeDay(&facts)
+	c := Carry{LastRecord: w.last, Open: slices.Clone(w.open), Slow: w.facts.slow}
+	for i := range w.cases {
+		if s := &w.cases[i]; s.Score > 0 || s.Since != noMinute {
+			c.Cases = append(c.Cases, CarriedCase{Case: i, Score: quantise(s.Score), Since: s.Since, Last: s.Last, For: s.For, Sum: quantise(s.Sum)})
+		}
+	}
+	return facts, c
+}
+
+// Episodes lists the open ones and those that ended today, by the minute they were raised.
+func (w *Watcher) Episodes() []Episode {
+	all := append(slices.Clone(w.closed), w.open...)
+	slices.SortStableFunc(all, func(a, b Episode) int {
+		if a.Raised != b.Raised {
+			return int(a.Raised - b.Raised)
+		}
+		if a.ID < b.ID {
+			return -1
+		}
+		return 1
+	})
+	return all
+}
+
+// raise opens an episode unless an open one of the same instrument and kind is there already or one that explains it.
+func (w *Watcher) raise(e Episode) *Episode {
+	for i := range w.open {
+		o := &w.open[i]
+		if o.Instrument == e.Instrument && o.Kind == e.Kind || explains(o, &e) {
+			return nil
+		}
+	}
+	e.Station, e.To, e.Rev = w.setup.Station, Open, 1
+	e.ID = episodeID(&e)
+	if e.Advice == "" {
+		e.Advice = e.Kind.Entry().Advice
+	}
+	e.Confidence = float64(quantise(e.Confidence))
+	w.open = append(w.open, e)
+	return &w.open[len(w.open)-1]
+}
+
+// finish closes the open episode i with the first minute that is sound again.
+func (w *Watcher) finish(i int, to int64) {
+	e := w.open[i]
+	e.To = max(to, e.From+1)
+	e.Rev++
+	w.open = slices.Delete(w.open, i, i+1)
+	w.closed = append(w.closed, e)
+}
+
+func (w *Watcher) openIndex(instrument string, kind rules.FaultKind) int {
+	for i := range w.open {
+		if w.open[i].Instrument == instrument && w.open[i].Kind == kind {
+			return i
+		}
+	}
+	return -1
+}
+
+// episodeID names an episode for good: by station, instrument, the kind it was raised as and the minute it was raised.
+func episodeID(e *Episode) string {
+	h := fnv.New64a()
+	fmt.Fprintf(h, "%s|%s|%s|%d", e.Station, e.Instrument, e.Kind, e.Raised)
+	return fmt.Sprintf("%016x", h.Sum64())
+}
+
+// quantise rounds what is carried over midnight, so that a state read back is the state that was written.
+func quantise(v float64) Number { return Number(roundTo(v, 4096)) }

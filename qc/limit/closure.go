@@ -1,0 +1,52 @@
+package limit
+
+import (
+	"math"
+
+	"fluxwarden/rules"
+)
+
+// HighSunZenithDeg parts the two tolerances of the closure and diffuse-ratio tests. The published text leaves exactly 75
+// degrees open; here it belongs to the low sun.
+const HighSunZenithDeg = 75
+
+// LowSunZenithDeg is where closure and diffuse ratio end. Source: Long & Dutton 2002 (from memory).
+const LowSunZenithDeg = 93
+
+// ClosureReportZenithDeg is where closure is only reported: beyond it a plane of class A is off by more than the tolerance.
+const ClosureReportZenithDeg = 85
+
+// Closure tests global against direct on the horizontal plus diffuse.
+//
+//	|G - (B*mu + D)| <= max(tolerance * (B*mu + D), floor)
+//
+// Inputs in W/m2, as measured; mu is of the apparent sun. The relative tolerance is 0.08 below 75 degrees and 0.15 to 93
+// (Long & Dutton 2002, from memory); the absolute floor is a deviation from it: it is the combined uncertainty of three
+// class A instruments, without which a ten-watt offset would question every dull minute. Not applicable without all three,
+// with a sum not above ClosureMinWm2, or with the sun behind the horizon mask.
+func Closure(g, b, d float64, s *Sun, l *rules.Limits) rules.Outcome {
+	if math.IsNaN(g) {
+		return rules.NoValue
+	}
+	if math.IsNaN(b) || math.IsNaN(d) {
+		return rules.NoPartner
+	}
+	if s.ZenithDeg >= LowSunZenithDeg {
+		return rules.SunTooLow
+	}
+	if s.Hidden {
+		return rules.SunHidden
+	}
+	sum := float64(b*s.BeamMu) + d
+	if sum <= l.ClosureMinWm2 {
+		return rules.TooSmall
+	}
+	tolerance := l.ClosureHigh
+	if s.ZenithDeg >= HighSunZenithDeg {
+		tolerance = l.ClosureLow
+	}
+	if math.Abs(g-sum) > math.Max(tolerance*sum, l.ClosureFloorWm2) {
+		return rules.Miss
+	}
+	return rules.Pass
+}
