@@ -7,6 +7,7 @@ import (
 	"io"
 	"os"
 	"regexp"
+	"sort"
 	"strconv"
 	"strings"
 	"unicode/utf8"
@@ -106,33 +107,69 @@ func position(text []byte, at int) (line, column int) {
 	return 1 + bytes.Count(before, []byte("\n")), at - bytes.LastIndexByte(before, '\n')
 }
 
-var yamlLine = regexp.MustCompile(`^(?:line (\d+): )?(.*)$`)
+// The library counts lines from nothing in what its parser says, from one in what its scanner says.
+var yamlCountsFromZero = regexp.MustCompile("did not find expected (<|'-'|key|node content|',')")
+
+var yamlMessage = regexp.MustCompile(`^yaml: (?:line (\d+): )?(.*)`)
 
 // yamlTrouble takes the line out of the YAML library's message and adds how to mend the usual causes.
 func yamlTrouble(err error, text []byte) (line int, what, mend string) {
-	message, _, _ := strings.Cut(strings.TrimPrefix(err.Error(), "yaml: "), "\n")
-	m := yamlLine.FindStringSubmatch(message)
+	m := yamlMessage.FindStringSubmatch(err.Error())
+	if m == nil {
+		return 1, "not YAML", "check quotes, brackets and indentation"
+	}
 	line, _ = strconv.Atoi(m[1])
+	if line == 0 || yamlCountsFromZero.MatchString(m[2]) {
+		line++
+	}
 	what = "not YAML: " + m[2]
+	anchor, isAnchor := strings.CutPrefix(m[2], "unknown anchor '")
+	tab := firstTab(text)
 	switch {
-	case strings.Contains(what, "cannot start any token") || tabIndented(text):
-		if at := firstTab(text); at > 0 {
-			return at, "not YAML: the line is indented with a tab", "indent with spaces"
+	case isAnchor:
+		name, _, _ := strings.Cut(anchor, "'")
+		if at := bytes.Index(text, []byte("*"+name)); at >= 0 {
+			line, _ = position(text, at)
 		}
+		mend = "write the value out: a site file has no anchors or aliases"
+	case tab > 0:
+		line, what, mend = tab, "not YAML: the line is indented with a tab", "indent with spaces"
+	case strings.Contains(what, "cannot start any token"):
 		mend = "put a value that starts with a special character in quotes"
 	case strings.Contains(what, "mapping values are not allowed"):
 		mend = "put a value with a colon in it in quotes, and check the indentation of the line above"
-	case strings.Contains(what, "did not find expected"):
-		mend = "check indentation, brackets and quotes here and on the line above"
-	case strings.Contains(what, "unknown anchor"):
-		mend = "write the value out: a site file has no anchors or aliases"
+	case strings.Contains(what, "expected ',' or"):
+		mend = "close the bracket that is opened here, and check the commas"
+	case strings.Contains(what, "expected key") || strings.Contains(what, "expected '-'"):
+		line = breakingLine(text, m[2], line)
+		mend = "indent the line like its neighbours, and check the quotes on the line above"
 	default:
 		mend = "check quotes, brackets and indentation"
 	}
 	return line, what, mend
 }
 
-func tabIndented(text []byte) bool { return firstTab(text) > 0 }
+// bisectBytesMax bounds the work of finding a line; a file above it is told where the block begins.
+const bisectBytesMax = 256 << 10
+
+// breakingLine finds the line that breaks a block, for messages where the library only tells the line where the block begins: the
+// last line of the shortest beginning of the text that gives the same message.
+func breakingLine(text []byte, message string, line int) int {
+	if len(text) > bisectBytesMax {
+		return line
+	}
+	var ends []int
+	for i, c := range text {
+		if c == '\n' || i == len(text)-1 {
+			ends = append(ends, i+1)
+		}
+	}
+	return 1 + sort.Search(len(ends)-1, func(i int) bool {
+		var doc yaml.Node
+		err := yaml.Unmarshal(text[:ends[i]], &doc)
+		return err != nil && strings.HasSuffix(err.Error(), message)
+	})
+}
 
 // firstTab is the first line with a tab in its indentation, 0 if there is none.
 func firstTab(text []byte) int {

@@ -24,19 +24,19 @@ func (r *reader) instrument(v *value, station string, use channelUse) Instrument
 	if in.Shaded && !in.Measures.Longwave() {
 		r.problem(v.at("shaded").node, "leave it out; a shaded pyranometer measures diffuse", "%s: shaded is for pyrgeometers", path)
 	}
-	in.Input = r.input(v.at("input"), in.Measures, path, use)
+	for _, key := range []string{"signal", "irradiance", "case", "dome"} {
+		r.take(use, v.at("input").at(key), station, "instrument "+in.ID+" "+key)
+	}
+	in.Input = r.input(v.at("input"), in.Measures, path)
 	in.Calibrations = r.calibrations(v.at("calibrations"), &in, v, path)
 	return in
 }
 
-func (r *reader) input(v *value, q Quantity, path string, use channelUse) Input {
+func (r *reader) input(v *value, q Quantity, path string) Input {
 	in := Input{Signal: v.textAt("signal", ""), Irradiance: v.textAt("irradiance", ""), SignalMin: math.NaN(), SignalMax: math.NaN(),
 		Case: v.textAt("case", ""), Dome: v.textAt("dome", "")}
 	if v == nil || !v.ok {
 		return in
-	}
-	for _, key := range []string{"signal", "irradiance", "case", "dome"} {
-		r.take(use, v.at(key), path, path+" "+key)
 	}
 	r.inputUnit(v, q, path, &in)
 	for _, key := range []string{"case", "dome"} {

@@ -138,13 +138,13 @@ type channelUser struct {
 }
 
 // take notes a use and refuses a second one: two instruments on one channel are a slip of the pen whose numbers look sound.
-func (r *reader) take(use channelUse, v *value, path, who string) {
+func (r *reader) take(use channelUse, v *value, station, who string) {
 	if v == nil || !v.ok {
 		return
 	}
-	r.reserved(v.node, v.text, path)
+	r.reserved(v.node, v.text, station)
 	if other, taken := use[v.text]; taken {
-		r.problem(v.node, "give each its own channel", "%s: channel %s of %s is already read by %s on line %d", path, v.text, who, other.who, other.line)
+		r.problem(v.node, "give each its own channel", "%s: channel %s of %s is already read by %s on line %d", station, v.text, who, other.who, other.line)
 		return
 	}
 	use[v.text] = channelUser{who, v.node.Line}

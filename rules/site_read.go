@@ -110,7 +110,7 @@ func (r *reader) read(n *yaml.Node, f *field, path string) *value {
 			r.readObject(v, f, path)
 			return v
 		}
-		v.ok = r.scalar(n, path, "a channel's name") && r.name(n, f.form, path)
+		v.ok = r.scalar(n, f, path, "a channel's name") && r.name(n, f.form, path)
 		v.text = n.Value
 	default:
 		r.readScalar(v, f, path)
@@ -252,13 +252,16 @@ func (r *reader) readNumbers(v *value, f *field, path string) {
 }
 
 // scalar says whether the node is one plain value that is not empty.
-func (r *reader) scalar(n *yaml.Node, path, want string) bool {
+func (r *reader) scalar(n *yaml.Node, f *field, path, want string) bool {
 	if n.Kind != yaml.ScalarNode {
 		r.problem(n, "write "+want, "%s is %s", path, describe(n))
 		return false
 	}
 	if n.Tag == "!!null" || strings.TrimSpace(n.Value) == "" {
-		r.problem(n, "write "+want+", or leave the key out", "%s is empty", path)
+		if !f.required {
+			want += ", or leave the key out"
+		}
+		r.problem(n, "write "+want, "%s is empty", path)
 		return false
 	}
 	return true
@@ -279,7 +282,7 @@ func (r *reader) name(n *yaml.Node, f *form, path string) bool {
 
 func (r *reader) readScalar(v *value, f *field, path string) {
 	n := v.node
-	if !r.scalar(n, path, example(f)) {
+	if !r.scalar(n, f, path, example(f)) {
 		return
 	}
 	v.text = n.Value
@@ -325,14 +328,14 @@ func (r *reader) readChoice(v *value, f *field, path string) {
 
 func (r *reader) readNumber(v *value, f *field, path string) {
 	n := v.node
-	if !r.scalar(n, path, "a number") {
+	if !r.scalar(n, f, path, "a number") {
 		return
 	}
 	x, err := strconv.ParseFloat(n.Value, 64)
 	if err != nil || math.IsNaN(x) || math.IsInf(x, 0) || strings.ContainsAny(n.Value, "xXpP_") {
 		mend := "write a plain number such as 57.121"
-		if f.unit != "" {
-			mend += "; the unit is " + f.unit + " and is not written"
+		if unit := f.unitAfter(); unit != "" {
+			mend += "; the unit is" + unit + " and is not written"
 		}
 		r.problem(n, mend, "%s is %s, not a number", path, short(n.Value))
 		return
@@ -344,8 +347,7 @@ func (r *reader) readNumber(v *value, f *field, path string) {
 func (r *reader) inRange(v *value, x float64, f *field, path string) {
 	if x < f.low || x > f.high {
 		v.ok = false
-		r.problem(v.node, strings.TrimSpace(fmt.Sprintf("it must lie between %s and %s %s", formatNumber(f.low), formatNumber(f.high), f.unit)),
-			"%s is %s", path, short(v.node.Value))
+		r.problem(v.node, fmt.Sprintf("it must lie between %s and %s%s", formatNumber(f.low), formatNumber(f.high), f.unitAfter()), "%s is %s", path, short(v.node.Value))
 	}
 }
 
@@ -387,81 +389,3 @@ func (r *reader) readSpan(v *value, f *field, path string) {
 	v.span, v.ok = span, true
 	r.inRange(v, span.Seconds(), f, path)
 }
-
-// describe says what a node is, for a message.
-func describe(n *yaml.Node) string {
-	switch n.Kind {
-	case yaml.MappingNode:
-		return "keys and values"
-	case yaml.SequenceNode:
-		return fmt.Sprintf("a list of %d", len(n.Content))
-	case yaml.AliasNode:
-		return "an alias"
-	}
-	if n.Tag == "!!null" || n.Value == "" {
-		return "empty"
-	}
-	return short(n.Value)
-}
-
-// short quotes a word of the file so that it cannot break the message.
-func short(s string) string {
-	const most = 60
-	if len(s) > most {
-		s = s[:most] + "..."
-	}
-	return strconv.Quote(s)
-}
-
-// bare leaves a plain word as it is and quotes the rest.
-func bare(s string) string {
-	if quoted := short(s); len(quoted) != len(s)+2 || strings.ContainsAny(s, " \"") {
-		return quoted
-	}
-	return s
-}
-
-func join(path, key string) string {
-	if path == "" || path == "the file" {
-		return key
-	}
-	return path + " " + key
-}
-
-func firstOf(keys []string) string {
-	if len(keys) > 4 {
-		return strings.Join(keys[:4], ", ") + ", ..."
-	}
-	return strings.Join(keys, ", ")
-}
-
-// example shows what to write for a field.
-func example(f *field) string {
-	switch f.kind {
-	case choiceKind:
-		return "one of " + strings.Join(f.choices, ", ")
-	case numberKind:
-		return strings.TrimSpace("a number " + f.unit)
-	case percentKind:
-		return "a percentage such as 1.2%"
-	case boolKind:
-		return "true or false"
-	case timeKind:
-		return "a date such as 2026-01-31"
-	case spanKind:
-		return "a time such as 60s"
-	case numbersKind:
-		return "numbers in brackets"
-	case listKind:
-		return "a list"
-	case objectKind, mapKind:
-		return "keys and values"
-	case nameKind:
-		return "a name of " + f.form.words
-	case shortKind:
-		return "a channel's name"
-	}
-	return "text"
-}
-
-func formatNumber(x float64) string { return strconv.FormatFloat(x, 'g', -1, 64) }
