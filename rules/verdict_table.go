@@ -83,15 +83,22 @@ var testEffects = [TestCount]Effect{
 // TestEffect is what a miss of the test does. A pass and a test that does not apply do nothing.
 func TestEffect(t Test) Effect { return testEffects[t] }
 
+// testsOf holds the tests of each effect, so that a minute's misses are looked up at once: the core asks for every value.
+var testsOf = func() (sets [EffectCount]TestSet) {
+	for t, effect := range testEffects {
+		sets[effect] |= Test(t).Of()
+	}
+	return sets
+}()
+
 // TestsEffect is the greatest effect of the tests missed.
 func TestsEffect(missed TestSet) Effect {
-	greatest := NoEffect
-	for t := range testEffects {
-		if missed.Has(Test(t)) {
-			greatest = max(greatest, testEffects[t])
+	for effect := Reject; effect > NoEffect; effect-- {
+		if missed&testsOf[effect] != 0 {
+			return effect
 		}
 	}
-	return greatest
+	return NoEffect
 }
 
 // ClosureEffect is what a miss of closure does at an apparent zenith angle, degrees.
