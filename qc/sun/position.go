@@ -181,7 +181,7 @@ func observer(site Site) (x, y float64) {
 
 // equationOfTimeMin evaluates appendix A.1, eq. A1 and A2.
 func (g *geocentric) equationOfTimeMin() float64 {
-	e := 4 * wrap180(g.meanLongitudeDeg()-0.0057183-g.alpha+float64(g.dpsi*cosDeg(g.eps)))
+	e := float64(4 * wrap180(g.meanLongitudeDeg()-0.0057183-g.alpha+float64(g.dpsi*cosDeg(g.eps))))
 	switch {
 	case e > 20:
 		return e - 1440
