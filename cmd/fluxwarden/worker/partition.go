@@ -1,0 +1,239 @@
+package worker
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"maps"
+	"slices"
+	"time"
+)
+
+// A partition is a set of stations and what was committed of it last.
+type partition struct {
+	number    int
+	epoch     uint64
+	base      uint64   // the number of the last commit
+	position  Position // of that commit
+	taken     Position // messages up to this one are with the stations or in the archive
+	stations  map[string]*station
+	waiting   []string // declared stations whose state has not been made yet
+	rows      int      // readings that wait for a commit
+	dirty     bool     // something else waits for one
+	committed time.Time
+	wait      time.Duration // after a commit that did not come off
+	retryAt   time.Time
+}
+
+// adopt takes a partition over from the archive.
+func (w *Worker) adopt(n int, epoch uint64, now time.Time) (*partition, error) {
+	base, positions, err := w.cfg.Archive.Last(n)
+	if err != nil {
+		return nil, fmt.Errorf("partition %d: last commit: %w", n, err)
+	}
+	p := &partition{number: n, epoch: epoch, base: base, stations: map[string]*station{}, waiting: slices.Clone(w.cfg.Rules.Stations(n))}
+	if len(positions) > 0 {
+		p.position = positions[len(positions)-1]
+	}
+	p.taken = p.position
+	// Partitions commit one after the other and not all at once: the readers of the journal then never wait long.
+	p.committed = now.Add(-w.cfg.CommitEvery * time.Duration(n%partitionCount) / partitionCount)
+	return p, nil
+}
+
+// openCursor reads the journal from the least position of the partitions, after holding each against the stream.
+func (w *Worker) openCursor(ctx context.Context) error {
+	w.closeCursor()
+	st, err := w.cfg.Journal.State(ctx)
+	if err != nil {
+		return err
+	}
+	numbers := slices.Sorted(maps.Keys(w.partitions))
+	checked := map[Position]string{}
+	for _, n := range numbers {
+		p := w.partitions[n]
+		if _, ok := checked[p.taken]; !ok {
+			if checked[p.taken], err = w.mismatch(ctx, p.taken, st); err != nil {
+				return err
+			}
+		}
+	}
+	from := ^uint64(0)
+	for _, n := range numbers {
+		p := w.partitions[n]
+		p.startFrom(w, st, checked[p.taken])
+		from = min(from, p.taken.Seq)
+	}
+	cursor, err := w.cfg.Journal.Open(ctx, numbers, max(from+1, st.First))
+	if err != nil {
+		return err
+	}
+	w.cursor, w.reopen, w.failing = cursor, false, ""
+	w.caughtUp = cursor.Pending() == 0
+	w.stream = st
+	return nil
+}
+
+// startFrom sets the position from which the partition goes on in a stream that is, or is not, the one it was read from.
+func (p *partition) startFrom(w *Worker, st StreamState, reason string) {
+	if reason != "" {
+		w.cfg.Meter.JournalGap(reason)
+		w.log.Warn("the journal is not what it was when it was read last", "reason", reason, "partition", p.number, "stream", st.Stream,
+			"read_to", p.taken.Seq, "first", st.First, "last", st.Last)
+	}
+	switch {
+	case reason == GapPurged:
+		p.taken = Position{Stream: st.Stream, Created: st.Created, Seq: st.First - 1}
+	case reason != "" || p.taken.Created == 0:
+		p.taken = Position{Stream: st.Stream, Created: st.Created}
+	}
+}
+
+// mismatch says why the stream is not one in which the position holds; nothing if it is.
+func (w *Worker) mismatch(ctx context.Context, at Position, st StreamState) (string, error) {
+	switch {
+	case at.Created == 0 || w.cfg.Faulty.TrustAnyJournal:
+		return "", nil
+	case at.Created != st.Created || at.Stream != st.Stream:
+		return GapRecreate, nil
+	case at.Seq > st.Last:
+		return GapReused, nil
+	case at.Seq+1 < st.First:
+		return GapPurged, nil
+	case at.Seq == 0 || at.Stamp == 0 || at.Seq < st.First:
+		return "", nil
+	}
+	stamp, found, err := w.cfg.Journal.StampOf(ctx, at.Seq)
+	if err != nil {
+		return "", err
+	}
+	if found && stamp != at.Stamp {
+		return GapReused, nil
+	}
+	return "", nil
+}
+
+// advanceTo notes that a message was read: every partition that the cursor reads has had all its messages up to it.
+func (w *Worker) advanceTo(d *Delivery) {
+	for _, p := range w.partitions {
+		if d.Seq > p.taken.Seq {
+			p.taken.Seq, p.taken.Stamp = d.Seq, d.Stamp
+		}
+	}
+}
+
+// commitDue commits the partitions whose time has come.
+func (w *Worker) commitDue(ctx context.Context, now time.Time) {
+	for _, n := range slices.Sorted(maps.Keys(w.partitions)) {
+		p := w.partitions[n]
+		if now.Before(p.committed) { // the clock was set back
+			p.committed = now
+		}
+		since := now.Sub(p.committed)
+		due := p.rows >= w.cfg.CommitRows || since >= w.cfg.CommitEvery && (p.rows > 0 || p.dirty) ||
+			since >= idlePositionEvery && p.base > 0 && p.taken.Seq > p.position.Seq
+		if due && !now.Before(p.retryAt) {
+			w.commit(ctx, p, now)
+		}
+	}
+}
+
+// CommitAll commits all that waits, whatever the time.
+func (w *Worker) CommitAll(ctx context.Context) {
+	now := w.cfg.Clock.Now()
+	for _, n := range slices.Sorted(maps.Keys(w.partitions)) {
+		if p := w.partitions[n]; p.rows > 0 || p.dirty {
+			w.commit(ctx, p, now)
+		}
+	}
+}
+
+func (w *Worker) commit(ctx context.Context, p *partition, now time.Time) {
+	c := &Commit{Partition: p.number, Base: p.base, Epoch: p.epoch, Positions: []Position{p.taken}, RulesDigest: w.cfg.Rules.Digest(), Program: w.cfg.Program}
+	if w.cfg.Faulty.PositionEarly && w.cursor != nil {
+		c.Positions[0].Seq += w.cursor.Pending()
+		c.Positions[0].Stamp = 0
+	}
+	ids := slices.Sorted(maps.Keys(p.stations))
+	prepared := make([]*prepared, 0, len(ids))
+	for _, id := range ids {
+		pr, err := p.stations[id].prepare(ctx, now, c)
+		if err != nil {
+			w.drop(p.number, "read_archive", fmt.Errorf("station %s: %w", id, err))
+			return
+		}
+		prepared = append(prepared, pr)
+	}
+	base, err := w.cfg.Archive.Commit(c)
+	rows := p.rows
+	w.cfg.Meter.Committed(w.cfg.Clock.Now().Sub(now), rows, err)
+	if errors.Is(err, ErrLost) && w.cfg.Faulty.KeepAfterLost {
+		base, err = p.base+1, nil
+	}
+	switch {
+	case errors.Is(err, ErrLost):
+		w.drop(p.number, "commit", err)
+		return
+	case err != nil:
+		p.wait = min(max(2*p.wait, retryAfter), retryAfterMax)
+		p.retryAt = now.Add(p.wait)
+		w.fail("commit", "a commit did not come off; it is tried again, and the journal keeps the readings", err, "partition", p.number)
+		return
+	}
+	if p.wait > 0 {
+		w.log.Info("commits come off again", "partition", p.number)
+	}
+	p.base, p.position, p.committed, p.rows, p.dirty, p.wait, w.failing = base, c.Positions[0], now, 0, false, 0, ""
+	delete(w.retry, p.number)
+	for i, id := range ids {
+		p.stations[id].settled(ctx, prepared[i])
+	}
+	if passed(w.purged, now, purgeEvery) {
+		w.purged = now
+		w.purge(ctx, now)
+	}
+}
+
+// purgeEvery is how often the journal is cut.
+const purgeEvery = time.Hour
+
+// purge forgets what the journal holds behind the oldest committed position, less a day. The archive knows the positions of
+// partitions that others own.
+func (w *Worker) purge(ctx context.Context, now time.Time) {
+	oldest := ^uint64(0)
+	for n := range partitionCount {
+		seq, stream := uint64(0), w.stream.Created
+		p := w.partitions[n]
+		switch {
+		case p != nil && p.base > 0:
+			seq, stream = p.position.Seq, p.position.Created
+		case p != nil && p.rows == 0:
+			seq = p.taken.Seq
+		case p != nil:
+			return
+		default:
+			base, positions, err := w.cfg.Archive.Last(n)
+			if err != nil {
+				w.fail("read_archive", "the journal is not cut: a partition's position is not known", err, "partition", n)
+				return
+			}
+			if base == 0 && len(w.cfg.Rules.Stations(n)) == 0 {
+				continue
+			}
+			if len(positions) == 0 {
+				return
+			}
+			seq, stream = positions[len(positions)-1].Seq, positions[len(positions)-1].Created
+		}
+		if stream != w.stream.Created {
+			return
+		}
+		oldest = min(oldest, seq)
+	}
+	if oldest == 0 || oldest == ^uint64(0) {
+		return
+	}
+	if err := w.cfg.Journal.Purge(ctx, oldest, now.Add(-purgeBehind)); err != nil {
+		w.fail("purge_journal", "the journal cannot be cut behind what is committed", err)
+	}
+}

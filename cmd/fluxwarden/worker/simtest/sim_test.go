@@ -1,0 +1,102 @@
+package simtest
+
+import (
+	"flag"
+	"fmt"
+	"maps"
+	"runtime"
+	"slices"
+	"sync"
+	"sync/atomic"
+	"testing"
+
+	"fluxwarden/cmd/fluxwarden/worker"
+)
+
+var (
+	seeds    = flag.Int("seeds", 24, "how many seeds to simulate")
+	firstArg = flag.Uint64("first", 1, "the first of them")
+)
+
+const simulatedDays = 3
+
+func memoryBackend() backend { return newMemory() }
+
+// TestSimulation attacks the worker. The seed of a failure is printed: run it alone with -first SEED -seeds 1.
+func TestSimulation(t *testing.T) {
+	total := map[string]int{}
+	var mu sync.Mutex
+	simulate(*firstArg, *seeds, Options{Days: simulatedDays, Backend: memoryBackend}, func(seed uint64, counts map[string]int, err error) {
+		mu.Lock()
+		defer mu.Unlock()
+		for k, v := range counts {
+			total[k] += v
+		}
+		if err != nil {
+			t.Errorf("seed %d: %v\nrerun: go test ./cmd/fluxwarden/worker/simtest -run TestSimulation -first %d -seeds 1", seed, err, seed)
+		}
+	})
+	for _, k := range slices.Sorted(maps.Keys(total)) {
+		t.Logf("%-26s %d", k, total[k])
+	}
+	if *seeds < 20 {
+		return
+	}
+	// An attack that is never felt proves nothing.
+	for _, k := range []string{"deaths in a commit", "kills", "zombies", "failed lost_partition", "broker power cuts", "archive power cuts", "duplicates",
+		"late", "days judged again", "gap reused", "gap recreate", "gap purged", "journals remade", "journals trimmed", "acknowledged tails lost"} {
+		if total[k] == 0 {
+			t.Errorf("no seed saw any of: %s", k)
+		}
+	}
+}
+
+// simulate runs seeds on all cores.
+func simulate(first uint64, n int, o Options, done func(seed uint64, counts map[string]int, err error)) {
+	var next atomic.Uint64
+	var wg sync.WaitGroup
+	for range runtime.GOMAXPROCS(0) {
+		wg.Go(func() {
+			for {
+				k := next.Add(1) - 1
+				if k >= uint64(n) {
+					return
+				}
+				counts, err := runOne(first+k, o)
+				done(first+k, counts, err)
+			}
+		})
+	}
+	wg.Wait()
+}
+
+func runOne(seed uint64, o Options) (counts map[string]int, err error) {
+	defer func() {
+		if r := recover(); r != nil {
+			buf := make([]byte, 4096)
+			err = fmt.Errorf("panic: %v\n%s", r, buf[:runtime.Stack(buf, false)])
+		}
+	}()
+	return Run(seed, o)
+}
+
+// TestSimulationCanFail plants bugs of the kinds that the simulation is there to find.
+func TestSimulationCanFail(t *testing.T) {
+	for name, faulty := range map[string]worker.Faulty{
+		"late readings are all taken for new":    {NoDedupe: true},
+		"a position ahead of what was taken":     {PositionEarly: true},
+		"late readings change no minute":         {NoJudgingAgain: true},
+		"positions are trusted in any journal":   {TrustAnyJournal: true},
+		"a partition that was lost is worked on": {KeepAfterLost: true},
+	} {
+		t.Run(name, func(t *testing.T) {
+			for seed := uint64(1); seed <= 60; seed++ {
+				if _, err := runOne(seed, Options{Days: simulatedDays, Backend: memoryBackend, Faulty: faulty}); err != nil {
+					t.Logf("caught by seed %d: %v", seed, err)
+					return
+				}
+			}
+			t.Error("60 seeds did not notice")
+		})
+	}
+}
