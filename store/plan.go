@@ -1,0 +1,264 @@
+package store
+
+import (
+	"bytes"
+	"encoding/json"
+	"fmt"
+	"slices"
+	"strconv"
+
+	"fluxwarden/qc/engine"
+	"fluxwarden/qc/minute"
+	"fluxwarden/store/table"
+)
+
+// rawPartsMax is how many part files of one station-day are kept before a commit writes them as one.
+const rawPartsMax = 16
+
+func (d *draft) meta(f *File, digests map[string]string) map[string]string {
+	m := map[string]string{"station": f.Station, "table": f.Table, "period": f.Period, "sealed": strconv.FormatBool(f.Sealed),
+		"format": strconv.Itoa(FormatVersion), "partition": strconv.Itoa(d.c.Partition), "commit": strconv.FormatUint(d.number, 10),
+		"program": d.c.Program, "rules_digest": d.c.RulesDigest}
+	if f.Table == TableMinutes {
+		for k, v := range d.c.Meta {
+			m[k] = v
+		}
+		b, _ := json.Marshal(digests)
+		m["row_digests"] = string(b)
+		m["judge_version"] = strconv.Itoa(engine.JudgeVersion)
+		m["test_bits"] = table.TestBits()
+	}
+	return m
+}
+
+func (d *draft) add(f File, makeFile func(f File) ([]byte, File, error)) {
+	d.jobs = append(d.jobs, &job{file: f, make: func() ([]byte, File, error) { return makeFile(f) }})
+}
+
+func (d *draft) planRaw() error {
+	type key struct {
+		station string
+		day     int64
+	}
+	parts := map[key][]*table.Table{}
+	var order []key
+	for _, r := range d.c.Raw {
+		if err := checkStation(r.Batch.Station); err != nil {
+			return err
+		}
+		for _, at := range r.Batch.At {
+			if at.Day() != r.Day {
+				return fmt.Errorf("raw of %s: a stamp of %s in the part of %s", r.Batch.Station, dayName(at.Day()), dayName(r.Day))
+			}
+		}
+		if r.Batch.Rows() == 0 {
+			continue
+		}
+		k := key{r.Batch.Station, r.Day}
+		if parts[k] == nil {
+			order = append(order, k)
+		}
+		parts[k] = append(parts[k], table.FromBatch(r.Batch))
+	}
+	for _, k := range order {
+		var old []File
+		for _, f := range d.current(k.station, TableRaw) {
+			if f.Period == dayName(k.day) {
+				old = append(old, f)
+			}
+		}
+		if len(old) < rawPartsMax {
+			old = nil
+		}
+		for _, f := range old {
+			d.replace(f)
+		}
+		d.add(File{Table: TableRaw, Station: k.station, Period: dayName(k.day)}, func(f File) ([]byte, File, error) {
+			return d.makeRaw(f, old, parts[k])
+		})
+	}
+	return nil
+}
+
+func (d *draft) makeRaw(f File, old []File, fresh []*table.Table) ([]byte, File, error) {
+	var tables []*table.Table
+	for _, o := range old {
+		t, err := d.a.readFile(o, nil)
+		if err != nil {
+			return nil, f, err
+		}
+		tables = append(tables, t)
+	}
+	t := joinRaw(append(tables, fresh...))
+	f.Rows, t.Meta = t.Rows, d.meta(&f, nil)
+	data, err := table.Encode(t)
+	return data, f, err
+}
+
+// joinRaw puts readings together, sorted by time; of equal stamps the one that came first stays first.
+func joinRaw(tables []*table.Table) *table.Table {
+	if len(tables) == 1 {
+		return tables[0]
+	}
+	parts := make([]table.Part, len(tables))
+	for i, t := range tables {
+		parts[i] = table.Part{Table: t, To: t.Rows}
+	}
+	t := table.Join(table.Union(tables), parts)
+	if times := t.Find("time").Times; !slices.IsSorted(times) {
+		return table.FromBatch(table.ToBatch("", t))
+	}
+	return t
+}
+
+func (d *draft) planDays() error {
+	for _, day := range d.c.Days {
+		j := day.Judged
+		if err := checkStation(j.Station); err != nil {
+			return err
+		}
+		if month := d.monthFile(j.Station, monthOf(j.Day)); month != nil {
+			// The month is one file already: its other days stay, so it is written anew with this day changed.
+			m := NewMonth(j.Station, monthOf(j.Day))
+			if err := m.Add(j); err != nil {
+				return err
+			}
+			d.addMonth(m)
+			continue
+		}
+		for _, f := range d.current(j.Station, TableMinutes) {
+			if f.Period == dayName(j.Day) {
+				d.replace(f)
+			}
+		}
+		t := table.FromJudged(j) // now, not in a job: the caller's day may be a buffer
+		d.add(File{Table: TableMinutes, Station: j.Station, Period: dayName(j.Day), Sealed: day.Sealed}, func(f File) ([]byte, File, error) {
+			return d.makeMinutes(f, t, []monthDay{{j.Day, 0, t.Rows}})
+		})
+	}
+	return nil
+}
+
+func (d *draft) monthFile(station, month string) *File {
+	for _, f := range d.current(station, TableMinutes) {
+		if f.Period == month {
+			return &f
+		}
+	}
+	return nil
+}
+
+func (d *draft) makeMinutes(f File, t *table.Table, days []monthDay) ([]byte, File, error) {
+	f.Digests = map[string]string{}
+	for _, x := range days {
+		f.Digests[dayName(x.day)] = table.Digest(t, x.from, x.to)
+	}
+	f.Rows, t.Meta = t.Rows, d.meta(&f, f.Digests)
+	w := d.a.minutes.Get().(*table.Writer)
+	var b bytes.Buffer
+	if err := w.Write(&b, t); err != nil {
+		return nil, f, err // the writer is not put back: its state is not known
+	}
+	d.a.minutes.Put(w)
+	return b.Bytes(), f, nil
+}
+
+func (d *draft) planMonths() error {
+	for _, m := range d.c.Months {
+		if err := checkStation(m.Station); err != nil {
+			return err
+		}
+		d.addMonth(m)
+	}
+	return nil
+}
+
+// addMonth makes the month's file of the days in m and those in the archive that m does not have. Several changes of one month in
+// one commit become one file.
+func (d *draft) addMonth(m *Month) {
+	var old []File
+	for _, f := range d.current(m.Station, TableMinutes) {
+		if len(f.Period) >= 7 && f.Period[:7] == m.Month {
+			old = append(old, f)
+			d.replace(f)
+		}
+	}
+	d.add(File{Table: TableMinutes, Station: m.Station, Period: m.Month, Sealed: true}, func(f File) ([]byte, File, error) {
+		t, days, err := d.a.mergeMonth(m, old)
+		if err != nil {
+			return nil, f, err
+		}
+		return d.makeMinutes(f, t, days)
+	})
+}
+
+func (a *Archive) mergeMonth(m *Month, old []File) (*table.Table, []monthDay, error) {
+	type source struct {
+		day  int64
+		part table.Part
+	}
+	var list []source
+	have := map[int64]bool{}
+	for _, x := range m.days {
+		have[x.day] = true
+		list = append(list, source{x.day, table.Part{Table: m.rows, From: x.from, To: x.to}})
+	}
+	fresh := len(list)
+	for _, f := range old {
+		t, err := a.readFile(f, nil)
+		if err != nil {
+			return nil, nil, err
+		}
+		for _, x := range daysOf(t) {
+			if !have[x.day] {
+				list = append(list, source{x.day, table.Part{Table: t, From: x.from, To: x.to}})
+			}
+		}
+	}
+	if fresh == len(list) {
+		return m.rows.Cut(0, m.used), m.days, nil
+	}
+	slices.SortStableFunc(list, func(x, y source) int { return int(x.day - y.day) })
+	parts, days, at := make([]table.Part, len(list)), make([]monthDay, len(list)), 0
+	for i, s := range list {
+		parts[i] = s.part
+		days[i] = monthDay{s.day, at, at + s.part.To - s.part.From}
+		at = days[i].to
+	}
+	return table.Join(table.MinuteColumns(), parts), days, nil
+}
+
+// daysOf finds the days in rows sorted by time.
+func daysOf(t *table.Table) []monthDay {
+	var list []monthDay
+	v := t.Find("time")
+	if v == nil {
+		return nil
+	}
+	for r, x := range v.Times {
+		day := minute.Stamp(x).Day()
+		if n := len(list); n == 0 || list[n-1].day != day {
+			list = append(list, monthDay{day, r, r})
+		}
+		list[len(list)-1].to = r + 1
+	}
+	return list
+}
+
+func (d *draft) planFaults() error {
+	for _, s := range d.c.Faults {
+		if err := checkStation(s.Station); err != nil {
+			return err
+		}
+		for _, f := range d.current(s.Station, TableFaults) {
+			d.replace(f)
+		}
+		t := table.FromEpisodes(s.Episodes)
+		d.add(File{Table: TableFaults, Station: s.Station, Rows: t.Rows}, func(f File) ([]byte, File, error) {
+			t.Meta = d.meta(&f, nil)
+			data, err := table.Encode(t)
+			return data, f, err
+		})
+	}
+	return nil
+}

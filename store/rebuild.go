@@ -1,0 +1,133 @@
+package store
+
+import (
+	"encoding/json"
+	"errors"
+	"io/fs"
+	"path"
+	"strconv"
+	"strings"
+
+	"fluxwarden/store/table"
+)
+
+// adopt builds the books anew from the tree, for an archive whose commit records and manifests are gone.
+func (a *Archive) adopt() error {
+	for _, p := range a.parts {
+		if p.have {
+			return nil
+		}
+	}
+	for i, p := range a.parts {
+		if err := a.rebuildPartition(i, p); err != nil {
+			return err
+		}
+		a.knowStations(i)
+	}
+	return nil
+}
+
+// rebuildPartition takes the files of the tree whose metadata names the partition.
+func (a *Archive) rebuildPartition(i int, p *partition) error {
+	a.treeOnce.Do(func() { a.tree, a.treeErr = a.walk() })
+	if a.treeErr != nil {
+		return a.treeErr
+	}
+	for _, f := range a.tree {
+		if f.partition == i {
+			p.add(f.File)
+		}
+	}
+	return nil
+}
+
+type treeFile struct {
+	File
+	partition int
+}
+
+// walk lists the published files with what their metadata says; what is not ours is left out and named by Verify.
+func (a *Archive) walk() ([]treeFile, error) {
+	var list []treeFile
+	partitions := map[string]int{}
+	var states []File
+	err := a.eachFile(func(name, tableName, station string) error {
+		if tableName == TableState {
+			if period, ok := strings.CutPrefix(path.Base(path.Dir(name)), "month="); ok && strings.HasSuffix(name, ".jsonl") {
+				states = append(states, File{Path: name, Table: TableState, Station: station, Period: period})
+			}
+			return nil
+		}
+		f, ok := a.adoptFile(name, tableName, station)
+		if ok {
+			list = append(list, f)
+			partitions[station] = f.partition
+		}
+		return nil
+	})
+	for _, s := range states {
+		if i, ok := partitions[s.Station]; ok {
+			list = append(list, treeFile{s, i})
+		}
+	}
+	return list, err
+}
+
+func (a *Archive) adoptFile(name, tableName, station string) (treeFile, bool) {
+	b, err := a.readBytes(File{Path: name, Table: tableName})
+	if err != nil {
+		return treeFile{}, false
+	}
+	meta, rows, err := table.Meta(strings.NewReader(string(b)), int64(len(b)))
+	if err != nil || meta["station"] != station || meta["table"] != tableName {
+		return treeFile{}, false
+	}
+	i, err := strconv.Atoi(meta["partition"])
+	if err != nil || i < 0 || i >= Partitions {
+		return treeFile{}, false
+	}
+	f := File{Path: name, SHA256: sha(b), Bytes: int64(len(b)), Rows: rows, Table: tableName, Station: station, Period: meta["period"],
+		Sealed: meta["sealed"] == "true"}
+	_ = json.Unmarshal([]byte(meta["row_digests"]), &f.Digests)
+	f.Digests = nil
+	return treeFile{f, i}, true
+}
+
+// eachFile calls f for each file under the published tree.
+func (a *Archive) eachFile(f func(name, tableName, station string) error) error {
+	for _, t := range []string{TableRaw, TableMinutes, TableFaults, TableState} {
+		if err := a.walkDir(t, func(name string) error {
+			parts := strings.Split(name, "/")
+			station := ""
+			if len(parts) > 2 {
+				station, _ = strings.CutPrefix(parts[1], "station=")
+			}
+			return f(name, t, station)
+		}); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+func (a *Archive) walkDir(dir string, f func(name string) error) error {
+	list, err := a.fs.ReadDir(a.path(dir))
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil
+	}
+	if err != nil {
+		return err
+	}
+	for _, e := range list {
+		name := path.Join(dir, e.Name)
+		if e.Dir {
+			err = a.walkDir(name, f)
+		} else {
+			err = f(name)
+		}
+		if err != nil {
+			return err
+		}
+	}
+	return nil
+}

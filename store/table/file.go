@@ -1,0 +1,474 @@
+// Package table is what stands inside the archive's files: the columns with their units, how rows are rounded, the digest of a
+// station-day's rows, and tables as Parquet. It is the only package that knows Parquet.
+package table
+
+import (
+	"bytes"
+	"encoding/json"
+	"fmt"
+	"io"
+	"maps"
+	"math"
+	"reflect"
+	"slices"
+	"sync"
+
+	"github.com/parquet-go/parquet-go"
+	"github.com/parquet-go/parquet-go/compress/zstd"
+)
+
+// A Kind is the type of a column's values.
+type Kind uint8
+
+// The kinds. Times are microseconds since 1970, UTC.
+const (
+	Time Kind = iota
+	Double
+	Int
+	Text
+	Bool
+)
+
+// A Column says what a column holds. StandardName is the CF one, empty where CF has none.
+type Column struct {
+	Name, Unit, StandardName, Description string
+	Kind                                  Kind
+	Step                                  float64 // resolution that values are rounded to; 0 keeps them as they are
+	Required                              bool    // never null
+}
+
+// NullInt stands for a null in Ints, NullTime in Times, NullCode in Codes. In Doubles it is NaN.
+const (
+	NullInt  = math.MinInt32
+	NullTime = math.MinInt64
+	NullCode = -1
+)
+
+// A Vector is a column's values; the slice of its kind is as long as the table, or nil if all values are null.
+type Vector struct {
+	Times   []int64
+	Doubles []float64
+	Ints    []int32
+	Codes   []int32 // of Dict
+	Dict    []string
+	Bools   []bool
+}
+
+// A Table is rows in columns.
+type Table struct {
+	Columns []Column
+	Vectors []Vector
+	Rows    int
+	Meta    map[string]string
+}
+
+// Find gives the vector of a column, nil if there is none of that name.
+func (t *Table) Find(name string) *Vector {
+	for i := range t.Columns {
+		if t.Columns[i].Name == name {
+			return &t.Vectors[i]
+		}
+	}
+	return nil
+}
+
+// RowGroupRows is how many rows a row group holds at most.
+const RowGroupRows = 131072
+
+// ordered is a group whose fields keep their order; the library's own sorts them by name.
+type ordered struct {
+	parquet.Group
+	fields []parquet.Field
+}
+
+func (o ordered) Fields() []parquet.Field { return o.fields }
+
+type field struct {
+	parquet.Node
+	name string
+}
+
+func (f field) Name() string                           { return f.name }
+func (f field) Value(base reflect.Value) reflect.Value { return base.MapIndex(reflect.ValueOf(f.name)) }
+
+func (c *Column) node() parquet.Node {
+	var n parquet.Node
+	switch c.Kind {
+	case Time:
+		n = parquet.Encoded(parquet.Timestamp(parquet.Microsecond), &parquet.DeltaBinaryPacked)
+	case Double:
+		n = parquet.Encoded(parquet.Leaf(parquet.DoubleType), &parquet.ByteStreamSplit)
+	case Int:
+		n = parquet.Encoded(parquet.Int(32), &parquet.RLEDictionary)
+	case Text:
+		n = parquet.Encoded(parquet.String(), &parquet.RLEDictionary)
+	case Bool:
+		n = parquet.Leaf(parquet.BooleanType)
+	}
+	if !c.Required {
+		n = parquet.Optional(n)
+	}
+	return parquet.Compressed(n, codec)
+}
+
+var codec = &zstd.Codec{Level: zstd.SpeedDefault}
+
+func schemaOf(columns []Column) *parquet.Schema {
+	o := ordered{Group: parquet.Group{}}
+	for i := range columns {
+		n := columns[i].node()
+		o.Group[columns[i].Name] = n
+		o.fields = append(o.fields, field{n, columns[i].Name})
+	}
+	return parquet.NewSchema("row", o)
+}
+
+// A Writer writes tables of the same columns, one file after the other, and reuses its buffers. It is for one goroutine.
+type Writer struct {
+	columns []Column
+	w       *parquet.Writer
+	values  []parquet.Value
+	nulls   [1024]parquet.Value
+}
+
+// NewWriter makes a writer for these columns.
+func NewWriter(columns []Column) *Writer {
+	return &Writer{columns: columns, w: parquet.NewWriter(io.Discard, schemaOf(columns), parquet.MaxRowsPerRowGroup(RowGroupRows),
+		parquet.DataPageStatistics(false), parquet.CreatedBy("fluxwarden", "1", ""),
+		parquet.SortingWriterConfig(parquet.SortingColumns(parquet.Ascending(columns[0].Name))))}
+}
+
+// Write writes the table, whose columns must be the writer's, as one whole file.
+func (w *Writer) Write(out io.Writer, t *Table) error {
+	w.w.Reset(out)
+	for _, k := range slices.Sorted(maps.Keys(t.Meta)) {
+		w.w.SetKeyValueMetadata(k, t.Meta[k])
+	}
+	w.w.SetKeyValueMetadata("columns", describe(t.Columns))
+	for from := 0; from < t.Rows; from += RowGroupRows {
+		to := min(from+RowGroupRows, t.Rows)
+		for i, cw := range w.w.ColumnWriters() {
+			if err := w.column(cw, i, &t.Columns[i], &t.Vectors[i], from, to); err != nil {
+				return fmt.Errorf("column %s: %w", t.Columns[i].Name, err)
+			}
+		}
+		if err := w.w.Flush(); err != nil {
+			return err
+		}
+	}
+	return w.w.Close()
+}
+
+func (w *Writer) column(cw *parquet.ColumnWriter, index int, c *Column, v *Vector, from, to int) error {
+	const chunk = 4096
+	for a := from; a < to; a += chunk {
+		b := min(a+chunk, to)
+		w.values = appendValues(w.values[:0], index, c, v, a, b)
+		if _, err := cw.WriteRowValues(w.values); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+func appendValues(out []parquet.Value, index int, c *Column, v *Vector, a, b int) []parquet.Value {
+	null := parquet.NullValue().Level(0, 0, index)
+	defined := 1
+	if c.Required {
+		defined = 0
+	}
+	switch {
+	case c.Kind == Double && v.Doubles != nil:
+		for _, x := range v.Doubles[a:b] {
+			if math.IsNaN(x) || math.IsInf(x, 0) {
+				out = append(out, null)
+			} else {
+				out = append(out, parquet.DoubleValue(x).Level(0, defined, index))
+			}
+		}
+	case c.Kind == Time && v.Times != nil:
+		for _, x := range v.Times[a:b] {
+			if x == NullTime {
+				out = append(out, null)
+			} else {
+				out = append(out, parquet.Int64Value(x).Level(0, defined, index))
+			}
+		}
+	case c.Kind == Int && v.Ints != nil:
+		for _, x := range v.Ints[a:b] {
+			if x == NullInt {
+				out = append(out, null)
+			} else {
+				out = append(out, parquet.Int32Value(x).Level(0, defined, index))
+			}
+		}
+	case c.Kind == Text && v.Codes != nil:
+		values := make([]parquet.Value, len(v.Dict))
+		for i, s := range v.Dict {
+			values[i] = parquet.ByteArrayValue([]byte(s)).Level(0, defined, index)
+		}
+		for _, x := range v.Codes[a:b] {
+			if x == NullCode {
+				out = append(out, null)
+			} else {
+				out = append(out, values[x])
+			}
+		}
+	case c.Kind == Bool && v.Bools != nil:
+		for _, x := range v.Bools[a:b] {
+			out = append(out, parquet.BooleanValue(x).Level(0, defined, index))
+		}
+	default:
+		for range b - a {
+			out = append(out, null)
+		}
+	}
+	return out
+}
+
+// described is what the metadata `columns` says of a column.
+type described struct {
+	Name         string  `json:"name"`
+	Unit         string  `json:"unit,omitempty"`
+	StandardName string  `json:"standard_name,omitempty"`
+	Description  string  `json:"long_name,omitempty"`
+	Step         float64 `json:"resolution,omitempty"`
+}
+
+var describedCache sync.Map // of *Column to string: the minutes' list is long and always the same
+
+func describe(columns []Column) string {
+	if s, ok := describedCache.Load(&columns[0]); ok {
+		return s.(string)
+	}
+	list := make([]described, len(columns))
+	for i, c := range columns {
+		list[i] = described{c.Name, c.Unit, c.StandardName, c.Description, c.Step}
+	}
+	b, _ := json.Marshal(list)
+	if &columns[0] == &minuteColumns[0] {
+		describedCache.Store(&columns[0], string(b))
+	}
+	return string(b)
+}
+
+// Encode writes a table once, for tables whose columns differ from file to file.
+func Encode(t *Table) ([]byte, error) {
+	var b bytes.Buffer
+	err := NewWriter(t.Columns).Write(&b, t)
+	return b.Bytes(), err
+}
+
+// Meta reads the key-value metadata and the number of rows of a file.
+func Meta(r io.ReaderAt, size int64) (meta map[string]string, rows int, err error) {
+	err = guard(func() error {
+		f, err := open(r, size)
+		if err != nil {
+			return err
+		}
+		meta, rows = metaOf(f), int(f.NumRows())
+		return nil
+	})
+	return meta, rows, err
+}
+
+func metaOf(f *parquet.File) map[string]string {
+	m := map[string]string{}
+	for _, kv := range f.Metadata().KeyValueMetadata {
+		m[kv.Key] = kv.Value
+	}
+	return m
+}
+
+func open(r io.ReaderAt, size int64) (*parquet.File, error) {
+	return parquet.OpenFile(r, size, parquet.SkipBloomFilters(true), parquet.SkipPageIndex(true))
+}
+
+// guard turns a panic into an error: headers of Parquet pages carry no checksum, and a damaged one can make the reader panic.
+func guard(f func() error) (err error) {
+	defer func() {
+		if p := recover(); p != nil {
+			err = fmt.Errorf("not a readable parquet file: %v", p)
+		}
+	}()
+	return f()
+}
+
+// Read reads the columns named, in the order of the file; nil reads all of them. Columns that the file lacks are left out.
+func Read(r io.ReaderAt, size int64, want []string) (t *Table, err error) {
+	err = guard(func() error {
+		f, err := open(r, size)
+		if err != nil {
+			return err
+		}
+		t, err = readTable(f, want)
+		return err
+	})
+	return t, err
+}
+
+func readTable(f *parquet.File, want []string) (*Table, error) {
+	t := &Table{Rows: int(f.NumRows()), Meta: metaOf(f)}
+	var known []described
+	_ = json.Unmarshal([]byte(t.Meta["columns"]), &known) // a foreign file has none: then only names and kinds are known
+	by := map[string]described{}
+	for _, d := range known {
+		by[d.Name] = d
+	}
+	for i, fd := range f.Schema().Fields() {
+		if want != nil && !slices.Contains(want, fd.Name()) {
+			continue
+		}
+		kind, err := kindOf(fd)
+		if err != nil {
+			return nil, err
+		}
+		d := by[fd.Name()]
+		c := Column{Name: fd.Name(), Unit: d.Unit, StandardName: d.StandardName, Description: d.Description, Step: d.Step,
+			Kind: kind, Required: !fd.Optional()}
+		v, err := readColumn(f, i, &c, t.Rows)
+		if err != nil {
+			return nil, fmt.Errorf("column %s: %w", c.Name, err)
+		}
+		t.Columns, t.Vectors = append(t.Columns, c), append(t.Vectors, v)
+	}
+	return t, nil
+}
+
+func kindOf(fd parquet.Field) (Kind, error) {
+	if fd.Leaf() && !fd.Repeated() {
+		switch fd.Type().Kind() {
+		case parquet.Int64:
+			return Time, nil
+		case parquet.Double:
+			return Double, nil
+		case parquet.Int32:
+			return Int, nil
+		case parquet.ByteArray:
+			return Text, nil
+		case parquet.Boolean:
+			return Bool, nil
+		}
+	}
+	return 0, fmt.Errorf("column %s: a type that no table of the archive has", fd.Name())
+}
+
+func readColumn(f *parquet.File, index int, c *Column, rows int) (Vector, error) {
+	b := builder{kind: c.Kind, rows: rows}
+	values := make([]parquet.Value, 1024)
+	for _, g := range f.RowGroups() {
+		if err := b.chunk(g.ColumnChunks()[index], values); err != nil {
+			return Vector{}, err
+		}
+	}
+	if b.n != rows {
+		return Vector{}, fmt.Errorf("%d values for %d rows", b.n, rows)
+	}
+	return b.v, nil
+}
+
+type builder struct {
+	kind Kind
+	rows int
+	n    int // values taken
+	v    Vector
+	dict map[string]int32
+}
+
+func (b *builder) chunk(c parquet.ColumnChunk, values []parquet.Value) error {
+	pages := c.Pages()
+	defer pages.Close()
+	for {
+		p, err := pages.ReadPage()
+		if err == io.EOF {
+			return nil
+		}
+		if err != nil {
+			return err
+		}
+		if b.n+int(p.NumValues()) > b.rows {
+			return fmt.Errorf("more values than rows")
+		}
+		err = b.page(p, values)
+		parquet.Release(p)
+		if err != nil {
+			return err
+		}
+	}
+}
+
+func (b *builder) page(p parquet.Page, values []parquet.Value) error {
+	if p.NumNulls() == p.NumValues() {
+		b.skip(int(p.NumValues()))
+		return nil
+	}
+	b.make()
+	r := p.Values()
+	for {
+		n, err := r.ReadValues(values)
+		for _, v := range values[:n] {
+			b.put(v)
+		}
+		if err == io.EOF {
+			return nil
+		}
+		if err != nil {
+			return err
+		}
+	}
+}
+
+// skip takes n nulls; while there is nothing but nulls the vector stays nil.
+func (b *builder) skip(n int) { b.n += n }
+
+// make makes the vector, all null, when the first value comes.
+func (b *builder) make() {
+	switch {
+	case b.kind == Time && b.v.Times == nil:
+		b.v.Times = filled[int64](b.rows, NullTime)
+	case b.kind == Double && b.v.Doubles == nil:
+		b.v.Doubles = filled(b.rows, math.NaN())
+	case b.kind == Int && b.v.Ints == nil:
+		b.v.Ints = filled[int32](b.rows, NullInt)
+	case b.kind == Text && b.v.Codes == nil:
+		b.v.Codes = filled[int32](b.rows, NullCode)
+		b.dict = map[string]int32{}
+	case b.kind == Bool && b.v.Bools == nil:
+		b.v.Bools = make([]bool, b.rows)
+	}
+}
+
+func filled[T any](n int, x T) []T {
+	s := make([]T, n)
+	for i := range s {
+		s[i] = x
+	}
+	return s
+}
+
+func (b *builder) put(v parquet.Value) {
+	i := b.n
+	b.n++
+	if v.IsNull() {
+		return
+	}
+	switch b.kind {
+	case Time:
+		b.v.Times[i] = v.Int64()
+	case Double:
+		b.v.Doubles[i] = v.Double()
+	case Int:
+		b.v.Ints[i] = v.Int32()
+	case Text:
+		code, ok := b.dict[string(v.ByteArray())]
+		if !ok {
+			code = int32(len(b.v.Dict))
+			s := string(v.ByteArray())
+			b.v.Dict = append(b.v.Dict, s)
+			b.dict[s] = code
+		}
+		b.v.Codes[i] = code
+	case Bool:
+		b.v.Bools[i] = v.Boolean()
+	}
+}
