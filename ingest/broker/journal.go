@@ -43,7 +43,11 @@ func (j *Journal) State(ctx context.Context) (JournalState, error) {
 	if err != nil {
 		return JournalState{}, fmt.Errorf("broker: stream %s: %w", JournalStream, err)
 	}
-	return JournalState{info.Created, info.State.FirstSeq, info.State.LastSeq, info.State.Bytes, uint64(max(info.Config.MaxBytes, 0))}, nil
+	first := info.State.FirstSeq
+	if info.State.Msgs == 0 { // a stream that never held anything says 0
+		first = info.State.LastSeq + 1
+	}
+	return JournalState{info.Created, first, info.State.LastSeq, info.State.Bytes, uint64(max(info.Config.MaxBytes, 0))}, nil
 }
 
 // Purge drops what lies up to and with upTo, of all partitions.

@@ -33,7 +33,7 @@ type Decoder struct {
 	names  interner
 	buf    []byte
 	pos    int
-	values []minute.ChannelValue // where readings get their values from; never reused
+	values []minute.ChannelValue // where readings get their values from; what was given away is not used again
 	seen   map[string]struct{}   // names of the reading in hand, where there are many or some have no value
 	mapped bool                  // seen is in use for the reading in hand
 }
@@ -45,7 +45,7 @@ func (d *Decoder) Decode(payload []byte, into []minute.Reading) ([]minute.Readin
 		return into, whole(payload, TooLarge, fmt.Sprintf("%d bytes, the limit is %d: send fewer readings at a time", len(payload), PayloadBytesMax))
 	}
 	d.buf, d.pos = payload, 0
-	defer func() { d.buf, d.values = nil, nil }()
+	defer func() { d.buf = nil }()
 	before := len(into)
 	var refused []Refusal
 	d.space()
@@ -218,13 +218,15 @@ func (d *Decoder) channels() ([]minute.ChannelValue, *flaw) {
 	return d.values[from:len(d.values):len(d.values)], nil
 }
 
+const chunkMin = 128 // values in a chunk
+
 // push adds a value to the reading in hand, which begins at *from. Where the chunk is full, the reading moves to a new
 // one, so that its values stay side by side and the earlier readings keep theirs.
 func (d *Decoder) push(from *int, v minute.ChannelValue) {
 	if len(d.values) == cap(d.values) {
-		// About as many as the rest of the payload can hold, at some twelve bytes a value.
-		grown := make([]minute.ChannelValue, 0, len(d.values)-*from+8+(len(d.buf)-d.pos)/12)
-		d.values = append(grown, d.values[*from:]...)
+		// About as many as the rest of the payload can hold, at some twelve bytes a value, or as many small payloads want.
+		begun := d.values[*from:]
+		d.values = append(make([]minute.ChannelValue, 0, max(chunkMin, len(begun)+8+(len(d.buf)-d.pos)/12)), begun...)
 		*from = 0
 	}
 	d.values = append(d.values, v)
