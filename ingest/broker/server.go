@@ -60,11 +60,11 @@ func StartEmbedded(ctx context.Context, s EmbeddedSettings) (*Embedded, error) {
 		unlock()
 		return nil, fmt.Errorf("broker: embedded server: %w", err)
 	}
-	log := &serverLog{log: s.Log}
+	log := &serverLog{log: s.Log, gone: make(chan struct{})}
 	srv.SetLogger(log, false, false)
 	srv.Start()
 	e := &Embedded{srv, unlock}
-	if err := waitReady(ctx, srv); err != nil {
+	if err := waitReady(ctx, srv, log.gone); err != nil {
 		e.Stop()
 		if last := log.lastError(); last != "" {
 			err = fmt.Errorf("%w: %s", err, last)
@@ -102,15 +102,17 @@ func embeddedOptions(s EmbeddedSettings) *server.Options {
 	}
 }
 
-func waitReady(ctx context.Context, srv *server.Server) error {
+func waitReady(ctx context.Context, srv *server.Server, gone <-chan struct{}) error {
 	ready := make(chan bool, 1)
 	go func() { ready <- srv.ReadyForConnections(readyWait) }()
 	select {
 	case ok := <-ready:
 		if !ok {
-			return errors.New("not ready: is the port in use")
+			return fmt.Errorf("not ready within %s", readyWait)
 		}
 		return nil
+	case <-gone:
+		return errors.New("it gave up")
 	case <-ctx.Done():
 		return ctx.Err()
 	}

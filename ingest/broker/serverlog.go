@@ -12,6 +12,7 @@ type serverLog struct {
 	log  *slog.Logger
 	mu   sync.Mutex
 	last string
+	gone chan struct{} // closed when the server says that it cannot go on
 }
 
 func (l *serverLog) Noticef(string, ...any) {}
@@ -23,7 +24,16 @@ func (l *serverLog) Warnf(format string, v ...any) { l.write(slog.LevelWarn, for
 func (l *serverLog) Errorf(format string, v ...any) { l.keep(format, v) }
 
 // Fatalf would end the process by the server's own logger. Here the start is refused by the caller instead.
-func (l *serverLog) Fatalf(format string, v ...any) { l.keep(format, v) }
+func (l *serverLog) Fatalf(format string, v ...any) {
+	l.keep(format, v)
+	l.mu.Lock()
+	defer l.mu.Unlock()
+	select {
+	case <-l.gone:
+	default:
+		close(l.gone)
+	}
+}
 
 func (l *serverLog) keep(format string, v []any) {
 	l.mu.Lock()

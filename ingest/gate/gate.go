@@ -23,6 +23,8 @@ const (
 	unseenBytesMax    = 128 << 20
 )
 
+const closeWait = 5 * time.Second // for the last answers to be on their way
+
 // A Gate is one front door. Several may stand before one broker; a request goes to one of them.
 type Gate struct {
 	broker  *broker.Broker
@@ -169,6 +171,8 @@ func (g *Gate) Close(ctx context.Context) error {
 	case <-ctx.Done():
 		return fmt.Errorf("gate: close: %w: what was not answered will be sent again", ctx.Err())
 	}
+	ctx, cancel := context.WithTimeout(ctx, closeWait)
+	defer cancel()
 	if err := g.broker.Conn.FlushWithContext(ctx); err != nil && !errors.Is(err, nats.ErrConnectionClosed) {
 		return fmt.Errorf("gate: close: last answers: %w", err)
 	}
