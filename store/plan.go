@@ -2,6 +2,7 @@ package store
 
 import (
 	"bytes"
+	"cmp"
 	"encoding/json"
 	"fmt"
 	"slices"
@@ -89,7 +90,10 @@ func (d *draft) makeRaw(f File, old []File, fresh []*table.Table) ([]byte, File,
 		}
 		tables = append(tables, t)
 	}
-	t := joinRaw(append(tables, fresh...))
+	return d.encodeRaw(f, joinRaw(append(tables, fresh...)))
+}
+
+func (d *draft) encodeRaw(f File, t *table.Table) ([]byte, File, error) {
 	f.Rows, t.Meta = t.Rows, d.meta(&f, nil)
 	data, err := table.Encode(t)
 	return data, f, err
@@ -112,31 +116,49 @@ func joinRaw(tables []*table.Table) *table.Table {
 }
 
 func (d *draft) planDays() error {
-	for _, day := range d.c.Days {
+	days := slices.Clone(d.c.Days)
+	slices.SortStableFunc(days, func(x, y Day) int {
+		return cmp.Or(cmp.Compare(x.Judged.Station, y.Judged.Station), cmp.Compare(x.Judged.Day, y.Judged.Day))
+	})
+	var month *Month // being changed; its days come one after the other
+	for i, day := range days {
 		j := day.Judged
 		if err := checkStation(j.Station); err != nil {
 			return err
 		}
-		if month := d.monthFile(j.Station, monthOf(j.Day)); month != nil {
-			// The month is one file already: its other days stay, so it is written anew with this day changed.
-			m := NewMonth(j.Station, monthOf(j.Day))
-			if err := m.Add(j); err != nil {
-				return err
-			}
-			d.addMonth(m)
+		if i > 0 && days[i-1].Judged.Station == j.Station && days[i-1].Judged.Day == j.Day {
+			return fmt.Errorf("day %s of %s: twice in one commit", dayName(j.Day), j.Station)
+		}
+		if slices.ContainsFunc(d.c.Months, func(m *Month) bool { return m.Station == j.Station && m.Month == monthOf(j.Day) }) {
+			return fmt.Errorf("day %s of %s: its month is in the same commit; add it there", dayName(j.Day), j.Station)
+		}
+		if d.monthFile(j.Station, monthOf(j.Day)) == nil {
+			d.planDay(day)
 			continue
 		}
-		for _, f := range d.current(j.Station, TableMinutes) {
-			if f.Period == dayName(j.Day) {
-				d.replace(f)
-			}
+		// The month is one file already. Its other days stay, so it is written anew with this day changed.
+		if month == nil || month.Station != j.Station || month.Month != monthOf(j.Day) {
+			month = NewMonth(j.Station, monthOf(j.Day))
+			d.addMonth(month)
 		}
-		t := table.FromJudged(j) // now, not in a job: the caller's day may be a buffer
-		d.add(File{Table: TableMinutes, Station: j.Station, Period: dayName(j.Day), Sealed: day.Sealed}, func(f File) ([]byte, File, error) {
-			return d.makeMinutes(f, t, []monthDay{{j.Day, 0, t.Rows}})
-		})
+		if err := month.Add(j); err != nil {
+			return err
+		}
 	}
 	return nil
+}
+
+func (d *draft) planDay(day Day) {
+	j := day.Judged
+	for _, f := range d.current(j.Station, TableMinutes) {
+		if f.Period == dayName(j.Day) {
+			d.replace(f)
+		}
+	}
+	t := table.FromJudged(j)
+	d.add(File{Table: TableMinutes, Station: j.Station, Period: dayName(j.Day), Sealed: day.Sealed}, func(f File) ([]byte, File, error) {
+		return d.makeMinutes(f, t, []monthDay{{j.Day, 0, t.Rows}})
+	})
 }
 
 func (d *draft) monthFile(station, month string) *File {
@@ -173,8 +195,7 @@ func (d *draft) planMonths() error {
 	return nil
 }
 
-// addMonth makes the month's file of the days in m and those in the archive that m does not have. Several changes of one month in
-// one commit become one file.
+// addMonth makes the month's file of the days in m and those in the archive that m does not have.
 func (d *draft) addMonth(m *Month) {
 	var old []File
 	for _, f := range d.current(m.Station, TableMinutes) {

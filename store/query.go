@@ -275,7 +275,7 @@ func (a *Archive) RowDigest(station string, day int64) (string, error) {
 	return digest, err
 }
 
-func (a *Archive) digests(f File) (map[string]string, error) {
+func (a *Archive) metaOf(f File) (map[string]string, error) {
 	r, err := a.open(f)
 	if err != nil {
 		return nil, err
@@ -284,6 +284,14 @@ func (a *Archive) digests(f File) (map[string]string, error) {
 	meta, _, err := table.Meta(r, r.Size())
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", f.Path, err)
+	}
+	return meta, nil
+}
+
+func (a *Archive) digests(f File) (map[string]string, error) {
+	meta, err := a.metaOf(f)
+	if err != nil {
+		return nil, err
 	}
 	d := map[string]string{}
 	if err := json.Unmarshal([]byte(meta["row_digests"]), &d); err != nil {

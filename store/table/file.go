@@ -99,7 +99,7 @@ func (c *Column) node() parquet.Node {
 	case Double:
 		n = parquet.Encoded(parquet.Leaf(parquet.DoubleType), &parquet.ByteStreamSplit)
 	case Int:
-		n = parquet.Encoded(parquet.Int(32), &parquet.RLEDictionary)
+		n = parquet.Encoded(parquet.Int(32), &parquet.Plain)
 	case Text:
 		n = parquet.Encoded(parquet.String(), &parquet.RLEDictionary)
 	case Bool:
@@ -111,7 +111,7 @@ func (c *Column) node() parquet.Node {
 	return parquet.Compressed(n, codec)
 }
 
-var codec = &zstd.Codec{Level: zstd.SpeedDefault}
+var codec = &zstd.Codec{Level: zstd.SpeedFastest}
 
 func schemaOf(columns []Column) *parquet.Schema {
 	o := ordered{Group: parquet.Group{}}

@@ -1,0 +1,204 @@
+// Package export writes what the archive holds in the forms that others read.
+package export
+
+import (
+	"bufio"
+	"fmt"
+	"io"
+	"math"
+	"strconv"
+	"time"
+
+	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
+	"fluxwarden/store"
+	"fluxwarden/store/table"
+)
+
+// A Request says which minutes to export.
+type Request struct {
+	Station    string
+	From, To   int64            // minutes since 1970, To not included
+	Quantities []rules.Quantity // nil is all that the station has
+}
+
+// CSV writes minutes as CSV: `time` (RFC 3339, the minute's start), then for each quantity q of the station q, q_verdict, q_reasons, q_measured and
+// q_u95, then further columns. A value that is not there is empty. Weather is not corrected, so its q_measured is q. It gives the number of
+// minutes written.
+func CSV(w io.Writer, a *store.Archive, r Request) (rows int, err error) {
+	quantities, err := quantitiesOf(a, r)
+	if err != nil {
+		return 0, err
+	}
+	columns := csvColumns(quantities)
+	var names []string
+	for _, c := range columns {
+		names = append(names, c.source)
+	}
+	out := bufio.NewWriterSize(w, 1<<18)
+	line := []byte("time")
+	for _, c := range columns {
+		line = append(append(line, ','), c.header...)
+	}
+	if _, err := out.Write(append(line, '\n')); err != nil {
+		return 0, err
+	}
+	err = a.ReadMinutes(r.Station, r.From, r.To, names, func(rs *store.Rows) error {
+		rows += rs.Rows
+		return writeRows(out, rs, columns)
+	})
+	if err != nil {
+		return rows, err
+	}
+	return rows, out.Flush()
+}
+
+// quantitiesOf finds the quantities that have a verdict in the minutes asked for.
+func quantitiesOf(a *store.Archive, r Request) ([]rules.Quantity, error) {
+	asked := r.Quantities
+	if asked == nil {
+		for q := rules.Quantity(0); int(q) < rules.QuantityCount; q++ {
+			asked = append(asked, q)
+		}
+	}
+	var names []string
+	for _, q := range asked {
+		names = append(names, q.String()+"_verdict")
+	}
+	has := make([]bool, len(asked))
+	err := a.ReadMinutes(r.Station, r.From, r.To, names, func(rs *store.Rows) error {
+		for i, n := range names {
+			if v := rs.Find(n); v != nil && !has[i] {
+				for _, c := range v.Codes {
+					has[i] = has[i] || c != table.NullCode
+				}
+			}
+		}
+		return nil
+	})
+	var list []rules.Quantity
+	for i, q := range asked {
+		if has[i] {
+			list = append(list, q)
+		}
+	}
+	return list, err
+}
+
+type csvColumn struct {
+	header, source string
+	decimals       int
+	kind           table.Kind
+}
+
+func csvColumns(quantities []rules.Quantity) []csvColumn {
+	var first, more []csvColumn
+	all := table.MinuteColumns()
+	find := func(name string) (csvColumn, bool) {
+		for _, c := range all {
+			if c.Name == name {
+				return csvColumn{name, name, decimals(c.Step), c.Kind}, true
+			}
+		}
+		return csvColumn{}, false
+	}
+	for _, q := range quantities {
+		for _, suffix := range []string{"", "_verdict", "_reasons", "_measured", "_u95"} {
+			c, ok := find(q.String() + suffix)
+			if !ok && suffix == "_measured" {
+				c, _ = find(q.String())
+				c.header = q.String() + suffix
+			} else if !ok {
+				c = csvColumn{header: q.String() + suffix, kind: table.Double}
+			}
+			first = append(first, c)
+		}
+		for _, suffix := range []string{"_sd", "_min", "_max", "_n"} {
+			if c, ok := find(q.String() + suffix); ok {
+				more = append(more, c)
+			}
+		}
+	}
+	for _, name := range []string{"records", "zenith_deg", "apparent_zenith_deg", "azimuth_deg", "extraterrestrial", "clear_global", "clear_direct",
+		"clear_diffuse", "clear_lw_down"} {
+		if c, ok := find(name); ok {
+			more = append(more, c)
+		}
+	}
+	return append(first, more...)
+}
+
+// decimals are those that a resolution deserves.
+func decimals(step float64) int {
+	switch {
+	case step >= table.StepPressure:
+		return 1
+	case step > table.StepAngle:
+		return 2
+	}
+	return 3
+}
+
+func writeRows(out *bufio.Writer, rs *store.Rows, columns []csvColumn) error {
+	vectors := make([]*table.Vector, len(columns))
+	for i, c := range columns {
+		if v := rs.Find(c.source); v != nil && c.source != "" {
+			vectors[i] = v
+		} else {
+			vectors[i] = &table.Vector{}
+		}
+	}
+	day, date := int64(math.MinInt64), ""
+	line := make([]byte, 0, 1024)
+	for r := range rs.Rows {
+		m := rs.Minute(r)
+		if d := minute.FloorDiv(m, minute.PerDay); d != day {
+			day, date = d, time.Unix(d*86400, 0).UTC().Format("2006-01-02T")
+		}
+		of := m - day*minute.PerDay
+		line = append(line[:0], date...)
+		line = append(line, byte('0'+of/600), byte('0'+of/60%10), ':', byte('0'+of%60/10), byte('0'+of%10), ':', '0', '0', 'Z')
+		for i := range columns {
+			line = appendCell(append(line, ','), &columns[i], vectors[i], r)
+		}
+		if _, err := out.Write(append(line, '\n')); err != nil {
+			return fmt.Errorf("export: %w", err)
+		}
+	}
+	return nil
+}
+
+func appendCell(b []byte, c *csvColumn, v *table.Vector, r int) []byte {
+	switch {
+	case v.Doubles != nil:
+		return appendFixed(b, v.Doubles[r], c.decimals)
+	case v.Ints != nil && v.Ints[r] != table.NullInt:
+		return strconv.AppendInt(b, int64(v.Ints[r]), 10)
+	case v.Codes != nil && v.Codes[r] != table.NullCode:
+		return append(b, v.Dict[v.Codes[r]]...)
+	}
+	return b
+}
+
+// appendFixed writes a number with so many decimals, and nothing for NaN.
+func appendFixed(b []byte, x float64, decimals int) []byte {
+	if math.IsNaN(x) {
+		return b
+	}
+	scale := [...]float64{1, 10, 100, 1000}[decimals]
+	k := math.RoundToEven(x * scale)
+	if math.Abs(k) > 1<<52 {
+		return strconv.AppendFloat(b, x, 'g', -1, 64)
+	}
+	n := int64(k)
+	if n < 0 {
+		b = append(b, '-')
+		n = -n
+	}
+	b = strconv.AppendInt(b, n/int64(scale), 10)
+	if decimals == 0 {
+		return b
+	}
+	rest := strconv.AppendInt(make([]byte, 0, 8), n%int64(scale)+int64(scale), 10) // a 1 in front keeps the zeros
+	return append(append(b, '.'), rest[1:]...)
+}
