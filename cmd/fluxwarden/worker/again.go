@@ -115,6 +115,8 @@ func (s *station) rebuild(ctx context.Context) error {
 			s.open.Append(&r)
 		}
 	}
+	s.w.spares.takeBlock(s.current.plan, s.current.block)
+	s.w.spares.takeJudged(s.current.plan, s.current.judged)
 	s.current = c
 	return nil
 }
@@ -233,7 +235,11 @@ func (s *station) closedDayAgain(ctx context.Context, day int64) (moved bool, er
 		s.unsaved[day] = true
 	}
 	s.lastEnded = max(s.lastEnded, day)
+	if old := s.judged[day]; old != nil {
+		s.w.spares.takeJudged(c.plan, old)
+	}
 	s.judged[day] = c.judged
+	s.w.spares.takeBlock(c.plan, c.block)
 	return moved, nil
 }
 
@@ -294,9 +300,11 @@ func (s *station) touched(episodes []fault.Episode) []int64 {
 	return slices.Sorted(maps.Keys(days))
 }
 
-// A reachKey is all of an episode that settling a minute may read.
+// A reachKey is all of an episode that settling a minute may read. Evidence is part of it: what a restored value is restored
+// by stands there.
 type reachKey struct {
 	id, instrument string
+	evidence       string
 	kind, severity uint8
 	from, to       int64
 }
@@ -305,7 +313,7 @@ func keyed(episodes []fault.Episode) map[reachKey]bool {
 	m := make(map[reachKey]bool, len(episodes))
 	for i := range episodes {
 		e := &episodes[i]
-		m[reachKey{e.ID, e.Instrument, uint8(e.Kind), uint8(e.Severity), e.From, e.To}] = true
+		m[reachKey{e.ID, e.Instrument, fmt.Sprint(e.Evidence), uint8(e.Kind), uint8(e.Severity), e.From, e.To}] = true
 	}
 	return m
 }
@@ -316,7 +324,7 @@ func (s *station) reachOn(keys map[reachKey]bool, day int64) string {
 	var lines []string
 	for k := range keys {
 		if k.from < end && k.to > begin {
-			lines = append(lines, fmt.Sprint(k.id, k.instrument, k.kind, k.severity, max(k.from, begin), min(k.to, end)))
+			lines = append(lines, fmt.Sprint(k.id, k.instrument, k.evidence, k.kind, k.severity, max(k.from, begin), min(k.to, end)))
 		}
 	}
 	slices.Sort(lines)

@@ -89,6 +89,9 @@ func (s *station) judgeForSeal(ctx context.Context, now minute.Stamp) error {
 // settled notes that a commit has come off.
 func (s *station) settled(ctx context.Context, pr *prepared) {
 	clear(s.raw)
+	for day, j := range s.judged {
+		s.w.spares.takeJudged(s.w.cfg.Rules.PlanFor(s.id, day), j)
+	}
 	clear(s.judged)
 	clear(s.unsaved)
 	for _, day := range pr.sealed {

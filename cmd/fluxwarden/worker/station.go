@@ -195,6 +195,7 @@ func (s *station) endDay() {
 	s.unsaved[c.day] = true
 	s.sealing[c.day] = true
 	s.judged[c.day] = c.judged
+	s.w.spares.takeBlock(c.plan, c.block)
 }
 
 // begin makes the state of a day from the summaries of the days before it.
@@ -204,11 +205,11 @@ func (s *station) begin(day int64) *current {
 		return nil
 	}
 	layout := plan.Layout()
-	c := &current{day: day, plan: plan, gatherer: minute.NewGatherer(layout), block: minute.NewBlock(day, len(layout.Channels)),
+	c := &current{day: day, plan: plan, gatherer: minute.NewGatherer(layout), block: s.w.spares.block(plan, day, len(layout.Channels)),
 		excluded: map[int]bool{}, changed: true}
 	if !s.guard(func() {
 		c.judger = engine.NewJudger(plan, s.history(day))
-		c.judged = c.judger.Begin(day)
+		c.judged = c.judger.BeginWith(s.w.spares.judgedFor(plan, day))
 	}) {
 		return nil
 	}

@@ -73,6 +73,7 @@ type Worker struct {
 	purged     time.Time
 	metered    time.Time
 	caughtUp   bool
+	spares     *spares
 	failing    string // the error that was logged last, so that it is logged once
 }
 
@@ -96,7 +97,7 @@ func New(cfg Config) *Worker {
 	if log == nil {
 		log = slog.New(slog.DiscardHandler)
 	}
-	return &Worker{cfg: cfg, log: log, grace: minute.Stamp(cfg.Grace / time.Microsecond), partitions: map[int]*partition{}, retry: map[int]retry{}}
+	return &Worker{cfg: cfg, log: log, grace: minute.Stamp(cfg.Grace / time.Microsecond), partitions: map[int]*partition{}, retry: map[int]retry{}, spares: newSpares()}
 }
 
 // Run works until the context ends. What is not committed by then is read from the journal again.

@@ -122,7 +122,7 @@ func planArrivals(rng *rand.Rand, days int) []arrival {
 				if rng.IntN(6) == 0 { // the whole window comes late, as after a lost link
 					held = time.Duration(rng.IntN(25)) * time.Hour
 				}
-				for k := range 10 + rng.IntN(70) {
+				for k := range 10 + rng.IntN(60) {
 					at := from.Add(time.Duration(k) * intervals[station])
 					r := minute.Reading{At: minute.Stamp(at.UnixMicro()), Values: sample(rng, station, at, dead)}
 					all = append(all, send(rng, station, r, at.Add(held))...)
@@ -156,12 +156,12 @@ func sample(rng *rand.Rand, station string, at time.Time, dead bool) []minute.Ch
 // send gives the arrivals of one reading: late or not, once or more, whole or in parts, and now and then contradicted.
 func send(rng *rand.Rand, station string, r minute.Reading, sent time.Time) []arrival {
 	delay := time.Duration(rng.IntN(4000)) * time.Millisecond
-	switch rng.IntN(30) {
-	case 0, 1:
+	switch rng.IntN(60) {
+	case 0, 1, 2, 3:
 		delay = time.Duration(rng.IntN(600)) * time.Second
-	case 2:
+	case 4:
 		delay = time.Duration(rng.IntN(26*60)) * time.Minute
-	case 3:
+	case 5, 6:
 		delay = -time.Duration(rng.IntN(180)) * time.Second // a clock that is ahead
 	}
 	one := arrival{station: station, reading: r, at: sent.Add(delay)}
@@ -169,7 +169,11 @@ func send(rng *rand.Rand, station string, r minute.Reading, sent time.Time) []ar
 	switch rng.IntN(20) {
 	case 0, 1: // again
 		again := one
-		again.at = again.at.Add(time.Duration(rng.IntN(30*3600)) * time.Second)
+		span := 600
+		if rng.IntN(8) == 0 {
+			span = 30 * 3600
+		}
+		again.at = again.at.Add(time.Duration(rng.IntN(span)) * time.Second)
 		all = append(all, again)
 	case 2: // in two parts
 		if n := len(r.Values); n > 1 {

@@ -94,8 +94,8 @@ func (w *world) run() {
 
 // step lets some time pass: little while something is on its way, much while nothing is.
 func (w *world) step() {
-	if gap := w.arrivals[0].at.Sub(w.now); gap > 20*time.Minute {
-		w.now = w.now.Add(time.Duration(w.rng.Int64N(int64(min(gap, 6*time.Hour)))))
+	if gap := w.arrivals[0].at.Sub(w.now); gap > 4*time.Minute {
+		w.now = w.now.Add(min(gap, time.Minute+time.Duration(w.rng.Int64N(int64(12*time.Hour)))))
 		return
 	}
 	w.now = w.now.Add([]time.Duration{3, 20, 60, 240}[w.rng.IntN(4)] * time.Second)
@@ -177,7 +177,7 @@ func (w *world) work(i, steps int) {
 func (w *world) start(i int) {
 	p := &w.procs[i]
 	p.w = worker.New(worker.Config{Journal: w.journal, Lease: lease{w, i}, Archive: w.backend.open(func() bool { return w.dies(i) }), Rules: w.rules,
-		Findings: silent{w}, Aside: silent{w}, Meter: meter{w}, Clock: w, Log: w.o.Log, Program: "simulation", CommitRows: 400, Faulty: w.o.Faulty})
+		Findings: silent{w}, Aside: silent{w}, Meter: meter{w}, Clock: w, Log: w.o.Log, Program: "simulation", CommitEvery: 40 * time.Minute, CommitRows: 250, Faulty: w.o.Faulty})
 }
 
 // alive runs a piece of a process, which may die in it.
@@ -221,7 +221,7 @@ func (w *world) finish() {
 		if !w.now.Before(end) {
 			break
 		}
-		w.now = w.now.Add(7 * time.Hour)
+		w.now = w.now.Add(13 * time.Hour)
 	}
 	w.procs[0].w.CommitAll(context.Background())
 }
