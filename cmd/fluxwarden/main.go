@@ -1,3 +1,88 @@
+// Command fluxwarden watches over the instruments of radiation stations: it judges every reading, says which instrument is at fault, and
+// keeps an archive of clean minutes.
 package main
 
-func main() {}
+import (
+	"fmt"
+	"os"
+	"strings"
+)
+
+// Exit codes.
+const (
+	exitOK      = 0
+	exitProblem = 1 // it ran and found a problem, or could not finish
+	exitUsage   = 2 // wrong flags, a wrong site file or settings
+)
+
+// version is set when a release is linked.
+var version = "dev"
+
+// A command is one word of the command line.
+type command struct {
+	name  string
+	about string
+	run   func(args []string) int
+}
+
+func commands() []command {
+	return []command{
+		// demo
+		// run
+		{"judge", "judge files of readings into an archive", cmdJudge},
+		{"export", "write an archive's minutes as CSV", cmdExport},
+		{"faults", "list the episodes: which instrument, what, since when, what to do", cmdFaults},
+		{"sky", "what the judge expects: sun, clear sky, the bounds of every limit", cmdSky},
+		{"lint", "check site files", cmdLint},
+		// refused
+		{"version", "print the version", func([]string) int { fmt.Println("fluxwarden", version); return exitOK }},
+	}
+}
+
+func main() {
+	if len(os.Args) < 2 || os.Args[1] == "help" || os.Args[1] == "-h" || os.Args[1] == "--help" {
+		usage()
+		os.Exit(exitUsage)
+	}
+	for _, c := range commands() {
+		if c.name == os.Args[1] {
+			os.Exit(c.run(os.Args[2:]))
+		}
+	}
+	fmt.Fprintf(os.Stderr, "fluxwarden: no command %q%s\n", os.Args[1], suggestion(os.Args[1]))
+	os.Exit(exitUsage)
+}
+
+func usage() {
+	var b strings.Builder
+	b.WriteString("example: fluxwarden judge --site site.yaml --archive ./archive readings.csv\n\n")
+	for _, c := range commands() {
+		fmt.Fprintf(&b, "  %-9s %s\n", c.name, c.about)
+	}
+	b.WriteString("\nfluxwarden COMMAND --help lists a command's flags.\n")
+	fmt.Fprint(os.Stderr, b.String())
+}
+
+// suggestion names the command that shares the longest beginning with what was typed.
+func suggestion(typed string) string {
+	best, length := "", 1
+	for _, c := range commands() {
+		n := 0
+		for n < len(typed) && n < len(c.name) && typed[n] == c.name[n] {
+			n++
+		}
+		if n > length {
+			best, length = c.name, n
+		}
+	}
+	if best == "" {
+		return "; fluxwarden help lists them"
+	}
+	return fmt.Sprintf("; did you mean %s?", best)
+}
+
+// complain prints an error last on the screen and gives the exit code.
+func complain(code int, err error) int {
+	fmt.Fprintf(os.Stderr, "fluxwarden: %v\n", err)
+	return code
+}

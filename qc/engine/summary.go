@@ -1,6 +1,10 @@
 package engine
 
-import "fluxwarden/qc/fault"
+import (
+	"encoding/json"
+
+	"fluxwarden/qc/fault"
+)
 
 // HistoryDays is how many day summaries the judge looks back on: what it has learnt by a day is a function of these alone.
 const HistoryDays = 30
@@ -17,4 +21,17 @@ type DaySummary struct {
 	Carry   fault.Carry     `json:"carry"`
 	Open    []fault.Episode `json:"-"` // they stand in the carry
 	Closed  []fault.Episode `json:"closed,omitempty"`
+}
+
+// EncodeSummary writes a summary as the archive keeps it.
+func EncodeSummary(s *DaySummary) ([]byte, error) { return json.Marshal(s) }
+
+// DecodeSummary reads what EncodeSummary wrote.
+func DecodeSummary(text []byte) (DaySummary, error) {
+	var s DaySummary
+	if err := json.Unmarshal(text, &s); err != nil {
+		return s, err
+	}
+	s.Open = s.Carry.Open
+	return s, nil
 }

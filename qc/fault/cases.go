@@ -3,7 +3,7 @@ package fault
 import "fluxwarden/rules"
 
 // caseCount is how many cases catalogueOfCases has. The order is fixed: a carry names them by number.
-const caseCount = 27
+const caseCount = 30
 
 var threeShortwave = []rules.Quantity{rules.Global, rules.Direct, rules.Diffuse}
 
@@ -32,12 +32,15 @@ func init() {
 		{kind: rules.UnitSlip, quantity: rules.Direct, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
 		{kind: rules.UnitSlip, quantity: rules.Diffuse, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
 		{kind: rules.ChannelsSwapped, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: channelsSwapped, number: "diffuse_above_global", unit: "W/m2"},
-		{kind: rules.PointingLost, quantity: rules.Direct, instrument: Tracker, needs: threeShortwave, raise: 6, most: 24, evidence: pointingLost, number: "global_over_clear_sky", unit: "1"},
-		{kind: rules.ShadeOff, quantity: rules.Diffuse, needs: threeShortwave, raise: 6, most: 15, evidence: shadeOff, number: "share_of_beam_on_diffuse", unit: "1"},
+		{kind: rules.PointingLost, quantity: rules.Direct, instrument: Tracker, needs: threeShortwave, raise: 6, most: 24, quiet: 1800, evidence: pointingLost, number: "global_over_clear_sky", unit: "1"},
+		{kind: rules.ShadeOff, quantity: rules.Diffuse, needs: threeShortwave, raise: 6, most: 15, quiet: 2880, evidence: shadeOff, number: "share_of_beam_on_diffuse", unit: "1"},
 		{kind: rules.Noise, quantity: rules.Global, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},
 		{kind: rules.Noise, quantity: rules.Direct, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},
 		{kind: rules.Noise, quantity: rules.Diffuse, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},
-		{kind: rules.RangeClipped, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 8, evidence: rangeClipped, number: "rail", unit: "W/m2"},
+		{kind: rules.RangeClipped, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 8, quiet: 1300, evidence: rangeClipped, number: "rail", unit: "W/m2"},
 		{kind: rules.ThermistorBad, quantity: rules.LWDown, raise: 5, most: 10, evidence: thermistorBad, number: "body_less_air", unit: "K"},
+		{kind: rules.ZeroOffset, quantity: rules.Global, raise: 6, most: 9, evidence: zeroOffset, number: "offset", unit: "W/m2"},
+		{kind: rules.ZeroOffset, quantity: rules.Diffuse, raise: 6, most: 9, evidence: zeroOffset, number: "offset", unit: "W/m2"},
+		{kind: rules.DomeWet, quantity: rules.LWDown, raise: 6, most: 9, quiet: 720, evidence: wetPyrgeometer, number: "net", unit: "W/m2"},
 	}
 }

@@ -7,41 +7,66 @@ import (
 )
 
 // noise: minutes stand alone, off both neighbours, and nothing else at the station shares it. By day the other two of global, direct
-// and diffuse must have gone smoothly; at night there is nothing to go up and down.
+// and diffuse must have gone smoothly for some minutes before and after: at the edge of a cloud the three do not follow alike. At night
+// there is nothing to go up and down. It is told two minutes late.
 func noise(w *Watcher, c *faultCase, v *view) hint {
-	p, o := &w.before[0], &w.before[1]
-	if p.minute != v.minute-1 || o.minute != v.minute-2 {
+	at := &w.before[1]
+	if at.minute != v.minute-2 || w.before[5].minute != v.minute-6 {
 		return nothing
 	}
-	x := func(q rules.Quantity) float64 { return p.value[q] - (o.value[q]+v.value[q])/2 }
-	own := x(c.quantity)
-	if math.IsNaN(own) {
+	mine := math.Abs(w.swing(2, c.quantity))
+	if math.IsNaN(mine) {
 		return nothing
 	}
 	if v.night {
-		if math.Abs(own) > 12 {
-			return hint{1, math.Abs(own)}
+		if mine > 12 {
+			return hint{1, mine}
 		}
 		return hint{odds: -0.03}
 	}
-	if !v.sunUp {
+	if !at.sunUp {
 		return nothing
 	}
-	// the three second differences, each as it would show in global
-	part := [3]float64{math.Abs(x(rules.Global)), math.Abs(x(rules.Direct)) * v.mu, math.Abs(x(rules.Diffuse))}
-	mine, others := part[c.quantity], 0.0
-	for k, s := range part {
-		if rules.Quantity(k) != c.quantity {
-			others = math.Max(others, s)
+	others := 0.0
+	for k := 1; k <= 5; k++ {
+		for _, q := range threeShortwave {
+			if q != c.quantity {
+				others = math.Max(others, w.inGlobal(math.Abs(w.swing(k, q)), q, at.mu))
+			}
+		}
+	}
+	mine = w.inGlobal(mine, c.quantity, at.mu)
+	for _, q := range threeShortwave {
+		if q != c.quantity && (w.tainted(q) || v.run[q] > 1) {
+			return nothing
 		}
 	}
 	switch {
-	case math.IsNaN(others) || math.IsNaN(mine):
+	case math.IsNaN(others):
 		return nothing
-	case mine > 25 && others < 0.25*mine:
+	case mine > 25 && others < 0.2*mine:
 		return hint{1, mine}
 	case others > 10:
 		return nothing // the sky itself is moving
 	}
 	return hint{odds: -0.03}
+}
+
+// swing is the second difference of a quantity k minutes ago: how far it stood off its neighbours' mean.
+func (w *Watcher) swing(k int, q rules.Quantity) float64 {
+	at := func(k int) float64 {
+		if k == 0 {
+			return w.now.value[q]
+		}
+		return w.before[k-1].value[q]
+	}
+	return at(k) - (at(k-1)+at(k+1))/2
+}
+
+// inGlobal is how much of a change of a quantity would show in global.
+func (w *Watcher) inGlobal(change float64, q rules.Quantity, mu float64) float64 {
+	if q == rules.Direct {
+		return change * mu
+	}
+	return change
 }

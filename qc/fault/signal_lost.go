@@ -36,21 +36,24 @@ func signalLost(w *Watcher, c *faultCase, v *view) hint {
 	switch {
 	case math.Abs(x) > openCircuitWm2:
 		return hint{odds: -8}
-	case want < openCircuitWants(c.quantity) || want < 3*v.scale(w):
+	case !w.missedMuch(c.quantity, v):
 		return nothing
-	case math.Abs(1000*x-want) < 0.15*want:
+	case math.Abs(1000*x-want) < 0.15*want+20:
 		return nothing
 	}
-	return hint{0.2, x - want}
+	return hint{0.16, x - want}
 }
 
 // openCircuitWm2 is how far from nothing an open input may float.
 const openCircuitWm2 = 5
 
-// openCircuitWants is how much the partners must ask for before nothing counts as too little.
-func openCircuitWants(q rules.Quantity) float64 {
+// missedMuch says whether the partners ask for so much that nothing is too little: more than an offset or a wrong gain of one of
+// them could feign. In watts on the horizontal, and for the beam as a share of global.
+func (w *Watcher) missedMuch(q rules.Quantity, v *view) bool {
+	want := v.expected[q]
 	if q == rules.Direct {
-		return 120
+		want *= v.mu
+		return want > 50 && want > 4*v.scale(w) && want > 0.3*v.g()
 	}
-	return 60
+	return want > 60 && want > 3*v.scale(w)
 }

@@ -38,6 +38,7 @@ type faultCase struct {
 	needs      []rules.Quantity
 	raise      float64 // odds at which it is raised
 	most       float64 // where the score stops growing: how much it takes to end the episode
+	quiet      int64   // minutes without a word for it after which an open episode is let go; 0 is never
 	evidence   func(w *Watcher, c *faultCase, v *view) hint
 	number     string // name and unit of the hint's number
 	unit       string
@@ -77,6 +78,8 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 		s.Sum += h.number
 	case h.odds < 0 && s.Since != noMinute:
 		s.Score = math.Max(0, s.Score+h.odds)
+	case c.quiet > 0 && s.Since != noMinute && w.now.minute-s.Last > c.quiet:
+		s.Score = 0
 	default:
 		return
 	}

@@ -8,7 +8,7 @@ import (
 )
 
 // historyViews is how many minutes the evidence can look back on.
-const historyViews = 3
+const historyViews = 6
 
 // A view is one minute as the evidence looks at it. Irradiances are in W/m2, NaN where absent.
 type view struct {

@@ -1,0 +1,204 @@
+package main
+
+import (
+	"errors"
+	"flag"
+	"fmt"
+	"io"
+	"os"
+	"slices"
+
+	"fluxwarden/ingest/wire"
+	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
+	"fluxwarden/store"
+	"fluxwarden/store/vfs"
+)
+
+// cmdJudge puts files of readings through the core that run uses, into the same archive.
+func cmdJudge(args []string) int {
+	fs := flag.NewFlagSet("judge", flag.ContinueOnError)
+	site := fs.String("site", "", "site file")
+	archive := fs.String("archive", "", "folder of the archive; made if it is not there")
+	station := fs.String("station", "", "station that the readings are of; needed where the site file has several")
+	if err := fs.Parse(args); err != nil {
+		return exitUsage
+	}
+	if *site == "" || *archive == "" || fs.NArg() == 0 {
+		return complain(exitUsage, errors.New("judge: want --site FILE --archive DIR and at least one file of readings"))
+	}
+	s, err := rules.Load(*site)
+	if err != nil {
+		return complain(exitUsage, err)
+	}
+	st, err := pickStation(s, *station)
+	if err != nil {
+		return complain(exitUsage, fmt.Errorf("judge: %w", err))
+	}
+	a, err := store.OpenForWriting(vfs.OS{}, *archive, store.Options{Owner: fmt.Sprintf("fluxwarden judge, process %d", os.Getpid())})
+	if err != nil {
+		return complain(exitProblem, fmt.Errorf("judge: %w", err))
+	}
+	defer a.Close()
+	code, err := judgeFiles(a, s, st, *site, fs.Args())
+	if err != nil {
+		return complain(exitProblem, fmt.Errorf("judge: %w", err))
+	}
+	return code
+}
+
+// pickStation gives the station of an id, or the only one.
+func pickStation(s *rules.Site, id string) (*rules.Station, error) {
+	if id == "" {
+		if len(s.Stations) == 1 {
+			return &s.Stations[0], nil
+		}
+		return nil, fmt.Errorf("the site file has %d stations: say which with --station", len(s.Stations))
+	}
+	if st := s.Station(id); st != nil {
+		return st, nil
+	}
+	return nil, fmt.Errorf("the site file has no station %q", id)
+}
+
+func judgeFiles(a *store.Archive, s *rules.Site, st *rules.Station, siteFile string, files []string) (int, error) {
+	bar := newProgress(len(files))
+	defer bar.done()
+	var all minute.Batch
+	refused := 0
+	for _, name := range files {
+		n, err := readReadings(&all, st, name, bar)
+		if err != nil {
+			return exitProblem, err
+		}
+		refused += n
+	}
+	if all.Rows() == 0 {
+		return exitProblem, fmt.Errorf("%s: no reading could be taken; the archive is unchanged", files[0])
+	}
+	text, err := os.ReadFile(siteFile)
+	if err != nil {
+		return exitProblem, err
+	}
+	if err := a.KeepRules(s.Digest, text); err != nil {
+		return exitProblem, err
+	}
+	j, err := newBatchJudge(a, s, st, bar)
+	if err != nil {
+		return exitProblem, err
+	}
+	if err := j.run(&all); err != nil {
+		return exitProblem, err
+	}
+	bar.done()
+	fmt.Fprintf(os.Stderr, "judged %d minutes of %s on %d days; %d episodes\n", j.minutes, st.ID, j.days, len(j.episodes))
+	if refused > 0 {
+		fmt.Fprintf(os.Stderr, "fluxwarden: judge: %d lines were refused; the rest is in the archive\n", refused)
+		return exitProblem, nil
+	}
+	return exitOK, nil
+}
+
+// readReadings adds a file's readings to all and prints the lines it could not take.
+func readReadings(all *minute.Batch, st *rules.Station, name string, bar *progress) (refused int, err error) {
+	f, err := os.Open(name)
+	if err != nil {
+		return 0, err
+	}
+	defer f.Close()
+	if info, err := f.Stat(); err == nil {
+		bar.file(info.Size())
+	}
+	c, err := wire.NewCSV(bar.reader(f), wire.CSVOptions{Name: name, Station: st.ID})
+	if err != nil {
+		return 0, err
+	}
+	for {
+		var b minute.Batch
+		err := c.Next(&b)
+		if err == io.EOF {
+			break
+		}
+		if err != nil {
+			return 0, err
+		}
+		joinBatch(all, &b)
+	}
+	kept, count := c.Refused()
+	for i := range kept[:min(len(kept), 10)] {
+		fmt.Fprintf(os.Stderr, "refused: %v\n", &kept[i])
+	}
+	if count > 10 {
+		fmt.Fprintf(os.Stderr, "refused: and %d more lines of %s\n", count-10, name)
+	}
+	return count, nil
+}
+
+// joinBatch appends b's rows to all.
+func joinBatch(all, b *minute.Batch) {
+	if all.Rows() == 0 {
+		*all = *b
+		return
+	}
+	same := len(all.Channels) == len(b.Channels) && all.Received == nil && b.Received == nil && all.Ahead == nil && b.Ahead == nil
+	for i := range all.Channels {
+		same = same && all.Channels[i].Name == b.Channels[i].Name && all.Channels[i].Stats == nil && b.Channels[i].Stats == nil
+	}
+	if !same {
+		for i := range b.Rows() {
+			r := b.Reading(i)
+			all.Append(&r)
+		}
+		return
+	}
+	all.At = append(all.At, b.At...)
+	for i := range all.Channels {
+		all.Channels[i].Mean = append(all.Channels[i].Mean, b.Channels[i].Mean...)
+	}
+}
+
+// splitByDay cuts a batch into parts of one UTC day of stamps each, ascending. Parts of a batch in order of time share its memory.
+func splitByDay(b *minute.Batch) []store.RawPart {
+	var parts []store.RawPart
+	if slices.IsSorted(b.At) {
+		for from := 0; from < b.Rows(); {
+			day := b.At[from].Day()
+			to, _ := slices.BinarySearch(b.At, minute.Stamp((day+1)*minute.MicrosPerDay))
+			parts = append(parts, store.RawPart{Day: day, Batch: cutBatch(b, from, to)})
+			from = to
+		}
+		return parts
+	}
+	byDay := map[int64]*minute.Batch{}
+	for i := range b.Rows() {
+		day := b.At[i].Day()
+		if byDay[day] == nil {
+			byDay[day] = &minute.Batch{Station: b.Station}
+		}
+		r := b.Reading(i)
+		byDay[day].Append(&r)
+	}
+	for day, part := range byDay {
+		parts = append(parts, store.RawPart{Day: day, Batch: part})
+	}
+	slices.SortFunc(parts, func(x, y store.RawPart) int { return int(x.Day - y.Day) })
+	return parts
+}
+
+func cutBatch(b *minute.Batch, from, to int) *minute.Batch {
+	out := &minute.Batch{Station: b.Station, At: b.At[from:to], Channels: make([]minute.Channel, len(b.Channels))}
+	if b.Received != nil {
+		out.Received = b.Received[from:to]
+	}
+	if b.Ahead != nil {
+		out.Ahead = b.Ahead[from:to]
+	}
+	for i := range b.Channels {
+		c := &b.Channels[i]
+		out.Channels[i] = minute.Channel{Name: c.Name, Mean: c.Mean[from:to]}
+		if s := c.Stats; s != nil {
+			out.Channels[i].Stats = &minute.Stats{SD: s.SD[from:to], Min: s.Min[from:to], Max: s.Max[from:to], N: s.N[from:to]}
+		}
+	}
+	return out
+}

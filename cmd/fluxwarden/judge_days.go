@@ -1,0 +1,218 @@
+package main
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"slices"
+	"time"
+
+	"fluxwarden/ingest/broker"
+	"fluxwarden/qc/engine"
+	"fluxwarden/qc/fault"
+	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
+	"fluxwarden/store"
+)
+
+// A batchJudge judges the days that new readings touch, and all later ones that the archive has, for what was learnt may have changed. It
+// keeps the last days in hand until no episode can reach back to them, then writes whole months.
+type batchJudge struct {
+	archive   *store.Archive
+	site      *rules.Site
+	station   *rules.Station
+	plan      *engine.Plan
+	partition int
+	bar       *progress
+
+	fresh    map[int64]*minute.Batch // new readings by the day of their stamps
+	inHand   []*engine.Judged        // judged, not yet settled
+	free     []*engine.Judged
+	episodes []fault.Episode
+	month    *store.Month
+	pending  store.Commit
+	writing  chan error // the commit under way
+	base     uint64
+	minutes  int
+	days     int
+}
+
+func newBatchJudge(a *store.Archive, s *rules.Site, st *rules.Station, bar *progress) (*batchJudge, error) {
+	plan, err := engine.NewPlan(st)
+	if err != nil {
+		return nil, err
+	}
+	j := &batchJudge{archive: a, site: s, station: st, plan: plan, partition: broker.PartitionOf(st.ID), bar: bar, fresh: map[int64]*minute.Batch{}}
+	last, ok, err := a.Last(j.partition)
+	if err != nil {
+		return nil, err
+	}
+	if ok {
+		j.base = last.Number
+		j.pending.Epoch, j.pending.Positions = last.Epoch, last.Positions
+	}
+	return j, nil
+}
+
+// run judges and commits. New readings are in the archive before or with the minutes that come of them.
+func (j *batchJudge) run(all *minute.Batch) error {
+	all.Station = j.station.ID
+	gatherer := minute.NewGatherer(j.plan.Layout())
+	days := gatherer.Days(all)
+	for _, p := range splitByDay(all) {
+		j.fresh[p.Day] = p.Batch
+		j.pending.Raw = append(j.pending.Raw, p)
+	}
+	kept, err := j.archive.RawDays(j.station.ID)
+	if err != nil {
+		return err
+	}
+	first := days[0]
+	for _, d := range kept {
+		for _, m := range [2]int64{d - 1, d} { // with end labels the first stamp of a day belongs to the day before
+			if m > first && !slices.Contains(days, m) {
+				days = append(days, m)
+			}
+		}
+	}
+	slices.Sort(days)
+	history, earlier, err := j.history(first)
+	if err != nil {
+		return err
+	}
+	j.episodes = earlier
+	judger := engine.NewJudger(j.plan, history)
+	stages := j.prepareAhead(days)
+	defer stages.stop()
+	for k := range days {
+		p := <-stages.out
+		if p.err != nil {
+			return p.err
+		}
+		if p.block.Rows == 0 {
+			continue
+		}
+		judger.BeginWith(p.judged)
+		judger.AdvancePrepared(p.block)
+		if err := j.dayDone(judger, p, k == len(days)-1); err != nil {
+			return err
+		}
+		j.bar.step(k+1, len(days))
+	}
+	return j.finish(judger)
+}
+
+// history gives the summaries before a day and the episodes that ended before it.
+func (j *batchJudge) history(first int64) ([]engine.DaySummary, []fault.Episode, error) {
+	var out []engine.DaySummary
+	var ended []fault.Episode
+	list, err := j.archive.Summaries(j.station.ID, math.MinInt32, first-1)
+	if err != nil {
+		return nil, nil, err
+	}
+	for i := range list {
+		s, err := engine.DecodeSummary(list[i].JSON)
+		if err != nil {
+			return nil, nil, fmt.Errorf("summary of day %d: %w", list[i].Day, err)
+		}
+		ended = append(ended, s.Closed...)
+		out = append(out, s)
+	}
+	if n := len(out); n > engine.HistoryDays+1 {
+		out = out[n-engine.HistoryDays-1:]
+	}
+	return out, ended, nil
+}
+
+// dayDone takes a judged day in hand and lets go of those that no episode can reach any more.
+func (j *batchJudge) dayDone(judger *engine.Judger, p prepared, last bool) error {
+	j.days++
+	j.inHand = append(j.inHand, p.judged)
+	if last {
+		return nil // the latest day stays open: its later minutes may still come
+	}
+	s := judger.End()
+	j.episodes = append(j.episodes, s.Closed...)
+	text, err := engine.EncodeSummary(&s)
+	if err != nil {
+		return err
+	}
+	j.pending.Summaries = append(j.pending.Summaries, store.Summary{Station: s.Station, Day: s.Day, JSON: text})
+	for len(j.inHand) > 0 && j.inHand[0].Day < s.Day-engine.HindsightDays {
+		if err := j.letGo(append(slices.Clone(j.episodes), s.Open...)); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// letGo settles the oldest day in hand and adds it to its month.
+func (j *batchJudge) letGo(episodes []fault.Episode) error {
+	d := j.inHand[0]
+	j.inHand = j.inHand[1:]
+	engine.Settle(j.plan, d, episodes)
+	j.minutes += d.Rows
+	month := time.Unix(86400*d.Day, 0).UTC().Format("2006-01")
+	if j.month != nil && j.month.Month != month {
+		if err := j.write(); err != nil {
+			return err
+		}
+	}
+	if j.month == nil {
+		j.month = store.NewMonth(j.station.ID, month)
+	}
+	if err := j.month.Add(d); err != nil {
+		return err
+	}
+	j.free = append(j.free, d)
+	return nil
+}
+
+// write commits the month in hand while the next is judged.
+func (j *batchJudge) write() error {
+	if err := j.await(); err != nil {
+		return err
+	}
+	c := j.pending
+	c.Partition, c.Base, c.RulesDigest, c.Program = j.partition, j.base, j.site.Digest, "fluxwarden "+version
+	if j.month != nil {
+		c.Months = []*store.Month{j.month}
+	}
+	j.month = nil
+	j.pending = store.Commit{Epoch: c.Epoch, Positions: c.Positions}
+	j.base++
+	j.writing = make(chan error, 1)
+	go func() {
+		_, err := j.archive.Commit(&c)
+		j.writing <- err
+	}()
+	return nil
+}
+
+func (j *batchJudge) await() error {
+	if j.writing == nil {
+		return nil
+	}
+	err := <-j.writing
+	j.writing = nil
+	if errors.Is(err, store.ErrLostPartition) {
+		return fmt.Errorf("another program wrote to the archive meanwhile; run judge again: %w", err)
+	}
+	return err
+}
+
+// finish settles what is left and writes it with all episodes.
+func (j *batchJudge) finish(judger *engine.Judger) error {
+	j.episodes = append(j.episodes, judger.Episodes()...)
+	for len(j.inHand) > 0 {
+		if err := j.letGo(j.episodes); err != nil {
+			return err
+		}
+	}
+	slices.SortStableFunc(j.episodes, func(a, b fault.Episode) int { return int(a.Raised - b.Raised) })
+	j.pending.Faults = []store.StationFaults{{Station: j.station.ID, Episodes: j.episodes}}
+	if err := j.write(); err != nil {
+		return err
+	}
+	return j.await()
+}

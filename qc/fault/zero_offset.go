@@ -1,0 +1,25 @@
+package fault
+
+import "math"
+
+// zeroOffset: at night a shortwave instrument stands steadily off where it has stood in the nights before. A sky that clears or clouds
+// over moves the zero of a sound one by a few watts (ISO 9060:2018: 7 W/m2 at 200 W/m2 of net longwave for class A, from
+// memory; ventilated ones less), so it takes an hour or more.
+func zeroOffset(w *Watcher, c *faultCase, v *view) hint {
+	x := v.value[c.quantity]
+	if !v.night || math.IsNaN(x) || math.Abs(x) > 60 {
+		return nothing
+	}
+	room := 12.0
+	if w.base.zeroKnown[c.quantity] {
+		x -= w.base.zero[c.quantity]
+		room = 5
+	}
+	switch off := math.Abs(x); {
+	case off > room:
+		return hint{math.Min(0.15, 0.0125*(off-room+1)), x}
+	case off < 0.6*room:
+		return hint{odds: -0.15}
+	}
+	return nothing
+}
