@@ -280,3 +280,22 @@ func rebuild(t *testing.T, columns map[string][]float64, side string, c ThreeCoe
 		t.Errorf("%s: rebuilt flux differs by %.3f ± %.3f W/m2, allowed ±%v ± %v", side, mean, sd, meanMax, sdMax)
 	}
 }
+
+// Fractions of the black body, recomputed from the series; 5772 K is the nominal sun of the IAU (2015).
+func TestPlanckFraction(t *testing.T) {
+	for _, c := range []struct{ um, k, want, tol float64 }{
+		{0.28, 5778, .021147, 1e-6}, {0.315, 5778, .041750, 1e-6}, {0.4, 5778, .122245, 1e-6}, {0.7, 5778, .488905, 1e-6}, {0.8, 5778, .582537, 1e-6},
+		{1, 5778, .718102, 1e-6}, {2.8, 5778, .974523, 1e-6}, {3, 5778, .978780, 1e-6}, {4, 5778, .990269, 1e-6}, {0.4, 5772, .121770, 1e-6},
+		{0.7, 5772, .488153, 1e-6}, {3, 5772, .978722, 1e-6}, {3, 288.15, 5.0e-5, 1e-6}, {4, 288.15, .001456, 1e-6}, {4.5, 288.15, .004225, 1e-6},
+		{50, 288.15, .965505, 1e-6}, {100, 288.15, .994727, 1e-6}, {3.5, 300, .000556, 1e-6}, {42, 300, .951393, 1e-6},
+	} {
+		verify(t, []check{{"fraction", PlanckFraction(c.um, c.k), c.want, c.tol}})
+	}
+	verify(t, []check{
+		{"8 to 14 um at 300 K", PlanckFraction(14, 300) - PlanckFraction(8, 300), .375743, 1e-6},
+		{"both ways to the series' end", PlanckFraction(14387.768775/0.0100001, 1), PlanckFraction(14387.768775/0.0099999, 1), 1e-9},
+	})
+	if !math.IsNaN(PlanckFraction(0, 300)) || !math.IsNaN(PlanckFraction(1, math.NaN())) {
+		t.Error("a value outside the range is taken")
+	}
+}

@@ -174,16 +174,17 @@ type referenceRow struct {
 	place                     string
 }
 
-// readReference reads the grid of 60 positions computed with ERFA (IAU 2006/2000A, DE-based
-// ephemeris, no refraction).
+// readReference reads the grid of 60 positions computed with ERFA (IAU 2006/2000A, no refraction).
 func readReference(t *testing.T) []referenceRow {
 	t.Helper()
-	f, err := os.Open("../../../shared/solar_position_reference.csv")
+	f, err := os.Open("../../testdata/sun/position_reference.csv")
 	if err != nil {
-		t.Skip("the reference grid solar_position_reference.csv is not on this machine: ", err)
+		t.Fatal(err)
 	}
 	defer func() { _ = f.Close() }()
-	records, err := csv.NewReader(f).ReadAll()
+	reader := csv.NewReader(f)
+	reader.Comment = '#'
+	records, err := reader.ReadAll()
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -193,16 +194,13 @@ func readReference(t *testing.T) []referenceRow {
 		if err != nil {
 			t.Fatal(err)
 		}
-		v := make([]float64, 9)
-		for i := 1; i <= 8; i++ {
-			if i == 7 {
-				continue
-			}
+		var v [8]float64
+		for i := 1; i < len(v); i++ {
 			if v[i], err = strconv.ParseFloat(r[i], 64); err != nil {
 				t.Fatal(err)
 			}
 		}
-		rows = append(rows, referenceRow{at.UnixMicro(), Site{v[1], v[2], v[3]}, v[4], v[5], v[6], v[8], r[12]})
+		rows = append(rows, referenceRow{at.UnixMicro(), Site{v[1], v[2], v[3]}, v[4], v[5], v[6], v[7], r[8]})
 	}
 	return rows
 }
