@@ -174,6 +174,106 @@ func TestAStreamMadeAnewIsNoticed(t *testing.T) {
 	if err != nil || after.Created.Equal(before.Created) || after.LastSeq != 0 {
 		t.Errorf("%+v, then %+v, %v", before, after, err)
 	}
+	// The consumer went with the stream. The reader may say that it is broken, or that the stream is another; never may it
+	// give the new entries under the old numbers.
+	for range 3 {
+		b.put(t, 1, "new")
+	}
+	r.looked = time.Now().Add(-2 * lookEvery)
+	ctx, cancel := context.WithTimeout(t.Context(), 100*time.Millisecond)
+	defer cancel()
+	for i := 0; ; i++ {
+		e, err := r.Next(ctx)
+		if err == nil {
+			t.Fatalf("gave %+v", e)
+		}
+		if !errors.Is(err, context.DeadlineExceeded) {
+			return
+		}
+		if i > 0 {
+			t.Fatal("nothing was noticed")
+		}
+	}
+}
+
+func TestReadingGoesOnBehindARestart(t *testing.T) {
+	dir, port := t.TempDir(), freePort(t)
+	settings := EmbeddedSettings{StoreDir: dir, Listen: true, Port: port, StoreBytes: testStreams().Bytes()}
+	e, err := StartEmbedded(t.Context(), settings)
+	if err != nil {
+		t.Fatal(err)
+	}
+	b, err := Connect(ConnectSettings{URL: e.URL()})
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer b.Close()
+	if err := b.EnsureStreams(t.Context(), testStreams()); err != nil {
+		t.Fatal(err)
+	}
+	j := openJournal(t, b)
+	r, err := j.Read(t.Context(), []int{9}, 1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer func() { r.Close() }()
+	next := uint64(1)
+	for round := range 3 {
+		for range 5 {
+			b.put(t, 9, "x")
+		}
+		for range 5 {
+			ent, err := r.Next(t.Context())
+			if err != nil { // the consumer was lost: open again
+				r.Close()
+				if r, err = j.Read(t.Context(), []int{9}, next); err == nil {
+					ent, err = r.Next(t.Context())
+				}
+				if err != nil {
+					t.Fatalf("round %d: %v", round, err)
+				}
+			}
+			if ent.Seq != next {
+				t.Fatalf("round %d: got entry %d, want %d", round, ent.Seq, next)
+			}
+			next++
+		}
+		e.Stop()
+		if e, err = StartEmbedded(t.Context(), settings); err != nil {
+			t.Fatal(err)
+		}
+		if err := b.EnsureStreams(t.Context(), testStreams()); err != nil {
+			t.Fatal(err)
+		}
+	}
+	e.Stop()
+}
+
+func TestOldEntriesArePurgedByTheirTime(t *testing.T) {
+	_, b := start(t, t.TempDir())
+	j := openJournal(t, b)
+	for range 20 {
+		b.put(t, 0, "x")
+	}
+	at, there, err := j.StoredAt(t.Context(), 12)
+	if err != nil || !there {
+		t.Fatal(there, err)
+	}
+	if _, there, err := j.StoredAt(t.Context(), 99); err != nil || there {
+		t.Errorf("an entry that is not there: %v, %v", there, err)
+	}
+	for _, c := range []struct {
+		upTo   uint64
+		before time.Time
+		first  uint64
+	}{{5, at, 6}, {3, at, 6}, {100, at, 12}, {100, at, 12}, {15, at.Add(time.Hour), 16}, {0, at.Add(time.Hour), 16}, {100, at.Add(time.Hour), 21}, {100, at.Add(time.Hour), 21}} {
+		if err := j.PurgeBefore(t.Context(), c.upTo, c.before); err != nil {
+			t.Fatal(err)
+		}
+		if s, err := j.State(t.Context()); err != nil || s.FirstSeq != c.first {
+			t.Errorf("up to %d: first is %d, want %d (%v)", c.upTo, s.FirstSeq, c.first, err)
+		}
+	}
 }
 
 func TestAStoreIsForOneProcessAndOutlivesIt(t *testing.T) {
@@ -238,14 +338,7 @@ func TestAPortInUseIsSaid(t *testing.T) {
 }
 
 func TestABrokerThatIsDownAtTheStartIsWaitedFor(t *testing.T) {
-	l, err := net.Listen("tcp", "127.0.0.1:0")
-	if err != nil {
-		t.Fatal(err)
-	}
-	port := l.Addr().(*net.TCPAddr).Port
-	if err := l.Close(); err != nil {
-		t.Fatal(err)
-	}
+	port := freePort(t)
 	states := make(chan State, 100)
 	b, err := Connect(ConnectSettings{URL: fmt.Sprintf("nats://127.0.0.1:%d", port), OnState: func(s State) { states <- s }})
 	if err != nil {
@@ -271,6 +364,16 @@ func TestABrokerThatIsDownAtTheStartIsWaitedFor(t *testing.T) {
 	}
 	defer e.Stop()
 	waitState(t, states, true)
+}
+
+func freePort(t *testing.T) int {
+	t.Helper()
+	l, err := net.Listen("tcp", "127.0.0.1:0")
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer func() { _ = l.Close() }()
+	return l.Addr().(*net.TCPAddr).Port
 }
 
 func waitState(t *testing.T, states chan State, connected bool) {
@@ -310,6 +413,9 @@ func TestLeases(t *testing.T) {
 	again := lease("one")
 	check("the same owner after a restart", again.Acquire(t.Context()), nil)
 	check("the one before the restart", one.Renew(t.Context()), ErrLost)
+	if again.Epoch() <= one.epoch || one.Epoch() != 0 {
+		t.Errorf("epochs %d, then %d", one.epoch, again.Epoch())
+	}
 	check("release", again.Release(t.Context()), nil)
 	check("second after the release", two.Acquire(t.Context()), nil)
 	check("renew after the release", again.Renew(t.Context()), ErrLost)

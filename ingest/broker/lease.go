@@ -20,6 +20,7 @@ type Lease struct {
 	kv         jetstream.KeyValue
 	key, owner string
 	revision   uint64
+	epoch      uint64 // the revision at which it was acquired
 }
 
 // Lease gives the lease of a key, such as "partition-07", for an owner; it is not held yet. An owner is the same after a restart, so that
@@ -47,8 +48,17 @@ func (l *Lease) Acquire(ctx context.Context) error {
 	if err != nil {
 		return l.wrap(err)
 	}
-	l.revision = revision
+	l.revision, l.epoch = revision, revision
 	return nil
+}
+
+// Epoch is a number that is greater each time the lease is acquired, by whomever; 0 while it is not held. It starts anew
+// only where the bucket was made anew.
+func (l *Lease) Epoch() uint64 {
+	if l.revision == 0 {
+		return 0
+	}
+	return l.epoch
 }
 
 // Renew holds it for another term, or returns ErrLost.
