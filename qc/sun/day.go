@@ -80,7 +80,7 @@ func NewDayDeltaT(day int64, site Site, deltaTSeconds float64) Day {
 func (d *Day) UnixDay() int64 { return d.day }
 
 // AtMinute returns the position at a second of the day, 0..86400; up to an hour outside the day the
-// error stays below 0.0001 degrees. For a minute take its middle: 60*minute + 30.
+// error stays below 0.00001 degrees. For a minute take its middle: 60*minute + 30.
 func (d *Day) AtMinute(secondOfDay float64) FastPosition {
 	u := float64((secondOfDay - 43200) * (1.0 / 43200))
 	h := d.hourAngle.at(u) + d.longitudeDeg
@@ -116,7 +116,7 @@ func (d *Day) EquationOfTimeMin(secondOfDay float64) float64 {
 }
 
 // DistanceAU returns the distance to the sun at noon UTC; within the day it changes by less than
-// 0.00015 AU.
+// 0.0003 AU.
 func (d *Day) DistanceAU() float64 { return d.distance.c0 }
 
 // Fill writes the positions of consecutive minutes, the first of them firstMinute (0..1439), each at
