@@ -325,6 +325,36 @@ func TestStreamsAreCheckedAndTheirBoundsFollow(t *testing.T) {
 	}
 }
 
+func TestAStoreThatIsTooSmallIsSaid(t *testing.T) {
+	e, err := StartEmbedded(t.Context(), EmbeddedSettings{StoreDir: t.TempDir(), StoreBytes: 1 << 20})
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer e.Stop()
+	b, err := Connect(ConnectSettings{Embedded: e})
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer b.Close()
+	if err := b.EnsureStreams(t.Context(), testStreams()); err == nil || !strings.Contains(err.Error(), "make the store larger") {
+		t.Errorf("got %v", err)
+	}
+}
+
+func TestWhatIsPublishedHasAStream(t *testing.T) {
+	_, b := start(t, t.TempDir())
+	for _, subject := range []string{FindingSubject("northmoor"), ChangeSubject("note")} {
+		if err := b.Publish(t.Context(), subject, []byte("x")); err != nil {
+			t.Error(err)
+		}
+	}
+	ctx, cancel := context.WithTimeout(t.Context(), time.Second)
+	defer cancel()
+	if err := b.Publish(ctx, "nowhere", nil); !Unreachable(err) {
+		t.Errorf("a subject without a stream: %v", err)
+	}
+}
+
 func TestAPortInUseIsSaid(t *testing.T) {
 	l, err := net.Listen("tcp", "127.0.0.1:0")
 	if err != nil {

@@ -2,6 +2,7 @@ package broker
 
 import (
 	"context"
+	"crypto/tls"
 	"fmt"
 	"math/rand/v2"
 	"time"
@@ -27,12 +28,12 @@ type State struct {
 
 // ConnectSettings say where the broker is and who we are.
 type ConnectSettings struct {
-	URL         string        // nats://host:port, several with commas; not used with Embedded
-	Embedded    *Embedded     // connect inside the process
-	Credentials string        // file with a JWT and its key; optional
-	Options     []nats.Option // further ones, such as TLS
-	Name        string        // of this connection, for the broker's own lists
-	OnState     func(State)   // called from the client's goroutines; optional
+	URL         string      // nats://host:port, several with commas; not used with Embedded
+	Embedded    *Embedded   // connect inside the process
+	Credentials string      // file with a JWT and its key; optional
+	TLS         *tls.Config // optional
+	Name        string      // of this connection, for the broker's own lists
+	OnState     func(State) // called from the client's goroutines; optional
 }
 
 // Broker is a connection that comes back by itself, and JetStream on it.
@@ -61,6 +62,9 @@ func Connect(s ConnectSettings) (*Broker, error) {
 		nats.DisconnectErrHandler(func(c *nats.Conn, err error) { state(err)(c) }),
 		nats.ErrorHandler(func(c *nats.Conn, _ *nats.Subscription, err error) { state(err)(c) }),
 	}
+	if s.TLS != nil {
+		options = append(options, nats.Secure(s.TLS))
+	}
 	if s.Credentials != "" {
 		options = append(options, nats.UserCredentials(s.Credentials))
 	}
@@ -69,7 +73,7 @@ func Connect(s ConnectSettings) (*Broker, error) {
 		url = nats.DefaultURL
 		options = append(options, s.Embedded.InProcess())
 	}
-	conn, err := nats.Connect(url, append(options, s.Options...)...)
+	conn, err := nats.Connect(url, options...)
 	if err != nil {
 		return nil, fmt.Errorf("broker: %s: %w: is the address right", s.URL, err)
 	}
@@ -80,6 +84,20 @@ func Connect(s ConnectSettings) (*Broker, error) {
 	}
 	return &Broker{conn, js}, nil
 }
+
+// Publish writes a message to the stream that its subject belongs to, and returns when it is on disk.
+func (b *Broker) Publish(ctx context.Context, subject string, data []byte) error {
+	if _, err := b.JS.Publish(ctx, subject, data); err != nil {
+		return fmt.Errorf("broker: publish to %s: %w", subject, err)
+	}
+	return nil
+}
+
+// FindingSubject is where changes to a station's episodes are published, in the stream FINDINGS.
+func FindingSubject(station string) string { return findingsPrefix + station }
+
+// ChangeSubject is where notes and rule sets are published, in the stream CHANGES.
+func ChangeSubject(kind string) string { return changesPrefix + kind }
 
 // Close ends the connection for good.
 func (b *Broker) Close() { b.Conn.Close() }

@@ -18,6 +18,9 @@ const (
 	ChangesStream  = "CHANGES"
 	FindingsStream = "FINDINGS"
 	leaseBucket    = "LEASES"
+
+	changesPrefix  = "changes."
+	findingsPrefix = "findings."
 )
 
 // StreamSettings bound the streams. All are files.
@@ -53,10 +56,15 @@ func (b *Broker) EnsureStreams(ctx context.Context, s StreamSettings) error {
 	for _, want := range []jetstream.StreamConfig{
 		file(JournalStream, journalPrefix+"*", s.JournalBytes, jetstream.DiscardNew),
 		file(RefusedStream, "refused.*", s.RefusedBytes, jetstream.DiscardOld),
-		file(ChangesStream, "changes.>", s.ChangesBytes, jetstream.DiscardNew),
-		file(FindingsStream, "findings.>", s.FindingsBytes, jetstream.DiscardOld),
+		file(ChangesStream, changesPrefix+">", s.ChangesBytes, jetstream.DiscardNew),
+		file(FindingsStream, findingsPrefix+">", s.FindingsBytes, jetstream.DiscardOld),
 	} {
 		err := retry(ctx, func(ctx context.Context) (bool, error) { return b.ensureStream(ctx, want) })
+		var api *jetstream.APIError
+		if errors.As(err, &api) && api.ErrorCode == errCodeNoStorage {
+			return fmt.Errorf("broker: stream %s: %d bytes are more than the broker's store has left: make the store larger or the stream smaller: %w",
+				want.Name, want.MaxBytes, err)
+		}
 		if err != nil {
 			return fmt.Errorf("broker: stream %s: %w", want.Name, err)
 		}
@@ -114,6 +122,7 @@ func Unreachable(err error) bool {
 const (
 	errCodeStoreFailed           = 10077
 	errCodeInsufficientResources = 10023
+	errCodeNoStorage             = 10047 // for a new stream's bound
 )
 
 // Full says whether a publish was refused for want of room in the stream.

@@ -4,6 +4,8 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"io"
+	"net"
 	"strings"
 	"sync"
 	"testing"
@@ -118,6 +120,35 @@ func TestTenMegabytesAreStoppedByTheClientLibrary(t *testing.T) {
 	}
 	if r := h.request("northmoor", readingAt(0, 1)); !r.OK {
 		t.Errorf("the next reading: %+v", r)
+	}
+}
+
+// A sender that does not know the limit is told by the protocol, and only its own connection is cut.
+func TestTenMegabytesFromARawConnectionAreCutOff(t *testing.T) {
+	h := open(t, nil)
+	conn, err := net.Dial("tcp", strings.TrimPrefix(h.server.URL(), "nats://"))
+	h.must(err)
+	defer func() { _ = conn.Close() }()
+	deadline, _ := h.ctx.Deadline()
+	h.must(conn.SetDeadline(deadline))
+	_, err = io.WriteString(conn, "CONNECT {\"verbose\":false}\r\nPUB rad.v1.northmoor 10485760\r\n")
+	h.must(err)
+	answer, _ := io.ReadAll(conn)
+	if !strings.Contains(string(answer), "Maximum Payload Violation") {
+		t.Errorf("answered %q", answer)
+	}
+	if r := h.request("northmoor", readingAt(0, 1)); !r.OK {
+		t.Errorf("another connection: %+v", r)
+	}
+}
+
+func TestWhatTheWorkerCannotJudgeIsKeptToo(t *testing.T) {
+	h := open(t, nil)
+	s, err := gate.OpenRefused(h.ctx, h.broker)
+	h.must(err)
+	h.must(s.SetAside(h.ctx, "northmoor", "panic", "it said\nthis", 3, []byte(readingAt(0, 1))))
+	if i := h.lastRefused(); i.Station != "northmoor" || i.Reason != "panic" || i.Count != 3 || i.Detail != "it said this" || string(i.Raw) != readingAt(0, 1) {
+		t.Errorf("kept as %+v", i)
 	}
 }
 

@@ -14,6 +14,7 @@ import (
 
 	"fluxwarden/ingest/broker"
 	"fluxwarden/ingest/wire"
+	"fluxwarden/qc/minute"
 )
 
 // Headers of a message in the stream REFUSED. Its payload is what was refused: the readings as they came, in an array, or the whole payload.
@@ -58,6 +59,18 @@ func refusedMessage(r *request, refused []wire.Refusal) *nats.Msg {
 	}
 	m.Data = raw
 	return m
+}
+
+// SetAside puts into the stream what was refused behind the gate, such as readings that the core could not judge; the
+// payload is theirs as it would be sent. It returns when it is on disk.
+func (r *RefusedStream) SetAside(ctx context.Context, station string, reason wire.Reason, detail string, count int, payload []byte) error {
+	now := minute.Stamp(time.Now().UnixMicro())
+	m := refusedMessage(&request{name: station, payload: payload, received: now}, []wire.Refusal{{Reason: reason, Detail: detail, Index: wire.Whole}})
+	m.Header.Set(headerCount, strconv.Itoa(count))
+	if _, err := r.broker.JS.PublishMsg(ctx, m, jetstream.WithExpectStream(broker.RefusedStream)); err != nil {
+		return fmt.Errorf("gate: stream %s: set aside: %w", broker.RefusedStream, err)
+	}
+	return nil
 }
 
 func printable(r rune) rune {
