@@ -257,7 +257,7 @@ func TestNoFusedInstructions(t *testing.T) {
 			for _, m := range fused.FindAllStringSubmatch(out.String(), -1) {
 				if place := m[1]; !seen[place] {
 					seen[place] = true
-					t.Errorf("%s: compiled to %s: wrap the product in float64(...) where it is formed", place, m[2])
+					t.Errorf("%s: compiled to %s: wrap the product, or the division by a power of two (compiled to a product), in float64(...) where it is formed", place, m[2])
 				}
 			}
 		})

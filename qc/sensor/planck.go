@@ -23,7 +23,7 @@ func PlanckFraction(wavelengthUm, temperatureK float64) float64 {
 	x := secondRadiationConstant * 1e6 / (wavelengthUm * temperatureK)
 	const scale = 15 / (math.Pi * math.Pi * math.Pi * math.Pi)
 	if x < 0.01 { // 1 - scale (x^3/3 - x^4/8 + ...)
-		return 1 - float64(scale*x*x*x*(1.0/3-x/8))
+		return 1 - float64(scale*x*x*x*(1.0/3-float64(x/8)))
 	}
 	sum := 0.0
 	for n := 1.0; n <= 4000; n++ {
