@@ -79,15 +79,24 @@ func (s *station) setAside(ctx context.Context, m int64, readings *minute.Batch)
 	s.w.setAside(ctx, ReasonPanic, s.id, some, nil, "the judge panicked on this minute; it counts as not sent until the program is mended")
 }
 
-// readings is every reading of the day: what the archive has and what is not yet committed.
+// readings is every reading whose minute is of the day: what the archive has and what is not yet committed. Raw goes by
+// the day of the stamp, which for a logger that labels by the end may be the day after.
 func (s *station) readings(day int64) (*minute.Batch, error) {
 	all := &minute.Batch{Station: s.id}
-	err := s.w.cfg.Archive.ReadRaw(s.id, day, day, func(b *minute.Batch) error { appendAll(all, b); return nil })
+	err := s.w.cfg.Archive.ReadRaw(s.id, day, day+1, func(b *minute.Batch) error { appendAll(all, b); return nil })
 	if err != nil {
 		return nil, err
 	}
-	if b := s.raw[day]; b != nil {
-		appendAll(all, b)
+	for d := day; d <= day+1; d++ {
+		if b := s.raw[d]; b != nil {
+			appendAll(all, b)
+		}
+	}
+	first, last := day*minute.PerDay, (day+1)*minute.PerDay
+	for _, at := range all.At {
+		if m := s.minuteOf(at); m < first || m >= last {
+			return without(all, func(at minute.Stamp) bool { m := s.minuteOf(at); return m < first || m >= last }), nil
+		}
 	}
 	return all, nil
 }
@@ -142,7 +151,7 @@ func (s *station) foldLate() (map[int64]bool, error) {
 			}
 			dropped += n
 			if left {
-				batchOf(s.raw, s.id, day).Append(&r)
+				batchOf(s.raw, s.id, r.At.Day()).Append(&r)
 				dirty[day] = true
 			}
 		}

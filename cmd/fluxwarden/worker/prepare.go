@@ -56,8 +56,14 @@ func (s *station) prepare(ctx context.Context, now time.Time, c *Commit) (*prepa
 	return pr, nil
 }
 
-func sameEpisodes(a, b []fault.Episode) bool {
-	return len(a) == 0 && len(b) == 0 || reflect.DeepEqual(a, b)
+func sameEpisodes(a, b []fault.Episode) bool { return slices.EqualFunc(a, b, sameEpisode) }
+
+func sameEpisode(a, b fault.Episode) bool {
+	if !slices.Equal(a.Also, b.Also) || !slices.Equal(a.Evidence, b.Evidence) {
+		return false
+	}
+	a.Also, a.Evidence, b.Also, b.Evidence = nil, nil, nil, nil
+	return reflect.DeepEqual(a, b)
 }
 
 func (s *station) addDay(c *Commit, plan *engine.Plan, j *engine.Judged, episodes []fault.Episode, sealed bool) {

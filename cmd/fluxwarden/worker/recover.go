@@ -66,6 +66,8 @@ func (s *station) takeUncommittedDays(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
+	ended := (s.lastEnded + 1) * minute.PerDay
+	s.dropOpen(func(m int64) bool { return m < ended })
 	for i, at := range s.open.At {
 		seen := at
 		if s.open.Received != nil && s.open.Received[i] != 0 {

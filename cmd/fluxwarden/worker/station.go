@@ -4,7 +4,6 @@ import (
 	"cmp"
 	"context"
 	"maps"
-	"reflect"
 	"slices"
 	"time"
 
@@ -23,8 +22,8 @@ type station struct {
 	partition int
 
 	watermark minute.Stamp            // what is stamped before it is taken to have come
-	raw       map[int64]*minute.Batch // not yet committed, by the day of its minutes
-	late      map[int64]*minute.Batch // as raw, but after its minute was judged, and perhaps known already
+	raw       map[int64]*minute.Batch // not yet committed, by the day of its stamps
+	late      map[int64]*minute.Batch // not yet in raw, since perhaps known already: came after its minute was judged. By the day of its minutes
 	open      *minute.Batch           // of minutes not yet judged, committed or not
 
 	current   *current
@@ -74,10 +73,9 @@ func (s *station) take(ctx context.Context, readings []minute.Reading) {
 	for i := range readings {
 		r := readings[i]
 		m := s.minuteOf(r.At)
-		day := minute.FloorDiv(m, minute.PerDay)
 		if s.isClosed(m) {
 			late++
-			batchOf(s.late, s.id, day).Append(&r)
+			batchOf(s.late, s.id, minute.FloorDiv(m, minute.PerDay)).Append(&r)
 		} else {
 			left, n := strip(s.open, &r)
 			dropped += n
@@ -85,7 +83,7 @@ func (s *station) take(ctx context.Context, readings []minute.Reading) {
 				continue
 			}
 			s.open.Append(&r)
-			batchOf(s.raw, s.id, day).Append(&r)
+			batchOf(s.raw, s.id, r.At.Day()).Append(&r)
 		}
 		s.w.partitions[s.partition].rows++
 		seen := r.At
@@ -295,7 +293,7 @@ func (s *station) tell(ctx context.Context) {
 	now := make(map[string]bool, len(episodes))
 	for _, e := range episodes {
 		now[e.ID] = true
-		if old, ok := s.published[e.ID]; !ok || !reflect.DeepEqual(old, e) {
+		if old, ok := s.published[e.ID]; !ok || !sameEpisode(old, e) {
 			changes = append(changes, Finding{Episode: e})
 			s.published[e.ID] = e
 		}

@@ -42,6 +42,8 @@ func (m *memory) open(dieAt func() bool) archive { return &memorySession{m, dieA
 
 func (m *memory) powerLoss(uint64) {}
 
+func (m *memory) powerCut() bool { return false }
+
 func (m *memory) deathsWithin() int { return 6 }
 
 func (m *memory) digestsOf() (map[stationDay]string, error) { return m.digests, nil }
@@ -138,6 +140,7 @@ type archive interface{ worker.Archive }
 type backend interface {
 	open(dieAt func() bool) archive
 	powerLoss(seed uint64)
+	powerCut() bool    // since the last powerLoss a process has died in the file system, and the machine with it
 	deathsWithin() int // calls of dieAt in which a death is worth trying
 	digestsOf() (map[stationDay]string, error)
 }

@@ -42,10 +42,7 @@ func (w *world) chaos() {
 		w.resend(w.journal.powerLoss)
 	case 10: // the archive's machine loses power
 		w.counts["archive power cuts"]++
-		for k := range w.procs {
-			w.procs[k] = process{}
-		}
-		w.backend.powerLoss(w.rng.Uint64())
+		w.cutPower()
 	case 11:
 		w.clockSlips()
 	case 12:

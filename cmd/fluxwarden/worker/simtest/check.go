@@ -109,7 +109,7 @@ func (w *world) keptValues() (*kept, error) {
 // compareWithClean gives the very readings that raw holds, in order, to one worker that nothing happens to, and compares
 // what comes of them.
 func (w *world) compareWithClean(k *kept) error {
-	clean, err := newWorld(0, Options{Days: w.o.Days, Calm: true, Backend: func() backend { return newMemory() }})
+	clean, err := newWorld(0, Options{Days: w.o.Days, Calm: true, Backend: w.o.cleanBackend()})
 	if err != nil {
 		return err
 	}
@@ -128,7 +128,10 @@ func (w *world) compareWithClean(k *kept) error {
 	if err != nil {
 		return err
 	}
-	want, _ := clean.backend.digestsOf()
+	want, err := clean.backend.digestsOf()
+	if err != nil {
+		return err
+	}
 	keys := slices.SortedFunc(maps.Keys(want), func(a, b stationDay) int { return cmp.Or(cmp.Compare(a.station, b.station), cmp.Compare(a.day, b.day)) })
 	for _, key := range keys {
 		if got[key] != want[key] {
@@ -148,7 +151,10 @@ func (w *world) compareFaults(clean *world) error {
 		if err != nil {
 			return err
 		}
-		want, _ := b.Faults(station)
+		want, err := b.Faults(station)
+		if err != nil {
+			return err
+		}
 		if len(got)+len(want) > 0 && !reflect.DeepEqual(got, want) {
 			return wrong("%s: the episodes are not those of a clean run:\n%s\nclean:\n%s", station, list(got), list(want))
 		}

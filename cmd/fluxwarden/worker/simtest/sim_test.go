@@ -14,8 +14,9 @@ import (
 )
 
 var (
-	seeds    = flag.Int("seeds", 24, "how many seeds to simulate")
-	firstArg = flag.Uint64("first", 1, "the first of them")
+	seeds      = flag.Int("seeds", 24, "how many seeds to simulate")
+	storeSeeds = flag.Int("storeseeds", 4, "how many seeds to simulate with the real store")
+	firstArg   = flag.Uint64("first", 1, "the first of them")
 )
 
 const simulatedDays = 3
@@ -47,6 +48,30 @@ func TestSimulation(t *testing.T) {
 		"late", "days judged again", "gap reused", "gap recreate", "gap purged", "journals remade", "journals trimmed", "acknowledged tails lost"} {
 		if total[k] == 0 {
 			t.Errorf("no seed saw any of: %s", k)
+		}
+	}
+}
+
+// TestSimulationOnTheStore attacks the worker together with the real store on a disk that loses what is not synced. Each file
+// is a real one here, so a seed takes longer.
+func TestSimulationOnTheStore(t *testing.T) {
+	for i, share := range []float64{0, 0.5, 1} {
+		total := map[string]int{}
+		var mu sync.Mutex
+		o := Options{Days: 2, Backend: func() backend { return newDisk(share, nil) }}
+		simulate(*firstArg+uint64(i)*1000, *storeSeeds, o, func(seed uint64, counts map[string]int, err error) {
+			mu.Lock()
+			defer mu.Unlock()
+			for k, v := range counts {
+				total[k] += v
+			}
+			if err != nil {
+				t.Errorf("seed %d, %v of what is unsynced survives: %v", seed, share, err)
+			}
+		})
+		t.Logf("%v of what is unsynced survives: %v", share, total)
+		if *storeSeeds >= 4 && (total["power cuts in a commit"] == 0 || total["archive power cuts"] == 0) {
+			t.Errorf("share %v: no power cut was felt", share)
 		}
 	}
 }
@@ -97,6 +122,22 @@ func TestSimulationCanFail(t *testing.T) {
 				}
 			}
 			t.Error("60 seeds did not notice")
+		})
+	}
+}
+
+// TestStoreSimulationCanFail leaves out what makes files outlive a power cut.
+func TestStoreSimulationCanFail(t *testing.T) {
+	for _, op := range []string{"sync", "syncdir"} {
+		t.Run("no "+op, func(t *testing.T) {
+			o := Options{Days: 2, Backend: func() backend { return newDisk(0, func(what string) bool { return what == op }) }}
+			for seed := uint64(1); seed <= 20; seed++ {
+				if _, err := runOne(seed, o); err != nil {
+					t.Logf("caught by seed %d: %.300s", seed, err)
+					return
+				}
+			}
+			t.Error("20 seeds did not notice")
 		})
 	}
 }

@@ -22,6 +22,14 @@ type Options struct {
 	Log     *slog.Logger
 }
 
+// cleanBackend is an archive of the same kind, so that digests can be compared.
+func (o *Options) cleanBackend() func() backend {
+	if _, ok := o.Backend().(*disk); ok {
+		return func() backend { return newDisk(0, nil) }
+	}
+	return func() backend { return newMemory() }
+}
+
 // processes is how many of them may own partitions.
 const processes = 2
 
@@ -166,12 +174,32 @@ func (w *world) work(i, steps int) {
 		w.start(i)
 	}
 	w.alive(i, func() {
+		defer w.powerCut()
 		for range max(1, steps) {
+			if w.backend.powerCut() {
+				return
+			}
 			if !p.w.Step(context.Background(), 0) {
 				return
 			}
 		}
 	})
+}
+
+// powerCut starts the machine anew where a process has died by a power cut.
+func (w *world) powerCut() {
+	if !w.backend.powerCut() {
+		return
+	}
+	w.counts["power cuts in a commit"]++
+	w.cutPower()
+}
+
+func (w *world) cutPower() {
+	for k := range w.procs {
+		w.procs[k] = process{}
+	}
+	w.backend.powerLoss(w.rng.Uint64())
 }
 
 func (w *world) start(i int) {
