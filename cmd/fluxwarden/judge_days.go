@@ -23,6 +23,7 @@ type batchJudge struct {
 	station   *rules.Station
 	plan      *engine.Plan
 	partition int
+	known     bool // the archive has this station already
 	bar       *progress
 
 	fresh    map[int64]*minute.Batch // new readings by the day of their stamps
@@ -63,9 +64,13 @@ func (j *batchJudge) run(all *minute.Batch) error {
 		j.fresh[p.Day] = p.Batch
 		j.pending.Raw = append(j.pending.Raw, p)
 	}
-	kept, err := j.archive.RawDays(j.station.ID)
-	if err != nil {
-		return err
+	j.known = slices.Contains(j.archive.Stations(), j.station.ID)
+	var kept []int64
+	if j.known {
+		var err error
+		if kept, err = j.archive.RawDays(j.station.ID); err != nil {
+			return err
+		}
 	}
 	first := days[0]
 	for _, d := range kept {
@@ -106,6 +111,9 @@ func (j *batchJudge) run(all *minute.Batch) error {
 func (j *batchJudge) history(first int64) ([]engine.DaySummary, []fault.Episode, error) {
 	var out []engine.DaySummary
 	var ended []fault.Episode
+	if !j.known {
+		return nil, nil, nil
+	}
 	list, err := j.archive.Summaries(j.station.ID, math.MinInt32, first-1)
 	if err != nil {
 		return nil, nil, err

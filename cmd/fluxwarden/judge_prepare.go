@@ -80,12 +80,14 @@ func (j *batchJudge) prepareDay(g *minute.Gatherer, day int64) prepared {
 		last++ // the day's last minute carries a stamp of the next day
 	}
 	var all minute.Batch
-	err := j.archive.ReadRaw(j.station.ID, day, last, func(b *minute.Batch) error {
-		joinBatch(&all, b)
-		return nil
-	})
-	if err != nil {
-		return prepared{err: err}
+	if j.known {
+		err := j.archive.ReadRaw(j.station.ID, day, last, func(b *minute.Batch) error {
+			joinBatch(&all, b)
+			return nil
+		})
+		if err != nil {
+			return prepared{err: err}
+		}
 	}
 	if b := j.fresh[day]; b != nil && all.Rows() == 0 && last == day {
 		all = *b
