@@ -15,7 +15,8 @@ const (
 	retryFirst     = 100 * time.Millisecond
 	retryMost      = 10 * time.Second
 	connectTimeout = 5 * time.Second
-	reconnectBytes = 8 << 20 // written while there is no connection; more is refused
+	ackTimeout     = 30 * time.Second // an acknowledgement that has not come by then is waited for no more
+	reconnectBytes = 8 << 20          // written while there is no connection; more is refused
 )
 
 // A State is what is known of the connection.
@@ -77,7 +78,7 @@ func Connect(s ConnectSettings) (*Broker, error) {
 	if err != nil {
 		return nil, fmt.Errorf("broker: %s: %w: is the address right", s.URL, err)
 	}
-	js, err := jetstream.New(conn)
+	js, err := jetstream.New(conn, jetstream.WithPublishAsyncTimeout(ackTimeout))
 	if err != nil {
 		conn.Close()
 		return nil, fmt.Errorf("broker: jetstream: %w", err)

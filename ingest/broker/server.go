@@ -25,7 +25,7 @@ const (
 	clientPendingMax = 64 << 20
 )
 
-// EmbeddedSettings are what the embedded server is given. None has a default but Name.
+// EmbeddedSettings are what the embedded server is given. StoreDir and StoreBytes are needed.
 type EmbeddedSettings struct {
 	Name       string // of the server; empty is "fluxwarden"
 	StoreDir   string // made where it is absent

@@ -146,7 +146,7 @@ func TestWhatTheWorkerCannotJudgeIsKeptToo(t *testing.T) {
 	h := open(t, nil)
 	s, err := gate.OpenRefused(h.ctx, h.broker)
 	h.must(err)
-	h.must(s.SetAside(h.ctx, "northmoor", "panic", "it said\nthis", 3, []byte(readingAt(0, 1))))
+	h.must(s.SetAside(h.ctx, "northmoor", receipt, "panic", "it said\nthis", 3, []byte(readingAt(0, 1))))
 	if i := h.lastRefused(); i.Station != "northmoor" || i.Reason != "panic" || i.Count != 3 || i.Detail != "it said this" || string(i.Raw) != readingAt(0, 1) {
 		t.Errorf("kept as %+v", i)
 	}

@@ -123,7 +123,8 @@ func whole(r *request, reason wire.Reason, detail string) []wire.Refusal {
 func (g *Gate) takeApart(r *request) (readings []minute.Reading, refused []wire.Refusal) {
 	defer func() {
 		if p := recover(); p != nil {
-			g.s.Log.Error("decoder panicked; the payload is in REFUSED", "station", r.name, "bytes", len(r.payload), "panic", fmt.Sprint(p), "stack", string(debug.Stack()))
+			g.s.Log.Error("decoder panicked; the payload is in REFUSED", "station", r.name, "bytes", len(r.payload),
+				"panic", fmt.Sprint(p), "stack", string(debug.Stack()))
 			readings, refused = nil, whole(r, wire.InternalError, fmt.Sprintf("the decoder panicked: %v", p))
 			g.decoder = wire.Decoder{}
 		}
@@ -176,7 +177,8 @@ func (g *Gate) publish(f *flush, requests []request) {
 		p := &f.parts[i]
 		frame := wire.AppendJournal(nil, p.groups)
 		f.bytes += len(frame)
-		p.ack, p.err = g.broker.JS.PublishMsgAsync(&nats.Msg{Subject: broker.JournalSubject(p.partition), Data: frame}, jetstream.WithExpectStream(broker.JournalStream))
+		p.ack, p.err = g.broker.JS.PublishMsgAsync(&nats.Msg{Subject: broker.JournalSubject(p.partition), Data: frame},
+			jetstream.WithExpectStream(broker.JournalStream))
 	}
 	for i := range f.kept {
 		k := &f.kept[i]

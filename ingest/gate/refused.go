@@ -63,9 +63,10 @@ func refusedMessage(r *request, refused []wire.Refusal) *nats.Msg {
 
 // SetAside puts into the stream what was refused behind the gate, such as readings that the core could not judge; the
 // payload is theirs as it would be sent. It returns when it is on disk.
-func (r *RefusedStream) SetAside(ctx context.Context, station string, reason wire.Reason, detail string, count int, payload []byte) error {
-	now := minute.Stamp(time.Now().UnixMicro())
-	m := refusedMessage(&request{name: station, payload: payload, received: now}, []wire.Refusal{{Reason: reason, Detail: detail, Index: wire.Whole}})
+func (r *RefusedStream) SetAside(ctx context.Context, station string, received time.Time, reason wire.Reason, detail string, count int,
+	payload []byte) error {
+	m := refusedMessage(&request{name: station, payload: payload, received: minute.Stamp(received.UnixMicro())},
+		[]wire.Refusal{{Reason: reason, Detail: detail, Index: wire.Whole}})
 	m.Header.Set(headerCount, strconv.Itoa(count))
 	if _, err := r.broker.JS.PublishMsg(ctx, m, jetstream.WithExpectStream(broker.RefusedStream)); err != nil {
 		return fmt.Errorf("gate: stream %s: set aside: %w", broker.RefusedStream, err)

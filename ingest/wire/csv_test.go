@@ -8,6 +8,9 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"os"
+	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 	"testing/iotest"
@@ -128,6 +131,28 @@ func TestCSVBadLinesAreRefusedAndTheRestGoesOn(t *testing.T) {
 	}
 }
 
+func TestADamagedFileIsReadAsFarAsItGoes(t *testing.T) {
+	f, err := os.Open("../../testdata/wire/damaged.csv")
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer func() { _ = f.Close() }()
+	all, refused := readAll(t, f, CSVOptions{Name: "damaged.csv"})
+	var got []string
+	for i := range refused {
+		got = append(got, refused[i].Error())
+	}
+	want := []string{
+		`damaged.csv:3: column 1: bad_value: g1_mv is "off": give a finite number, or leave the field empty where there is none`,
+		`damaged.csv:4: column 2: bad_time: time is "21.06.2026 12:02": give RFC 3339 with a zone, such as 2026-06-21T12:00:01Z, between 1950 and 2100`,
+		"damaged.csv:6: bad_fields: 4 fields, the header has 3: is a comma missing, or used as a decimal point?",
+		"damaged.csv:7: truncated: the last line ends early: what came before it is kept; fetch the file again",
+	}
+	if len(all) != 1 || !slices.Equal(got, want) {
+		t.Errorf("%d rows, refused:\n%s", len(all), strings.Join(got, "\n"))
+	}
+}
+
 func TestCSVTruncatedEnd(t *testing.T) {
 	const text = "time,a,b\n2026-06-21T12:00:01Z,1,2\n2026-06-21T12:00:02Z,1"
 	for _, cut := range []string{text, text[:len(text)-3], text[:len(text)-8]} {
@@ -201,6 +226,17 @@ func TestCSVRefusalsAreBoundedAndUnknownChannelsNamed(t *testing.T) {
 
 // FuzzCSV holds the reader against encoding/csv on input without quotes, where the two agree on what a line is.
 func FuzzCSV(f *testing.F) {
+	files, err := filepath.Glob("../../testdata/wire/*.csv")
+	if err != nil || len(files) == 0 {
+		f.Fatalf("no seeds in testdata/wire: %v", err)
+	}
+	for _, file := range files {
+		b, err := os.ReadFile(file)
+		if err != nil {
+			f.Fatal(err)
+		}
+		f.Add(string(b))
+	}
 	f.Add("time,a,b\n2026-06-21T12:00:01Z,1.5,-2\n,,\nx\n2026-06-21T12:00:02Z,,3")
 	f.Add("a,time\r\n1,2026-06-21T12:00:01Z\r\n")
 	f.Add("\"time\",a\n\"2026-06-21T12:00:01Z\",\"1\"\n")
