@@ -37,12 +37,11 @@ var ErrLostPartition = errors.New("the partition has another owner")
 
 // An Archive is an open archive. Its methods may be called by several goroutines; commits of one partition go one after the other.
 type Archive struct {
-	fs      vfs.FS
-	dir     string
-	lock    io.Closer // nil if read only
-	o       Options
-	parts   [Partitions]*partition
-	minutes sync.Pool // of *table.Writer
+	fs    vfs.FS
+	dir   string
+	lock  io.Closer // nil if read only
+	o     Options
+	parts [Partitions]*partition
 
 	mu       sync.RWMutex
 	stations map[string]int // to partition
@@ -51,6 +50,9 @@ type Archive struct {
 	tree     []treeFile
 	treeErr  error
 }
+
+// minuteWriters are kept for all archives: making one costs more than writing a day with it.
+var minuteWriters = sync.Pool{New: func() any { return table.NewWriter(table.MinuteColumns()) }}
 
 // Options of an archive that is written to.
 type Options struct {
@@ -118,7 +120,6 @@ func newArchive(f vfs.FS, dir string) *Archive {
 	for i := range a.parts {
 		a.parts[i] = newPartition()
 	}
-	a.minutes.New = func() any { return table.NewWriter(table.MinuteColumns()) }
 	return a
 }
 

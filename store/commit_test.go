@@ -13,6 +13,8 @@ import (
 
 const day0 = int64(20_625) // 2026-06-21
 
+type batch = minute.Batch
+
 func TestCommitAndReadBackOnRealFiles(t *testing.T) {
 	rng := rand.New(rand.NewPCG(1, 2))
 	dir := t.TempDir() + "/archive"

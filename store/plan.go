@@ -176,12 +176,12 @@ func (d *draft) makeMinutes(f File, t *table.Table, days []monthDay) ([]byte, Fi
 		f.Digests[dayName(x.day)] = table.Digest(t, x.from, x.to)
 	}
 	f.Rows, t.Meta = t.Rows, d.meta(&f, f.Digests)
-	w := d.a.minutes.Get().(*table.Writer)
+	w := minuteWriters.Get().(*table.Writer)
 	var b bytes.Buffer
 	if err := w.Write(&b, t); err != nil {
 		return nil, f, err // the writer is not put back: its state is not known
 	}
-	d.a.minutes.Put(w)
+	minuteWriters.Put(w)
 	return b.Bytes(), f, nil
 }
 
