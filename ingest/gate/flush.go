@@ -15,6 +15,12 @@ import (
 	"fluxwarden/qc/minute"
 )
 
+// What REFUSED takes of all stations together: each payload kept costs one sync of the disk, which the journal needs.
+const (
+	keptPerSecond = 200
+	keptBurst     = 2000
+)
+
 // A flush is a group of requests that are written to the journal together: one message for each partition they touch.
 type flush struct {
 	parts    []part // of the partitions touched, in the order of first touch
@@ -105,7 +111,8 @@ func (g *Gate) look(f *flush, r *request, index int, now time.Time) outcome {
 		g.s.Meter.Refused(o.refused[i].Reason, 1)
 	}
 	if len(o.refused) > 0 {
-		if st.keep.open(now, g.s.RefusedPerSecond, g.s.RefusedBurst) {
+		if g.keep.open(now, keptPerSecond, keptBurst) && st.keep.open(now, g.s.RefusedPerSecond, g.s.RefusedBurst) {
+			g.keep.spend(1)
 			st.keep.spend(1)
 			f.kept = append(f.kept, kept{request: index})
 		} else {

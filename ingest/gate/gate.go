@@ -33,7 +33,8 @@ type Gate struct {
 	queue   *queue
 	sub     *nats.Subscription
 	done    chan struct{}
-	decoder wire.Decoder
+	decoder wire.Decoder // this and keep belong to the goroutine that flushes
+	keep    bucket
 	decode  func(*wire.Decoder, []byte) ([]minute.Reading, []wire.Refusal)
 
 	mu       sync.Mutex

@@ -81,6 +81,21 @@ func TestAPayloadThatMakesTheDecoderPanicIsSetAside(t *testing.T) {
 	}
 }
 
+func TestWhatIsKeptOfRefusedPayloadsIsBounded(t *testing.T) {
+	g, c := inside(t, Settings{RefusedPerSecond: 1e-9, RefusedBurst: 3})
+	f := &flush{}
+	for i := range 10 {
+		for _, name := range []string{"a", "b"} {
+			if o := g.look(f, &request{station: g.station(name), name: name, payload: []byte("bad")}, i, time.Now()); len(o.refused) != 1 {
+				t.Fatalf("outcome %+v", o)
+			}
+		}
+	}
+	if len(f.kept) != 6 || c.NotKeptMessages.Load() != 14 || c.RefusedFor(wire.NotJSON) != 20 {
+		t.Errorf("%d kept, %d not, %d refused", len(f.kept), c.NotKeptMessages.Load(), c.RefusedFor(wire.NotJSON))
+	}
+}
+
 // What the journal's frames of one flush can come to must be less than the broker takes.
 func TestTheDensestFlushFitsIntoOneFrame(t *testing.T) {
 	var b strings.Builder

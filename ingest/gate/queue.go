@@ -139,7 +139,8 @@ func (q *queue) close() {
 	signal(q.plenty)
 }
 
-// A bucket lets through what it is given as long as it is not in debt; it fills with time.
+// A bucket lets a payload through, however many readings it has, while there is at least one token; what passes may leave
+// it in debt. It fills with time.
 type bucket struct {
 	tokens float64
 	last   time.Time
@@ -153,7 +154,7 @@ func (b *bucket) open(now time.Time, perSecond, burst float64) bool {
 		b.tokens = min(burst, b.tokens+d*perSecond)
 	}
 	b.last = now
-	return b.tokens > 0
+	return b.tokens >= 1
 }
 
 // spend books what has passed.
