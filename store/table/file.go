@@ -3,18 +3,15 @@
 package table
 
 import (
-	"bytes"
 	"encoding/json"
 	"fmt"
 	"io"
-	"maps"
 	"math"
 	"reflect"
 	"slices"
 	"sync"
 
 	"github.com/parquet-go/parquet-go"
-	"github.com/parquet-go/parquet-go/compress/zstd"
 )
 
 // A Kind is the type of a column's values.
@@ -72,9 +69,6 @@ func (t *Table) Find(name string) *Vector {
 	return nil
 }
 
-// RowGroupRows is how many rows a row group holds at most.
-const RowGroupRows = 131072
-
 // ordered is a group whose fields keep their order; the library's own sorts them by name.
 type ordered struct {
 	parquet.Group
@@ -108,10 +102,8 @@ func (c *Column) node() parquet.Node {
 	if !c.Required {
 		n = parquet.Optional(n)
 	}
-	return parquet.Compressed(n, codec)
+	return n
 }
-
-var codec = &zstd.Codec{Level: zstd.SpeedFastest}
 
 func schemaOf(columns []Column) *parquet.Schema {
 	o := ordered{Group: parquet.Group{}}
@@ -121,109 +113,6 @@ func schemaOf(columns []Column) *parquet.Schema {
 		o.fields = append(o.fields, field{n, columns[i].Name})
 	}
 	return parquet.NewSchema("row", o)
-}
-
-// A Writer writes tables of the same columns, one file after the other, and reuses its buffers. It is for one goroutine.
-type Writer struct {
-	columns []Column
-	w       *parquet.Writer
-	values  []parquet.Value
-	nulls   [1024]parquet.Value
-}
-
-// NewWriter makes a writer for these columns.
-func NewWriter(columns []Column) *Writer {
-	return &Writer{columns: columns, w: parquet.NewWriter(io.Discard, schemaOf(columns), parquet.MaxRowsPerRowGroup(RowGroupRows),
-		parquet.DataPageStatistics(false), parquet.CreatedBy("fluxwarden", "1", ""),
-		parquet.SortingWriterConfig(parquet.SortingColumns(parquet.Ascending(columns[0].Name))))}
-}
-
-// Write writes the table, whose columns must be the writer's, as one whole file.
-func (w *Writer) Write(out io.Writer, t *Table) error {
-	w.w.Reset(out)
-	for _, k := range slices.Sorted(maps.Keys(t.Meta)) {
-		w.w.SetKeyValueMetadata(k, t.Meta[k])
-	}
-	w.w.SetKeyValueMetadata("columns", describe(t.Columns))
-	for from := 0; from < t.Rows; from += RowGroupRows {
-		to := min(from+RowGroupRows, t.Rows)
-		for i, cw := range w.w.ColumnWriters() {
-			if err := w.column(cw, i, &t.Columns[i], &t.Vectors[i], from, to); err != nil {
-				return fmt.Errorf("column %s: %w", t.Columns[i].Name, err)
-			}
-		}
-		if err := w.w.Flush(); err != nil {
-			return err
-		}
-	}
-	return w.w.Close()
-}
-
-func (w *Writer) column(cw *parquet.ColumnWriter, index int, c *Column, v *Vector, from, to int) error {
-	const chunk = 4096
-	for a := from; a < to; a += chunk {
-		b := min(a+chunk, to)
-		w.values = appendValues(w.values[:0], index, c, v, a, b)
-		if _, err := cw.WriteRowValues(w.values); err != nil {
-			return err
-		}
-	}
-	return nil
-}
-
-func appendValues(out []parquet.Value, index int, c *Column, v *Vector, a, b int) []parquet.Value {
-	null := parquet.NullValue().Level(0, 0, index)
-	defined := 1
-	if c.Required {
-		defined = 0
-	}
-	switch {
-	case c.Kind == Double && v.Doubles != nil:
-		for _, x := range v.Doubles[a:b] {
-			if math.IsNaN(x) || math.IsInf(x, 0) {
-				out = append(out, null)
-			} else {
-				out = append(out, parquet.DoubleValue(x).Level(0, defined, index))
-			}
-		}
-	case c.Kind == Time && v.Times != nil:
-		for _, x := range v.Times[a:b] {
-			if x == NullTime {
-				out = append(out, null)
-			} else {
-				out = append(out, parquet.Int64Value(x).Level(0, defined, index))
-			}
-		}
-	case c.Kind == Int && v.Ints != nil:
-		for _, x := range v.Ints[a:b] {
-			if x == NullInt {
-				out = append(out, null)
-			} else {
-				out = append(out, parquet.Int32Value(x).Level(0, defined, index))
-			}
-		}
-	case c.Kind == Text && v.Codes != nil:
-		values := make([]parquet.Value, len(v.Dict))
-		for i, s := range v.Dict {
-			values[i] = parquet.ByteArrayValue([]byte(s)).Level(0, defined, index)
-		}
-		for _, x := range v.Codes[a:b] {
-			if x == NullCode {
-				out = append(out, null)
-			} else {
-				out = append(out, values[x])
-			}
-		}
-	case c.Kind == Bool && v.Bools != nil:
-		for _, x := range v.Bools[a:b] {
-			out = append(out, parquet.BooleanValue(x).Level(0, defined, index))
-		}
-	default:
-		for range b - a {
-			out = append(out, null)
-		}
-	}
-	return out
 }
 
 // described is what the metadata `columns` says of a column.
@@ -250,13 +139,6 @@ func describe(columns []Column) string {
 		describedCache.Store(&columns[0], string(b))
 	}
 	return string(b)
-}
-
-// Encode writes a table once, for tables whose columns differ from file to file.
-func Encode(t *Table) ([]byte, error) {
-	var b bytes.Buffer
-	err := NewWriter(t.Columns).Write(&b, t)
-	return b.Bytes(), err
 }
 
 // Meta reads the key-value metadata and the number of rows of a file.
