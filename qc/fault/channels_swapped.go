@@ -28,11 +28,11 @@ func channelsSwapped(w *Watcher, c *faultCase, v *view) hint {
 	}
 	closure := w.base.closureAt(v)
 	asIs := math.Abs(g - float64(closure*(beam+d)))
-	swapped := math.Abs(d*toG - float64(closure*(beam+g*toD)))
+	swapped := math.Abs(float64(d*toG) - float64(closure*(beam+float64(g*toD))))
 	room := v.scale(w)
 	switch {
-	case swapped < 1.5*room && asIs > 4*room && d-g > 40:
-		return hint{0.5, d - g}
+	case swapped < 1.5*room && asIs > 4*room && d-g > 40 && g > 0.06*d && g > 15:
+		return hint{0.3, d - g}
 	case asIs < 2*room:
 		return hint{odds: -1}
 	}

@@ -19,9 +19,6 @@ type DayFacts struct {
 	BodyAir      [2]Fact       `json:"body_air"`
 }
 
-// SlowCarry is what the judging of whole days hands on.
-type SlowCarry struct{}
-
 // A gatherFacts collects a day's facts minute by minute.
 type gatherFacts struct {
 	closure      histogram
@@ -33,7 +30,6 @@ type gatherFacts struct {
 	clearDiffuse histogram
 	clearLW      histogram
 	bodyAir      [2]histogram
-	slow         SlowCarry
 }
 
 func (f *gatherFacts) reset() {

@@ -20,8 +20,8 @@ func pointingLost(w *Watcher, c *faultCase, v *view) hint {
 	switch {
 	case b > 0.4*cb && d < 0.75*g:
 		return hint{odds: -0.6}
-	case b < 0.08*cb && math.Abs(d-g) < 0.06*g+10 && k > 0.85 && k < 1.12 && w.followsClear(v):
-		return hint{0.3 + 2*math.Max(0, k-0.9), k}
+	case b < 0.08*cb && math.Abs(d-g) < float64(0.06*g)+10 && k > 0.85 && k < 1.12 && w.followsClear(v):
+		return hint{0.3 + float64(2*math.Max(0, k-0.9)), k}
 	}
 	return nothing
 }

@@ -8,7 +8,7 @@ func polarityReversed(w *Watcher, c *faultCase, v *view) hint {
 	if !v.sunUp || math.IsNaN(x) || math.IsNaN(want) {
 		return nothing
 	}
-	room := v.scale(w) + 0.05*want
+	room := v.scale(w) + float64(0.05*want)
 	switch {
 	case want < 40:
 		return nothing

@@ -2,21 +2,26 @@ package fault
 
 import "math"
 
-// rangeClipped: global stands at its own top, the very same value again and again, exactly while its partners ask for more.
+// rangeClipped: global stands at its own top, the very same value again and again, exactly while its partners ask for more. That it
+// comes off the top and back to the very same is what tells it from a frozen one; without that it must stand there for an hour.
 func rangeClipped(w *Watcher, c *faultCase, v *view) hint {
 	x, want := v.value[c.quantity], v.expected[c.quantity]
 	if !v.sunUp || math.IsNaN(x) || math.IsNaN(want) {
 		return nothing
 	}
 	room := v.scale(w)
+	rail := w.railOf(c)
+	s := &w.cases[caseIndex(c)]
 	switch {
-	case v.run[c.quantity] >= 2 && x > 100 && want > x+0.5*room:
-		return hint{0.5, x}
-	case v.run[c.quantity] >= 2 && want < x-2*room:
+	case v.run[c.quantity] == 2 && s.For > 2 && math.Abs(x-rail) < 0.05 && v.minute-s.Last > 2:
+		return hint{2, x}
+	case v.run[c.quantity] >= 2 && x > 100 && want > x+float64(0.5*room):
+		return hint{0.08, x}
+	case v.run[c.quantity] >= 2 && want < x-float64(2*room):
 		return hint{odds: -2} // it stands still where it should fall: frozen
-	case x > w.railOf(c)+1 && want > x+room:
+	case x > rail+1 && want > x+room:
 		return hint{odds: -0.2}
-	case x > w.railOf(c)+1:
+	case x > rail+1:
 		return hint{odds: -1}
 	}
 	return nothing

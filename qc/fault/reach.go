@@ -73,19 +73,21 @@ func Restore(e *Episode, q rules.Quantity, s *Setup, measured func(rules.Quantit
 	return v, !math.IsNaN(v)
 }
 
-// explains says whether the open episode accounts for what the new one would say.
+// explains says whether the open episode accounts for what the new one would say. One cause that upsets global, direct or diffuse
+// upsets how the three close, so while it is open nothing that rests on their closing is raised.
 func explains(open, e *Episode) bool {
-	if open.Severity != rules.Act {
+	if open.Severity != rules.Act || open.Kind == rules.DataGap || e.Kind == rules.DataGap {
 		return false
 	}
 	if open.Instrument == e.Instrument {
-		return open.Kind != e.Kind && open.Kind != rules.DataGap
+		return open.Kind != e.Kind
 	}
-	switch open.Kind {
-	case rules.PointingLost, rules.ShadeOff:
-		return e.Kind != rules.SignalFrozen && e.Kind != rules.DataGap && e.Kind != rules.ThermistorBad
-	case rules.ClockShift, rules.ChannelsSwapped:
-		return e.Kind != rules.SignalFrozen && e.Kind != rules.DataGap && e.Kind != rules.ThermistorBad
-	}
-	return false
+	return restsOnClosing.Has(e.Kind) && upsetsClosing.Has(open.Kind) && open.Kind != rules.ThermistorBad
 }
+
+const (
+	restsOnClosing = rules.FaultSet(1<<rules.SignalLost | 1<<rules.UnitSlip | 1<<rules.PolarityReversed | 1<<rules.ChannelsSwapped |
+		1<<rules.ShadeOff | 1<<rules.PointingLost | 1<<rules.SensitivityWrong | 1<<rules.SensitivityDrift | 1<<rules.SensorTilted |
+		1<<rules.DomeWet | 1<<rules.DomeSnow | 1<<rules.DomeSoiled | 1<<rules.RangeClipped | 1<<rules.Shadow | 1<<rules.Noise)
+	upsetsClosing = restsOnClosing | rules.FaultSet(1<<rules.SignalFrozen|1<<rules.ClockShift|1<<rules.ZeroOffset)
+)

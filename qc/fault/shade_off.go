@@ -21,9 +21,9 @@ func shadeOff(w *Watcher, c *faultCase, v *view) hint {
 	excess := d - want
 	room := v.scale(w)
 	share := excess / beam
-	plausible := want > 0.3*v.clear[rules.Diffuse] && want < 4*v.clear[rules.Diffuse]+40
+	plausible := want > 0.3*v.clear[rules.Diffuse] && want < float64(4*v.clear[rules.Diffuse])+40
 	switch {
-	case excess > 3*room && share > 0.15 && share < 1.15 && plausible && d-g < 0.06*g+room:
+	case excess > 3*room && share > 0.15 && share < 1.15 && plausible && d-g < float64(0.06*g)+room:
 		return hint{0.3, share}
 	case math.Abs(excess) < 1.5*room:
 		return hint{odds: -1}

@@ -95,6 +95,13 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 		return
 	}
 	if open < 0 && s.Score >= c.raise {
+		if k := w.openIndex(c.of(w.setup), rules.RangeClipped); k >= 0 && c.kind == rules.SignalFrozen {
+			e := &w.open[k] // what seemed clipped has stood still where it should have fallen
+			e.Kind, e.Advice, e.Evidence = c.kind, c.kind.Entry().Advice, w.evidenceOf(c, s)
+			e.From = min(e.From, w.hindsight(s.Since))
+			e.Rev++
+			return
+		}
 		w.raise(Episode{Instrument: c.of(w.setup), Kind: c.kind, Severity: rules.Act, From: w.hindsight(s.Since), Raised: w.now.minute,
 			Confidence: confidence(s.Score), Evidence: w.evidenceOf(c, s)})
 	}

@@ -8,9 +8,9 @@ func unitSlip(w *Watcher, c *faultCase, v *view) hint {
 	if !v.sunUp || math.IsNaN(x) || math.IsNaN(want) || want < 60 {
 		return nothing
 	}
-	room := 0.1*want + v.scale(w)
+	room := float64(0.1*want) + v.scale(w)
 	for _, factor := range [...]float64{1000, 0.001} {
-		if math.Abs(factor*x-want) < room && math.Abs(x-want) > 3*v.scale(w) {
+		if math.Abs(float64(factor*x)-want) < room && math.Abs(x-want) > 3*v.scale(w) {
 			return hint{0.35, 1 / factor}
 		}
 	}

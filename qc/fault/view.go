@@ -76,7 +76,7 @@ func (v *view) look(w *Watcher, m *Minute) {
 		v.expected[rules.Direct] = (v.g()/c - v.d()) / v.mu
 	}
 	before := &w.before[0]
-	v.steady = before.minute == v.minute-1 && math.Abs(v.sum-before.sum) < 0.03*v.sum+3
+	v.steady = before.minute == v.minute-1 && math.Abs(v.sum-before.sum) < float64(0.03*v.sum)+3
 }
 
 // scale is how well one expected value can be held against one measured, W/m2: a share of it, the offset of a good instrument, and,

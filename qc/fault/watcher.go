@@ -11,16 +11,18 @@ import (
 // A Watcher holds, for one station and one day, how strongly each kind of fault is suspected of each instrument, and turns
 // suspicions that cross the odds into episodes.
 type Watcher struct {
-	setup  *Setup
-	day    int64
-	base   Baseline
-	facts  gatherFacts
-	cases  [caseCount]suspicion
-	open   []Episode
-	closed []Episode // on this day
-	last   int64     // the last minute with a record; noMinute before the first
-	now    view
-	before [historyViews]view // the minutes before, newest first
+	setup   *Setup
+	day     int64
+	base    Baseline
+	facts   gatherFacts
+	cases   [caseCount]suspicion
+	open    []Episode
+	closed  []Episode // on this day
+	last    int64     // the last minute with a record; noMinute before the first
+	now     view
+	before  [historyViews]view // the minutes before, newest first
+	slow    SlowCarry
+	sunrise int64
 }
 
 const noMinute = int64(-1) << 40
@@ -61,7 +63,7 @@ func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watche
 				w.cases[c.Case] = suspicion{Score: c.Score.Float(), Since: c.Since, Last: c.Last, For: c.For, Sum: c.Sum.Float()}
 			}
 		}
-		w.facts.slow = carry.Slow
+		w.slow = carry.Slow.clone()
 	}
 	for i := range w.before {
 		w.before[i].forget()
@@ -77,6 +79,9 @@ func (w *Watcher) Minute(m *Minute) {
 			w.seeGap(m.Minute)
 		}
 		w.closeGap(m.Minute)
+		if hole := m.Minute - w.last - 1; w.last != noMinute && hole > 0 {
+			w.seeHole(hole, m.Minute-hole)
+		}
 		w.last = m.Minute
 	}
 	w.now.look(w, m)
@@ -87,6 +92,7 @@ func (w *Watcher) Minute(m *Minute) {
 				w.step(i, c, c.evidence(w, c, &w.now))
 			}
 		}
+		w.watchSlow(&w.now)
 		w.facts.minute(w, &w.now)
 	}
 	copy(w.before[1:], w.before[:historyViews-1])
@@ -104,7 +110,7 @@ func (w *Watcher) Tick(minuteUTC int64) {
 func (w *Watcher) EndDay() (DayFacts, Carry) {
 	facts := w.facts.close(w)
 	w.judgeDay(&facts)
-	c := Carry{LastRecord: w.last, Open: slices.Clone(w.open), Slow: w.facts.slow}
+	c := Carry{LastRecord: w.last, Open: slices.Clone(w.open), Slow: w.slow.clone()}
 	for i := range w.cases {
 		if s := &w.cases[i]; s.Score > 0 || s.Since != noMinute {
 			c.Cases = append(c.Cases, CarriedCase{Case: i, Score: quantise(s.Score), Since: s.Since, Last: s.Last, For: s.For, Sum: quantise(s.Sum)})

@@ -1,0 +1,132 @@
+package fault
+
+import (
+	"math"
+	"slices"
+
+	"fluxwarden/qc/exact"
+	"fluxwarden/rules"
+)
+
+// A jump is a sudden change of the logger's clock that the stamps themselves show: set forward it leaves a hole, set back it writes
+// stamps twice. The sun tells whether the clock was wrong afterwards.
+type jump struct {
+	Shift int64  `json:"shift"` // minutes that the stamps are ahead of the time since then, if the clock was right before
+	At    int64  `json:"at"`
+	Score Number `json:"score"`
+	For   int    `json:"for"`
+	Last  int64  `json:"last"`
+}
+
+const (
+	jumpsMost     = 4
+	jumpLeast     = 2   // minutes
+	jumpGreatest  = 200 // minutes
+	jumpRaise     = 3.0
+	jumpMost      = 8.0
+	jumpDaysWatch = 10
+)
+
+// seeHole notes that no record came for some minutes.
+func (w *Watcher) seeHole(minutes, at int64) { w.addJump(jump{Shift: minutes, At: at}) }
+
+// watchConflicts notes a run of stamps that came twice.
+func (w *Watcher) watchConflicts(v *view) {
+	if v.conflict {
+		if w.slow.Conflicts == 0 {
+			w.slow.ConflictAt = v.minute
+		}
+		w.slow.Conflicts++
+		return
+	}
+	if w.slow.Conflicts > 0 {
+		w.addJump(jump{Shift: -w.slow.Conflicts, At: w.slow.ConflictAt})
+		w.slow.Conflicts = 0
+	}
+}
+
+func (w *Watcher) addJump(j jump) {
+	if n := max(j.Shift, -j.Shift); n < jumpLeast || n > jumpGreatest {
+		return
+	}
+	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(o jump) bool {
+		return o.Score <= 0 && j.At-o.At > jumpDaysWatch*1440 && !w.clockOpen(o)
+	})
+	if len(w.slow.Jumps) >= jumpsMost {
+		for i := range w.slow.Jumps {
+			if w.slow.Jumps[i].Score <= 0 {
+				w.slow.Jumps = slices.Delete(w.slow.Jumps, i, i+1)
+				break
+			}
+		}
+	}
+	if len(w.slow.Jumps) < jumpsMost {
+		w.slow.Jumps = append(w.slow.Jumps, j)
+	}
+}
+
+func (w *Watcher) clockOpen(j jump) bool {
+	i := w.openIndex(Logger, rules.ClockShift)
+	return i >= 0 && w.open[i].From == j.At
+}
+
+// watchClock holds global against its partners with the sun where the stamp says and where a clock that jumped would have it.
+func (w *Watcher) watchClock(v *view) {
+	if len(w.slow.Jumps) == 0 || !v.sunUp || !v.steady {
+		return
+	}
+	g, b, d := v.g(), v.b(), v.d()
+	if math.IsNaN(g+b+d) || b < 150 {
+		return
+	}
+	c := w.base.closureAt(v)
+	asStamped := math.Abs(g - v.sum)
+	room := 6 + float64(0.02*v.sum)
+	for i := range w.slow.Jumps {
+		j := &w.slow.Jumps[i]
+		then := math.Max(0, w.muMinutesAgo(v, j.Shift))
+		shifted := math.Abs(g - float64(c*(float64(b*then)+d)))
+		if math.Max(asStamped, shifted) < 1.2*room {
+			continue
+		}
+		odds := math.Max(-0.2, math.Min(0.2, 0.1*(asStamped-shifted)/room))
+		if odds > 0 && (shifted > 1.5*room || asStamped < 1.5*room) {
+			continue // neither fits, or both do
+		}
+		j.Score = Number(math.Max(0, math.Min(jumpMost, j.Score.Float()+odds)))
+		if odds > 0 {
+			j.For++
+			j.Last = v.minute
+		}
+		w.clockEpisode(v, j)
+	}
+}
+
+func (w *Watcher) clockEpisode(v *view, j *jump) {
+	open := w.openIndex(Logger, rules.ClockShift)
+	evidence := []Evidence{{"shift", float64(j.Shift), "min"}, {"minutes", float64(j.For), "min"}}
+	switch {
+	case open < 0 && j.Score >= jumpRaise:
+		w.raise(Episode{Instrument: Logger, Kind: rules.ClockShift, Severity: rules.Act, From: w.hindsight(j.At), Raised: v.minute,
+			Confidence: confidence(2 * j.Score.Float()), Evidence: evidence})
+	case open >= 0 && w.open[open].From == j.At:
+		w.open[open].Evidence = evidence
+		if j.Score <= 0 {
+			w.finish(open, j.Last+1)
+		}
+	}
+}
+
+// muMinutesAgo is the cosine of the zenith angle with the sun where it stood some minutes before: the hour angle turns by a quarter
+// of a degree a minute, the declination stays.
+func (w *Watcher) muMinutesAgo(v *view, minutes int64) float64 {
+	sinPhi, cosPhi := sinDeg(w.setup.LatitudeDeg), cosDeg(w.setup.LatitudeDeg)
+	sinZ := math.Sqrt(math.Max(0, 1-float64(v.mu*v.mu)))
+	sinA, cosA := sinDeg(v.azimuthDeg), cosDeg(v.azimuthDeg)
+	sinDelta := float64(sinPhi*v.mu) + float64(cosPhi*sinZ*cosA)
+	cosDelta := math.Sqrt(math.Max(1e-12, 1-float64(sinDelta*sinDelta)))
+	sinH := -sinZ * sinA / cosDelta
+	cosH := (v.mu - float64(sinPhi*sinDelta)) / (cosPhi * cosDelta)
+	h := exact.Atan2(sinH, cosH) - float64(float64(minutes)*(math.Pi/720))
+	return float64(sinPhi*sinDelta) + float64(cosPhi*cosDelta*exact.Cos(h))
+}

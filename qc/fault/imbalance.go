@@ -1,0 +1,249 @@
+package fault
+
+import (
+	"math"
+
+	"fluxwarden/rules"
+)
+
+// An imbalance is what a station gathers while global, direct and diffuse do not close as they used to: enough to say which
+// of the causes that last for hours or days is the likeliest. It is carried over midnight.
+type imbalance struct {
+	Score  Number  `json:"score"`
+	Since  int64   `json:"since"` // minute at which the present rise began
+	Last   int64   `json:"last"`
+	N      int     `json:"n"`      // steady minutes with beam
+	Sums   sums    `json:"sums"`   // of their relative deviations, for the fits
+	First  mean    `json:"first"`  // deviation of the first hour of them
+	Recent Number  `json:"recent"` // running mean over the last two hours or so
+	Dull   mean    `json:"dull"`   // deviation of global over diffuse without a beam
+	Sky    [3]mean `json:"sky"`    // global, direct and diffuse over the learnt clear sky, less one, in clear minutes
+	Air    mean    `json:"air"`    // air temperature, degrees C
+	Humid  Number  `json:"humid"`  // most humid hour before it began, %
+	Rise   int64   `json:"rise"`   // sunrise before it began
+	Begun  bool    `json:"begun"`
+	Model  model   `json:"model"` // of the cause that the open episode names
+}
+
+// A model is what a cause implies for the closure of a minute.
+type model struct {
+	K    int `json:"k"` // 0 gain of global, 1 of the beam, 2 of diffuse, 3 tilt
+	A, B Number
+}
+
+func (m *model) predict(x [regressors]float64) float64 {
+	a, b := m.A.Float(), m.B.Float()
+	switch m.K {
+	case 1:
+		return a * x[1]
+	case 2:
+		return -a * (1 - x[1])
+	case 3:
+		return float64(a*x[2]) + float64(b*x[3])
+	}
+	return a
+}
+
+// A mean is a running mean.
+type mean struct {
+	Sum Number `json:"sum"`
+	N   int    `json:"n"`
+}
+
+func (m *mean) add(v float64) {
+	if !math.IsNaN(v) {
+		m.Sum += Number(v)
+		m.N++
+	}
+}
+
+func (m *mean) of() float64 {
+	if m.N == 0 {
+		return math.NaN()
+	}
+	return m.Sum.Float() / float64(m.N)
+}
+
+// Regressors of the relative deviation of global from its partners: a gain of global (1), of the beam (its share), a tilt (the
+// beam's lever to the east and to the north).
+const regressors = 4
+
+// sums are the normal equations of the fits.
+type sums struct {
+	XX [regressors][regressors]Number `json:"xx"`
+	XY [regressors]Number             `json:"xy"`
+	YY Number                         `json:"yy"`
+}
+
+func (s *sums) add(x [regressors]float64, y float64) {
+	for i := range x {
+		for k := range x {
+			s.XX[i][k] += Number(x[i] * x[k])
+		}
+		s.XY[i] += Number(x[i] * y)
+	}
+	s.YY += Number(y * y)
+}
+
+const (
+	imbalanceRaise = 6.0
+	imbalanceMost  = 12.0
+	// closureRoom is the relative deviation from the station's own closure that a sound station stays within, most steady minutes
+	// (own choice; robust daily scatter on measured months is about 1 %).
+	closureRoom = 0.035
+	// untaughtRoom is the same while the station's own closure is not known yet.
+	untaughtRoom = 0.07
+)
+
+// watchImbalance takes a minute into the imbalance and raises, renames or ends its episode.
+func (w *Watcher) watchImbalance(v *view) {
+	im := &w.slow.Imbalance
+	if w.tainted(rules.Direct) && !w.ownImbalance() || !v.sunUp {
+		return
+	}
+	g, b, d := v.g(), v.b(), v.d()
+	if math.IsNaN(g + b + d) {
+		return
+	}
+	if b < 2 && d > 80 && v.steady {
+		if im.Begun {
+			im.Dull.add(g/d/w.base.overcast - 1)
+		}
+		return
+	}
+	beam := float64(b * v.mu)
+	if beam < 40 || v.sum < 80 || !v.steady {
+		return
+	}
+	delta := g/v.sum - 1
+	w.imbalanceStep(v, w.closureRoomAt(v), delta, beam)
+}
+
+// closureRoomAt is how far the closure of a sound station may stand off with the sun where it is: with a low sun the directional
+// errors of the class are a greater share.
+func (w *Watcher) closureRoomAt(v *view) float64 {
+	room := closureRoom
+	if !w.base.known {
+		room = untaughtRoom
+	}
+	return float64(room*(1+float64(4*math.Max(0, 0.4-v.mu)))) + 6/v.sum
+}
+
+// imbalanceOdds is what one steady minute says. Before an episode is open, every deviation speaks for one; then the deviation that
+// its cause implies for this minute is what counts.
+func (im *imbalance) imbalanceOdds(open bool, x [regressors]float64, delta, room float64) float64 {
+	if !open {
+		if math.Abs(delta) > room {
+			return math.Min(0.25, 0.04*math.Abs(delta)/room)
+		}
+		return -0.06 * (1 + math.Min(4, math.Abs(im.Recent.Float())/room))
+	}
+	want := im.Model.predict(x)
+	switch {
+	case math.Abs(want) < 0.6*room:
+		return 0
+	case math.Abs(delta-want) < 0.5*math.Abs(want):
+		return math.Min(0.25, 0.04*math.Abs(want)/room)
+	case math.Abs(delta) < 0.5*math.Abs(want) || delta*want < 0:
+		return -math.Min(0.4, 0.08*math.Abs(want)/room)
+	}
+	return 0
+}
+
+func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
+	im := &w.slow.Imbalance
+	share := beam * w.base.closureAt(v) / v.sum
+	sinZ := math.Sqrt(math.Max(0, 1-float64(v.mu*v.mu)))
+	lever := v.b() * sinZ / v.sum
+	x := [regressors]float64{1, share, lever * sinDeg(v.azimuthDeg), lever * cosDeg(v.azimuthDeg)}
+	odds := im.imbalanceOdds(w.imbalanceEpisode() >= 0, x, delta, room)
+	if !im.Begun {
+		if odds <= 0 {
+			return
+		}
+		*im = imbalance{Begun: true, Since: v.minute, Humid: Number(w.humid()), Rise: w.sunrise}
+	}
+	im.Score = Number(math.Min(imbalanceMost, im.Score.Float()+odds))
+	if odds > 0 {
+		im.Last = v.minute
+	}
+	im.N++
+	weight := closureRoom / room
+	for i := range x {
+		x[i] *= weight
+	}
+	im.Sums.add(x, delta*weight)
+	if im.N <= 60 {
+		im.First.add(delta)
+	}
+	im.Recent += Number((delta - im.Recent.Float()) / math.Min(float64(im.N), 60))
+	im.Air.add(v.value[rules.AirTemperature])
+	if w.base.skyKnown && v.b() > 0.5*v.clear[rules.Direct] {
+		im.Sky[0].add(v.g()/v.clear[rules.Global] - 1)
+		im.Sky[1].add(v.b()/v.clear[rules.Direct] - 1)
+		im.Sky[2].add(v.d()/v.clear[rules.Diffuse] - 1)
+	}
+	open := w.imbalanceEpisode()
+	switch {
+	case im.Score <= 0:
+		if open >= 0 {
+			w.finish(open, im.Last+1)
+		}
+		*im = imbalance{}
+	case open < 0 && im.Score >= imbalanceRaise && odds > 0:
+		w.raiseImbalance(v)
+	case open >= 0 && im.N%30 == 0:
+		w.renameImbalance(open, v)
+	}
+}
+
+// ownImbalance says whether the episode that casts doubt on the instruments is the imbalance's own.
+func (w *Watcher) ownImbalance() bool { return w.imbalanceEpisode() >= 0 }
+
+// imbalanceEpisode is the place of the imbalance's open episode, -1 if there is none.
+func (w *Watcher) imbalanceEpisode() int {
+	if w.slow.Episode == "" {
+		return -1
+	}
+	for i := range w.open {
+		if w.open[i].ID == w.slow.Episode {
+			return i
+		}
+	}
+	return -1
+}
+
+// raiseImbalance raises the likeliest cause, once no other instrument is nearly as likely or the wait has been long.
+func (w *Watcher) raiseImbalance(v *view) {
+	im := &w.slow.Imbalance
+	c := im.classify(w, v)
+	if c.lead < 3 && im.N < 240 {
+		return
+	}
+	e := w.raise(Episode{Instrument: c.instrument, Kind: c.kind, Also: c.also, Severity: rules.Act, From: w.hindsight(im.Since),
+		Raised: v.minute, Confidence: confidence(im.Score.Float() / 2), Evidence: c.evidence})
+	if e != nil {
+		w.slow.Episode = e.ID
+		im.Model = c.model
+	}
+}
+
+// renameImbalance lets the episode follow what has become the likeliest cause. With another instrument it counts as raised anew:
+// what was said before was something else.
+func (w *Watcher) renameImbalance(open int, v *view) {
+	im := &w.slow.Imbalance
+	c := im.classify(w, v)
+	e := &w.open[open]
+	if e.Instrument != c.instrument {
+		if c.lead < 3 {
+			return
+		}
+		e.Raised = v.minute
+	}
+	if e.Kind != c.kind || e.Instrument != c.instrument {
+		e.Kind, e.Instrument, e.Advice = c.kind, c.instrument, c.kind.Entry().Advice
+		e.Rev++
+	}
+	e.Also, e.Evidence = c.also, c.evidence
+	im.Model = c.model
+}

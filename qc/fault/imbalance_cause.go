@@ -1,0 +1,163 @@
+package fault
+
+import (
+	"cmp"
+	"math"
+	"slices"
+
+	"fluxwarden/qc/exact"
+	"fluxwarden/rules"
+)
+
+// A cause is one explanation of an imbalance.
+type cause struct {
+	kind       rules.FaultKind
+	instrument string
+	also       []rules.FaultKind
+	evidence   []Evidence
+	misfit     float64 // chi squared with its prior: the less the likelier
+	lead       float64 // by which it is likelier than the next of another instrument
+	model      model
+}
+
+// Scatter of what the fits are held against (own choice, from the robust scatter of measured months).
+const (
+	closureScatter  = 0.015 // of a steady minute's closure
+	closureTogether = 15    // minutes that scatter together and count once
+	dullScatter     = 0.01  // of global over diffuse under thick cloud, a day
+	globalScatter   = 0.03  // of global over the learnt clear sky
+	beamScatter     = 0.08  // of the beam over the learnt clear sky
+)
+
+// classify names the likeliest cause of the imbalance so far.
+func (im *imbalance) classify(w *Watcher, v *view) cause {
+	s := w.setup
+	g, p, d := s.Instruments[rules.Global].ID, s.Instruments[rules.Direct].ID, s.Instruments[rules.Diffuse].ID
+	gainG, fitG := im.fitOne(0)
+	gainP, fitP := im.fitOne(1)
+	tiltE, tiltN, fitT := im.fitTilt()
+	gainD, fitD := im.fitDiffuse()
+	list := []cause{
+		{kind: rules.SensitivityWrong, instrument: g, model: model{0, Number(gainG), 0}, misfit: fitG + im.elsewhere(gainG, gainG, 0),
+			evidence: []Evidence{{"gain", roundTo(1+gainG, 1000), "1"}}},
+		{kind: rules.SensitivityWrong, instrument: p, model: model{1, Number(gainP), 0}, misfit: fitP + im.elsewhere(0, 0, -gainP),
+			evidence: []Evidence{{"gain", roundTo(1-gainP, 1000), "1"}}},
+		{kind: rules.SensitivityWrong, instrument: d, model: model{2, Number(gainD), 0}, misfit: fitD + im.elsewhere(-gainD, 0, 0) + 3,
+			evidence: []Evidence{{"gain", roundTo(1+gainD, 1000), "1"}}},
+		{kind: rules.SensorTilted, instrument: g, model: model{3, Number(tiltE), Number(tiltN)}, misfit: fitT + im.elsewhere(0, math.NaN(), 0) + 2,
+			evidence: []Evidence{{"tilt", roundTo(math.Sqrt(float64(tiltE*tiltE)+float64(tiltN*tiltN))*180/math.Pi, 10), "degrees"},
+				{"towards", roundTo(bearing(tiltE, tiltN), 1), "degrees"}}},
+	}
+	slices.SortStableFunc(list, func(a, b cause) int { return cmp.Compare(a.misfit, b.misfit) })
+	best := list[0]
+	if second := list[1]; second.misfit-best.misfit < 4 && second.instrument == best.instrument && second.kind != best.kind {
+		best.also = []rules.FaultKind{second.kind}
+	}
+	best.lead = math.Inf(1)
+	for _, c := range list[1:] {
+		if c.instrument != best.instrument {
+			best.lead = c.misfit - best.misfit
+			break
+		}
+	}
+	best = im.weather(best, g, v)
+	if best.kind == rules.SensitivityWrong && im.grows() {
+		best.kind, best.also = rules.DomeSoiled, []rules.FaultKind{rules.SensitivityDrift}
+	}
+	best.evidence = append(best.evidence, Evidence{"closure_off", roundTo(100*im.Recent.Float(), 10), "%"}, Evidence{"minutes", float64(im.N), "min"})
+	return best
+}
+
+// weather turns a gain of global into dew, frost or snow on its dome where the hour and the air speak for it: a thing of the
+// hours after a humid or freezing night, and large.
+func (im *imbalance) weather(c cause, global string, v *view) cause {
+	if c.instrument != global {
+		return c
+	}
+	size := math.Abs(im.Recent.Float())
+	early := im.Since-im.Rise < 4*60 && v.minute-im.Since < 5*60
+	switch {
+	case im.Air.of() < 2 && im.Recent < -0.15 && v.minute-im.Since < 48*60:
+		c.kind, c.also = rules.DomeSnow, []rules.FaultKind{rules.DomeWet}
+	case early && im.Humid >= 80 && size > 0.09:
+		c.kind, c.also = rules.DomeWet, []rules.FaultKind{rules.SensitivityWrong}
+		if im.Air.of() < 2 {
+			c.also = []rules.FaultKind{rules.DomeSnow}
+		}
+	}
+	return c
+}
+
+// grows says whether a loss has grown since it began, as dirt does and a coefficient does not.
+func (im *imbalance) grows() bool {
+	return im.N > 150 && im.Last-im.Since > 20*60 && math.Abs(im.Recent.Float()) > float64(1.3*math.Abs(im.First.of()))+0.008
+}
+
+// elsewhere is the misfit of what a cause implies under thick cloud, for global and for the beam over the clear sky.
+func (im *imbalance) elsewhere(dull, global, beam float64) float64 {
+	chi := 0.0
+	add := func(m *mean, want, scatter float64, least int) {
+		if m.N >= least && !math.IsNaN(want) {
+			z := (m.of() - want) / scatter
+			chi += math.Min(float64(z*z), 25)
+		}
+	}
+	add(&im.Dull, dull, dullScatter, 20)
+	add(&im.Sky[0], global, globalScatter, 20)
+	add(&im.Sky[1], beam, beamScatter, 20)
+	return chi
+}
+
+func chi(sse float64) float64 {
+	return math.Max(0, sse) / (closureScatter * closureScatter * closureTogether)
+}
+
+// fitOne fits the deviation with one regressor.
+func (im *imbalance) fitOne(k int) (coefficient, misfit float64) {
+	xx, xy := im.Sums.XX[k][k].Float(), im.Sums.XY[k].Float()
+	if xx <= 0 {
+		return 0, chi(im.Sums.YY.Float())
+	}
+	c := xy / xx
+	return c, chi(im.Sums.YY.Float() - float64(c*xy))
+}
+
+// fitDiffuse fits a gain of diffuse: deviation = -gain (1 - share).
+func (im *imbalance) fitDiffuse() (gain, misfit float64) {
+	s := &im.Sums
+	xx := (s.XX[0][0] - Number(2*s.XX[0][1]) + s.XX[1][1]).Float()
+	xy := (s.XY[1] - s.XY[0]).Float()
+	if xx <= 0 {
+		return 0, chi(s.YY.Float())
+	}
+	c := xy / xx
+	return c, chi(s.YY.Float() - float64(c*xy))
+}
+
+// fitTilt fits a tilt of global, radians to the east and to the north.
+func (im *imbalance) fitTilt() (east, north, misfit float64) {
+	s := &im.Sums
+	a, b, c := s.XX[2][2].Float(), s.XX[2][3].Float(), s.XX[3][3].Float()
+	p, q := s.XY[2].Float(), s.XY[3].Float()
+	ridge := 1e-3 * (a + c)
+	a, c = a+ridge, c+ridge
+	det := float64(a*c) - float64(b*b)
+	if det <= 0 {
+		return 0, 0, chi(s.YY.Float())
+	}
+	east = (float64(p*c) - float64(q*b)) / det
+	north = (float64(q*a) - float64(p*b)) / det
+	return east, north, chi(s.YY.Float() - float64(east*p) - float64(north*q))
+}
+
+// bearing is the azimuth that a tilt to the east and north leans towards, degrees.
+func bearing(east, north float64) float64 {
+	a := exact.Atan2(east, north) * 180 / math.Pi
+	if a < 0 {
+		a += 360
+	}
+	return a
+}
+
+func sinDeg(d float64) float64 { return exact.Sin(d * (math.Pi / 180)) }
+func cosDeg(d float64) float64 { return exact.Cos(d * (math.Pi / 180)) }
