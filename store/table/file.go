@@ -191,12 +191,7 @@ func Read(r io.ReaderAt, size int64, want []string) (t *Table, err error) {
 
 func readTable(f *parquet.File, want []string) (*Table, error) {
 	t := &Table{Rows: int(f.NumRows()), Meta: metaOf(f)}
-	var known []described
-	_ = json.Unmarshal([]byte(t.Meta["columns"]), &known) // a foreign file has none: then only names and kinds are known
-	by := map[string]described{}
-	for _, d := range known {
-		by[d.Name] = d
-	}
+	by := describedBy(t.Meta["columns"])
 	for i, fd := range f.Schema().Fields() {
 		if want != nil && !slices.Contains(want, fd.Name()) {
 			continue
@@ -215,6 +210,29 @@ func readTable(f *parquet.File, want []string) (*Table, error) {
 		t.Columns, t.Vectors = append(t.Columns, c), append(t.Vectors, v)
 	}
 	return t, nil
+}
+
+// lastDescribed keeps what was parsed last: files of one table say the same of their columns.
+var lastDescribed struct {
+	sync.Mutex
+	text string
+	by   map[string]described
+}
+
+// describedBy parses the metadata `columns`; a foreign file has none, then only names and kinds are known.
+func describedBy(text string) map[string]described {
+	lastDescribed.Lock()
+	defer lastDescribed.Unlock()
+	if lastDescribed.by == nil || lastDescribed.text != text {
+		var list []described
+		_ = json.Unmarshal([]byte(text), &list)
+		by := map[string]described{}
+		for _, d := range list {
+			by[d.Name] = d
+		}
+		lastDescribed.text, lastDescribed.by = text, by
+	}
+	return lastDescribed.by
 }
 
 func kindOf(fd parquet.Field) (Kind, error) {
@@ -237,9 +255,13 @@ func kindOf(fd parquet.Field) (Kind, error) {
 
 func readColumn(f *parquet.File, index int, c *Column, rows int) (Vector, error) {
 	b := builder{kind: c.Kind, rows: rows}
-	values := make([]parquet.Value, 1024)
-	for _, g := range f.RowGroups() {
-		if err := b.chunk(g.ColumnChunks()[index], values); err != nil {
+	for k, g := range f.RowGroups() {
+		meta := &f.Metadata().RowGroups[k].Columns[index].MetaData
+		if n := meta.NumValues; n > 0 && meta.Statistics.NullCount == n && int64(b.n)+n <= int64(rows) {
+			b.n += int(n)
+			continue
+		}
+		if err := b.chunk(g.ColumnChunks()[index]); err != nil {
 			return Vector{}, err
 		}
 	}
@@ -257,7 +279,7 @@ type builder struct {
 	dict map[string]int32
 }
 
-func (b *builder) chunk(c parquet.ColumnChunk, values []parquet.Value) error {
+func (b *builder) chunk(c parquet.ColumnChunk) error {
 	pages := c.Pages()
 	defer pages.Close()
 	for {
@@ -271,7 +293,7 @@ func (b *builder) chunk(c parquet.ColumnChunk, values []parquet.Value) error {
 		if b.n+int(p.NumValues()) > b.rows {
 			return fmt.Errorf("more values than rows")
 		}
-		err = b.page(p, values)
+		err = b.page(p)
 		parquet.Release(p)
 		if err != nil {
 			return err
@@ -279,12 +301,58 @@ func (b *builder) chunk(c parquet.ColumnChunk, values []parquet.Value) error {
 	}
 }
 
-func (b *builder) page(p parquet.Page, values []parquet.Value) error {
-	if p.NumNulls() == p.NumValues() {
-		b.skip(int(p.NumValues()))
+func (b *builder) page(p parquet.Page) error {
+	n := int(p.NumValues())
+	if int(p.NumNulls()) == n {
+		b.n += n // while there is nothing but nulls the vector stays nil
 		return nil
 	}
 	b.make()
+	if data := p.Data(); p.Dictionary() == nil {
+		levels := p.DefinitionLevels()
+		switch b.kind {
+		case Double:
+			return spread(b, b.v.Doubles, data.Double(), levels, n)
+		case Time:
+			return spread(b, b.v.Times, data.Int64(), levels, n)
+		case Int:
+			return spread(b, b.v.Ints, data.Int32(), levels, n)
+		}
+	}
+	return b.each(p)
+}
+
+// spread puts a page's values, which are only those that are not null, into their rows.
+func spread[T any](b *builder, out, values []T, levels []byte, n int) error {
+	out = out[b.n : b.n+n]
+	b.n += n
+	if len(levels) == 0 || len(values) == n {
+		if len(values) != n {
+			return fmt.Errorf("%d values for %d rows", len(values), n)
+		}
+		copy(out, values)
+		return nil
+	}
+	if len(levels) != n {
+		return fmt.Errorf("%d levels for %d rows", len(levels), n)
+	}
+	k := 0
+	for i, l := range levels {
+		if l == 0 {
+			continue
+		}
+		if k == len(values) {
+			return fmt.Errorf("%d values for more rows", len(values))
+		}
+		out[i] = values[k]
+		k++
+	}
+	return nil
+}
+
+// each takes the values one by one.
+func (b *builder) each(p parquet.Page) error {
+	values := make([]parquet.Value, 1024)
 	r := p.Values()
 	for {
 		n, err := r.ReadValues(values)
@@ -299,9 +367,6 @@ func (b *builder) page(p parquet.Page, values []parquet.Value) error {
 		}
 	}
 }
-
-// skip takes n nulls; while there is nothing but nulls the vector stays nil.
-func (b *builder) skip(n int) { b.n += n }
 
 // make makes the vector, all null, when the first value comes.
 func (b *builder) make() {
