@@ -74,7 +74,7 @@ func (s *seriesPlan) convert(out *Series, block *minute.Block, from, to int) {
 		if col.N[r] == 0 || math.IsNaN(v) {
 			continue
 		}
-		if limit.IsMark(v) {
+		if s.isMark(v) {
 			out.marked[r] = true
 			continue
 		}
@@ -97,6 +97,15 @@ func (s *seriesPlan) convert(out *Series, block *minute.Block, from, to int) {
 	}
 }
 
+// isMark says whether a channel's value is a logger's mark. A reversed thermopile may well give -7000 microvolts, so there only
+// the marks themselves count.
+func (s *seriesPlan) isMark(v float64) bool {
+	if s.microvolts == 1 {
+		return minute.IsMark(v)
+	}
+	return limit.IsMark(v)
+}
+
 // fromSignal converts one row of a thermopile's voltage.
 func (s *seriesPlan) fromSignal(out *Series, cal *rules.Calibration, col *minute.Column, r int) {
 	uv := s.microvolts
@@ -108,9 +117,9 @@ func (s *seriesPlan) fromSignal(out *Series, cal *rules.Calibration, col *minute
 		out.store(r, of(col.Mean[r]), sd, of(col.Min[r]), of(col.Max[r]))
 		return
 	}
-	bodyC, domeC := out.bodyC[r], out.bodyC[r]
-	if out.domeC != nil {
-		domeC = out.domeC[r]
+	bodyC, domeC := out.bodyC[r], out.domeC[r]
+	if s.domeCol < 0 || cal.K3 == 0 { // without a coefficient for it the dome's temperature is not used, and may be broken
+		domeC, out.domeC[r] = bodyC, math.NaN()
 	}
 	out.net[r] = sensor.NetExchange(col.Mean[r]*uv, sens)
 	form := sensor.Philipona{K1: cal.K1, K2: cal.K2, K3: cal.K3}

@@ -27,7 +27,8 @@ type Judger struct {
 }
 
 // NewJudger makes a judger that stands at the end of the last day of history. History is ascending and may be longer than
-// HistoryDays or have holes; what is older than HistoryDays before the next day is not used.
+// HistoryDays or have holes. Of a day more than HistoryDays before the next only what it carries over is used, and only if no later
+// day is there: a caller that trims history keeps the last day, however old.
 func NewJudger(plan *Plan, history []DaySummary) *Judger {
 	return &Judger{plan: plan, history: append([]DaySummary(nil), history...), runs: make([]limit.Run, len(plan.series))}
 }
@@ -44,18 +45,21 @@ func (j *Judger) BeginWith(judged *Judged) *Judged {
 	j.judged, j.block = judged, nil
 	var facts []fault.DayFacts
 	var carry *fault.Carry
+	carriedFrom := int64(0)
 	for i := range j.history {
 		if h := &j.history[i]; h.Day < judged.Day {
 			if h.Day >= judged.Day-HistoryDays {
 				facts = append(facts, h.Facts)
 			}
-			carry = &h.Carry
+			// However old it is: a station may be silent for weeks, and what was open then is open still.
+			carry, carriedFrom = &h.Carry, h.Day
 		}
 	}
 	j.watcher = fault.NewWatcher(j.plan.setup, judged.Day, facts, carry)
 	for i := range j.runs {
 		j.runs[i] = limit.Run{Value: math.NaN()}
-		if carry != nil && i < len(carry.Runs) {
+		// A run goes on over midnight, but a day without a minute ends it.
+		if carry != nil && carriedFrom == judged.Day-1 && i < len(carry.Runs) {
 			j.runs[i] = limit.Run{Value: carry.Runs[i].Value.Float(), Count: carry.Runs[i].Count}
 		}
 	}
@@ -102,7 +106,7 @@ func (j *Judger) sequence(r int) {
 // spike holds row r against its neighbours.
 func (j *Judger) spike(s *Series, r int) rules.Outcome {
 	l := &j.plan.Station.Limits
-	v := s.Value
+	v := s.Measured // the value may have been restored meanwhile, and what is judged may not depend on that
 	if s.Quantity.Longwave() {
 		nan := math.NaN()
 		return limit.Spike(v[r-1], v[r], v[r+1], nan, nan, nan, l.SpikeLWWm2, false)

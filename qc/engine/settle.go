@@ -15,15 +15,18 @@ func Settle(plan *Plan, j *Judged, episodes []fault.Episode) {
 		settleTests(plan, j, i)
 	}
 	first := j.Day * minute.PerDay
-	for k := range episodes {
-		e := &episodes[k]
-		from, to := e.From-first, e.To-first
-		if to <= 0 || from >= int64(j.Rows) {
-			continue
-		}
-		lo, hi := int(max(from, 0)), int(min(to, int64(j.Rows)))
-		for i := range plan.series {
-			settleEpisode(plan, j, i, e, lo, hi)
+	// What restores a value comes first: it lifts what the tests said of the measured one, never what another fault says.
+	for _, restoring := range [...]bool{true, false} {
+		for k := range episodes {
+			e := &episodes[k]
+			from, to := e.From-first, e.To-first
+			if to <= 0 || from >= int64(j.Rows) {
+				continue
+			}
+			lo, hi := int(max(from, 0)), int(min(to, int64(j.Rows)))
+			for i := range plan.series {
+				settleEpisode(plan, j, i, e, lo, hi, restoring)
+			}
 		}
 	}
 }
@@ -64,34 +67,31 @@ func testsEffect(s *Series, zeroAllowance, apparentZenithDeg float64, r int) rul
 	return effect
 }
 
-// settleEpisode applies one episode to one series over rows [lo, hi) where the kind reaches it.
-func settleEpisode(plan *Plan, j *Judged, i int, e *fault.Episode, lo, hi int) {
+// settleEpisode applies one episode to one series over rows [lo, hi) where the kind reaches it: either to the rows that it can
+// restore or to the others.
+func settleEpisode(plan *Plan, j *Judged, i int, e *fault.Episode, lo, hi int, restoring bool) {
 	s := &j.Series[i]
 	if !fault.Concerns(e, plan.setup, s.Instrument, s.Quantity) {
 		return
 	}
 	for r := lo; r < hi; r++ {
-		if math.IsNaN(s.Measured[r]) || !fault.Reaches(e, s.Quantity, s.Measured[r], j.ApparentZenithDeg[r], j.AzimuthDeg[r]) {
-			if math.IsNaN(s.Measured[r]) {
-				s.Faults[r] |= e.Kind.Of()
-			}
+		if !fault.Reaches(e, s.Quantity, s.Measured[r], j.ApparentZenithDeg[r], j.AzimuthDeg[r]) {
+			continue
+		}
+		restored, ok := math.NaN(), false
+		if e.Severity == rules.Act && s.Verdict[r] != rules.Absent {
+			restored, ok = fault.Restore(e, s.Quantity, plan.setup, func(q rules.Quantity) float64 { return measuredOf(plan, j, q, r) })
+		}
+		if ok != restoring {
 			continue
 		}
 		s.Faults[r] |= e.Kind.Of()
-		restored, ok := math.NaN(), false
-		if e.Severity == rules.Act {
-			restored, ok = fault.Restore(e, s.Quantity, plan.setup, func(q rules.Quantity) float64 { return measuredOf(plan, j, q, r) })
-		}
-		effect := rules.FaultEffect(e.Kind, e.Severity)
-		if ok {
+		switch effect := rules.FaultEffect(e.Kind, e.Severity).Verdict(); {
+		case ok:
 			s.Value[r], s.Restored[r] = RoundIrradiance(restored), true
-			effect = rules.RestoredEffect
-		}
-		if v := effect.Verdict(); v > s.Verdict[r] {
-			s.Verdict[r] = v
-		} else if ok && s.Verdict[r] == rules.Rejected {
-			// the tests rejected what was measured, not what has been restored
-			s.Verdict[r] = rules.Questioned
+			s.Verdict[r] = rules.RestoredEffect.Verdict()
+		case s.Verdict[r] != rules.Absent && effect > s.Verdict[r]:
+			s.Verdict[r] = effect
 		}
 	}
 }

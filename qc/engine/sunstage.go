@@ -18,10 +18,20 @@ const (
 
 // RoundIrradiance rounds to the stored resolution of an irradiance, 1/64 W/m2, half to even.
 func RoundIrradiance(v float64) float64 {
-	return math.RoundToEven(v*irradiancePerWm2)/irradiancePerWm2 + 0
+	return float64(math.RoundToEven(v*irradiancePerWm2)/irradiancePerWm2) + 0 // never minus nothing
 }
 
-func roundAngle(v float64) float64 { return math.RoundToEven(v*anglePerDegree)/anglePerDegree + 0 }
+func roundAngle(v float64) float64 {
+	return float64(math.RoundToEven(v*anglePerDegree)/anglePerDegree) + 0
+}
+
+// roundBearing is roundAngle for an angle on a circle: what would be rounded up to 360 is north.
+func roundBearing(v float64) float64 {
+	if r := roundAngle(v); r < 360 {
+		return r
+	}
+	return 0
+}
 
 // A sunDay is where the sun stands in each minute of a day, worked out once.
 type sunDay struct {
@@ -58,7 +68,7 @@ func (s *sunDay) fill(p *Plan, j *Judged) {
 		s.rows[i] = limit.SunOf(roundAngle(at.ZenithDeg), at.CosZenith, roundAngle(apparent), cosApparent, sa, hidden)
 		j.ZenithDeg[i] = s.rows[i].ZenithDeg
 		j.ApparentZenithDeg[i] = s.rows[i].ApparentZenithDeg
-		j.AzimuthDeg[i] = roundAngle(at.AzimuthDeg)
+		j.AzimuthDeg[i] = roundBearing(at.AzimuthDeg)
 		j.CosZenith[i] = s.rows[i].BeamMu
 		j.ExtraterrestrialWm2[i] = RoundIrradiance(sa)
 	}

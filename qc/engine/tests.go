@@ -70,11 +70,9 @@ func (p *Plan) singleTests(j *Judged, s *seriesPlan, out *Series, block *minute.
 		out.set(rules.Clock, r, limit.Clock(block.Ahead[r]))
 		out.set(rules.Conflict, r, limit.Conflict(col.Conflict[r]))
 		signal := limit.Signal(col.Mean[r], low, high)
-		if signal != rules.Miss && out.bodyC != nil && s.bodyCol >= 0 {
-			signal = limit.BodyTemperature(out.bodyC[r], air[r], l)
-			if signal != rules.Miss && s.domeCol >= 0 {
-				signal = limit.BodyTemperature(out.domeC[r], air[r], l)
-			}
+		if out.bodyC != nil && (limit.BodyTemperature(out.bodyC[r], air[r], l) == rules.Miss ||
+			limit.BodyTemperature(out.domeC[r], air[r], l) == rules.Miss) {
+			signal = rules.Miss
 		}
 		out.set(rules.Signal, r, signal)
 		p.valueLimits(s, out, r, v, sun)

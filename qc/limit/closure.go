@@ -13,9 +13,6 @@ const HighSunZenithDeg = 75
 // LowSunZenithDeg is where closure and diffuse ratio end. Source: Long & Dutton 2002 (from memory).
 const LowSunZenithDeg = 93
 
-// ClosureReportZenithDeg is where closure is only reported: beyond it a plane of class A is off by more than the tolerance.
-const ClosureReportZenithDeg = 85
-
 // Closure tests global against direct on the horizontal plus diffuse.
 //
 //	|G - (B*mu + D)| <= max(tolerance * (B*mu + D), floor)

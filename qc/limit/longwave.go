@@ -14,7 +14,7 @@ const ZeroCelsiusK = 273.15
 
 func blackBody(tK float64) float64 {
 	t2 := tK * tK
-	return StefanBoltzmann * t2 * t2
+	return float64(StefanBoltzmann * t2 * t2)
 }
 
 // AirUsable says whether an air temperature is plausible enough for other tests to lean on. Long & Dutton 2002 (from

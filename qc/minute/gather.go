@@ -8,7 +8,8 @@ import (
 
 // A Gatherer turns batches into blocks. What it writes into a row depends on the set of readings given for that row and
 // not on their order: samples are taken in order of their stamps, an equal repeat counts once, and of two different
-// values under one stamp the lesser counts and the minute is marked.
+// values under one stamp the lesser counts and the minute is marked. A logger's mark under one stamp is no sample beside real ones:
+// only where a minute has nothing else does it stand as the value.
 type Gatherer struct {
 	layout  Layout
 	index   map[string]int
@@ -106,7 +107,7 @@ func (g *Gatherer) fillRow(block *Block, b *Batch, row int, rows []int) {
 
 func (g *Gatherer) column(to *Column, from *Channel, at []Stamp, row int, rows []int) {
 	if len(rows) == 1 && from.Stats == nil { // the common case: one sample a minute
-		v := from.Mean[rows[0]]
+		v := from.Mean[rows[0]] + 0 // never minus nothing
 		if !math.IsNaN(v) {
 			to.Mean[row], to.SD[row], to.Min[row], to.Max[row], to.N[row] = v, math.NaN(), v, v, 1
 		}
@@ -114,6 +115,7 @@ func (g *Gatherer) column(to *Column, from *Channel, at []Stamp, row int, rows [
 	}
 	g.samples = g.samples[:0]
 	conflict := false
+	marked := math.NaN()
 	for k := 0; k < len(rows); {
 		best, found := Value{}, false
 		end := k
@@ -122,6 +124,7 @@ func (g *Gatherer) column(to *Column, from *Channel, at []Stamp, row int, rows [
 			if math.IsNaN(v.Mean) {
 				continue
 			}
+			v = whole(v)
 			switch {
 			case !found:
 				best, found = v, true
@@ -132,10 +135,17 @@ func (g *Gatherer) column(to *Column, from *Channel, at []Stamp, row int, rows [
 				}
 			}
 		}
-		if found {
+		k = end
+		switch {
+		case !found:
+		case IsMark(best.Mean):
+			marked = orLess(marked, best.Mean)
+		default:
 			g.samples = append(g.samples, best)
 		}
-		k = end
+	}
+	if len(g.samples) == 0 && marked == marked {
+		g.samples = append(g.samples, Single(marked))
 	}
 	if len(g.samples) > 0 {
 		to.Mean[row], to.SD[row], to.Min[row], to.Max[row], to.N[row] = combine(g.samples)
@@ -143,45 +153,57 @@ func (g *Gatherer) column(to *Column, from *Channel, at []Stamp, row int, rows [
 	}
 }
 
+// whole fills in what a value leaves out and can have one meaning only, so that 5 and {mean: 5} are the same.
+func whole(v Value) Value {
+	v.Mean += 0 // never minus nothing
+	v.Min, v.Max, v.N = orElse(v.Min, v.Mean)+0, orElse(v.Max, v.Mean)+0, max(v.N, 1)
+	return v
+}
+
 // compareValues orders values totally, NaN before numbers, so that the choice between two does not depend on arrival.
 func compareValues(a, b Value) int {
 	return cmp.Or(cmp.Compare(a.Mean, b.Mean), cmp.Compare(a.N, b.N), cmp.Compare(a.SD, b.SD), cmp.Compare(a.Min, b.Min), cmp.Compare(a.Max, b.Max))
 }
 
-// combine pools samples: the mean weighted by their counts, the standard deviation about it (n-1), least and greatest.
-// Where a part gives a count above one but no standard deviation, the pooled one is not known.
+// combine pools whole samples: the mean weighted by their counts, the standard deviation about it (n-1), least and greatest. The
+// pooled standard deviation is not known where a part has a count above one and no standard deviation, or one and no count.
 func combine(s []Value) (mean, sd, lo, hi float64, n uint32) {
 	if len(s) == 1 {
 		v := s[0]
-		lo, hi = v.Min, v.Max
-		if math.IsNaN(lo) {
-			lo = v.Mean
-		}
-		if math.IsNaN(hi) {
-			hi = v.Mean
-		}
-		return v.Mean, v.SD, lo, hi, uint32(max(v.N, 1))
+		return v.Mean, v.SD, v.Min, v.Max, uint32(v.N)
 	}
 	var count, sum float64
 	lo, hi = math.Inf(1), math.Inf(-1)
-	for _, v := range s {
-		w := float64(max(v.N, 1))
+	for i := range s {
+		v := &s[i]
+		w := float64(v.N)
 		count += w
 		sum += float64(w * v.Mean)
-		lo = math.Min(lo, orElse(v.Min, v.Mean))
-		hi = math.Max(hi, orElse(v.Max, v.Mean))
+		lo, hi = math.Min(lo, v.Min), math.Max(hi, v.Max)
 	}
 	mean = sum / count
 	var squares float64
-	for _, v := range s {
-		w := float64(max(v.N, 1))
+	for i := range s {
+		v := &s[i]
+		w := float64(v.N)
 		d := v.Mean - mean
 		squares += float64(w * float64(d*d))
-		if v.N > 1 {
+		switch {
+		case v.N > 1:
 			squares += float64((w - 1) * float64(v.SD*v.SD))
+		case !math.IsNaN(v.SD):
+			squares = math.NaN()
 		}
 	}
-	return mean, math.Sqrt(squares / (count - 1)), lo, hi, uint32(count)
+	return mean, math.Sqrt(squares / (count - 1)), lo, hi, uint32(math.Min(count, math.MaxInt32))
+}
+
+// orLess is the lesser of two numbers, of which the first may be NaN.
+func orLess(a, b float64) float64 {
+	if a < b {
+		return a
+	}
+	return b
 }
 
 func orElse(v, instead float64) float64 {
