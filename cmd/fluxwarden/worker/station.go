@@ -52,6 +52,8 @@ type current struct {
 	judged   *engine.Judged
 	excluded map[int]bool // rows whose readings the core cannot bear
 	changed  bool         // the archive's rows may not be these
+	tickedTo int64        // the minute of the last tick
+	tickSaw  bool         // a tick has changed the episodes: on a guess, which what comes now may prove wrong
 }
 
 // minuteOf is the UTC minute a stamp belongs to, by the plan of the stamp's own day.
@@ -129,7 +131,14 @@ func (s *station) tick(ctx context.Context, now minute.Stamp) {
 		return
 	}
 	m := s.watermark.Minute()
-	s.guard(func() { s.current.judger.Tick(m) })
+	if c := s.current; m > c.tickedTo {
+		c.tickedTo = m
+		s.guard(func() {
+			before := c.judger.Episodes()
+			c.judger.Tick(m)
+			c.tickSaw = c.tickSaw || !sameEpisodes(before, c.judger.Episodes())
+		})
+	}
 	s.tell(ctx)
 }
 
@@ -140,6 +149,17 @@ func (s *station) advance(ctx context.Context) {
 		first, ok := s.firstOpen()
 		if !ok || first >= closed {
 			return
+		}
+		if s.current != nil && s.current.tickSaw {
+			from := s.current.block.Rows
+			if err := s.rebuild(ctx); err != nil {
+				s.w.drop(s.partition, "read_archive", err)
+				return
+			}
+			if s.current != nil {
+				s.show(ctx, from)
+			}
+			continue
 		}
 		day := minute.FloorDiv(first, minute.PerDay)
 		if s.current == nil || s.current.day < day {

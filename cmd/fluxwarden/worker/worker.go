@@ -102,11 +102,14 @@ func New(cfg Config) *Worker {
 
 // Run works until the context ends. What is not committed by then is read from the journal again.
 func (w *Worker) Run(ctx context.Context) {
-	defer w.closeCursor()
+	defer w.Close()
 	for ctx.Err() == nil {
 		w.Step(ctx, waitForNext)
 	}
 }
+
+// Close ends reading. What is not committed is read again by the next worker.
+func (w *Worker) Close() { w.closeCursor() }
 
 // Ready says whether the worker reads the journal and has caught up with it.
 func (w *Worker) Ready() bool { return w.cursor != nil && w.caughtUp }
