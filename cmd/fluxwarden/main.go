@@ -28,13 +28,13 @@ type command struct {
 func commands() []command {
 	return []command{
 		// demo
-		// run
+		{"run", "the daemon: takes readings, judges them, keeps the archive", cmdRun},
 		{"judge", "judge files of readings into an archive", cmdJudge},
 		{"export", "write an archive's minutes as CSV", cmdExport},
 		{"faults", "list the episodes: which instrument, what, since when, what to do", cmdFaults},
 		{"sky", "what the judge expects: sun, clear sky, the bounds of every limit", cmdSky},
 		{"lint", "check site files", cmdLint},
-		// refused
+		{"refused", "list, show and requeue what was refused", cmdRefused},
 		{"version", "print the version", func([]string) int { fmt.Println("fluxwarden", version); return exitOK }},
 	}
 }
