@@ -319,7 +319,36 @@ func (b *builder) page(p parquet.Page) error {
 			return spread(b, b.v.Ints, data.Int32(), levels, n)
 		}
 	}
+	if b.kind == Text && p.Dictionary() != nil {
+		return b.coded(p, n)
+	}
 	return b.each(p)
+}
+
+// coded takes a page of texts as codes of its dictionary.
+func (b *builder) coded(p parquet.Page, n int) error {
+	d := p.Dictionary()
+	to := make([]int32, d.Len())
+	for i := range to {
+		to[i] = b.code(string(d.Index(int32(i)).ByteArray()))
+	}
+	data := p.Data()
+	codes := data.Int32()
+	mapped := make([]int32, len(codes))
+	for i, c := range codes {
+		mapped[i] = to[c]
+	}
+	return spread(b, b.v.Codes, mapped, p.DefinitionLevels(), n)
+}
+
+func (b *builder) code(s string) int32 {
+	code, ok := b.dict[s]
+	if !ok {
+		code = int32(len(b.v.Dict))
+		b.v.Dict = append(b.v.Dict, s)
+		b.dict[s] = code
+	}
+	return code
 }
 
 // spread puts a page's values, which are only those that are not null, into their rows.
@@ -407,14 +436,7 @@ func (b *builder) put(v parquet.Value) {
 	case Int:
 		b.v.Ints[i] = v.Int32()
 	case Text:
-		code, ok := b.dict[string(v.ByteArray())]
-		if !ok {
-			code = int32(len(b.v.Dict))
-			s := string(v.ByteArray())
-			b.v.Dict = append(b.v.Dict, s)
-			b.dict[s] = code
-		}
-		b.v.Codes[i] = code
+		b.v.Codes[i] = b.code(string(v.ByteArray()))
 	case Bool:
 		b.v.Bools[i] = v.Boolean()
 	}
