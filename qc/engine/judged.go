@@ -95,7 +95,7 @@ func (j *Judged) reset(p *Plan, day int64) {
 			j.Series[i].clearRow(r)
 		}
 	}
-	j.sun.fill(p, j)
+	j.sun.fill(p, j, day)
 }
 
 func (s *seriesPlan) columns(f *floats) Series {

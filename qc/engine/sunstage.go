@@ -50,12 +50,12 @@ func StandardPressure(elevationM float64) float64 {
 const refractionTemperatureC = 10
 
 // fill works out the sun for the day, mid-minute, and writes it to the judged columns.
-func (s *sunDay) fill(p *Plan, j *Judged) {
-	s.day = j.Day
+func (s *sunDay) fill(p *Plan, j *Judged, unixDay int64) {
+	s.day = unixDay
 	if s.rows == nil {
 		s.rows = make([]limit.Sun, minute.PerDay)
 	}
-	day := sun.NewDay(j.Day, p.site)
+	day := sun.NewDay(unixDay, p.site)
 	for i := range s.rows {
 		at := day.AtMinute(float64(60*i + 30))
 		apparent := sun.ApparentZenith(at.ZenithDeg, p.pressureHPa, refractionTemperatureC)
