@@ -86,12 +86,14 @@ func (w *Watcher) watchClock(v *view) {
 		j := &w.slow.Jumps[i]
 		then := math.Max(0, w.muMinutesAgo(v, j.Shift))
 		shifted := math.Abs(g - float64(c*(float64(b*then)+d)))
-		if math.Max(asStamped, shifted) < 1.2*room {
+		odds := 0.0
+		switch {
+		case shifted < 1.5*room && asStamped > 1.5*room:
+			odds = math.Min(0.2, 0.1*(asStamped-shifted)/room)
+		case shifted > 3*room:
+			odds = -0.2
+		default:
 			continue
-		}
-		odds := math.Max(-0.2, math.Min(0.2, 0.1*(asStamped-shifted)/room))
-		if odds > 0 && (shifted > 1.5*room || asStamped < 1.5*room) {
-			continue // neither fits, or both do
 		}
 		j.Score = Number(math.Max(0, math.Min(jumpMost, j.Score.Float()+odds)))
 		if odds > 0 {

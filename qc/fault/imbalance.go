@@ -86,8 +86,14 @@ func (s *sums) add(x [regressors]float64, y float64) {
 }
 
 const (
+	// dullRoom is how far global over diffuse under thick cloud may stand off its usual.
+	dullRoom       = 0.045
 	imbalanceRaise = 6.0
 	imbalanceMost  = 12.0
+	// imbalanceQuiet is after how many minutes without a word for it an imbalance is let go.
+	imbalanceQuiet = 36 * 60
+	// grossly is a deviation that few gains reach: then single minutes usually show a plainer cause, and it is given time.
+	grossly = 0.35
 	// closureRoom is the relative deviation from the station's own closure that a sound station stays within, most steady minutes
 	// (own choice; robust daily scatter on measured months is about 1 %).
 	closureRoom = 0.035
@@ -98,21 +104,31 @@ const (
 // watchImbalance takes a minute into the imbalance and raises, renames or ends its episode.
 func (w *Watcher) watchImbalance(v *view) {
 	im := &w.slow.Imbalance
-	if w.tainted(rules.Direct) && !w.ownImbalance() || !v.sunUp {
+	if w.otherCause() {
+		if !w.ownImbalance() {
+			*im = imbalance{} // what has gathered was that cause's doing
+		}
+		return
+	}
+	if im.Begun && v.minute-im.Last > imbalanceQuiet {
+		if open := w.imbalanceEpisode(); open >= 0 {
+			w.finish(open, im.Last+1)
+		}
+		*im = imbalance{}
+	}
+	if !v.sunUp {
 		return
 	}
 	g, b, d := v.g(), v.b(), v.d()
 	if math.IsNaN(g + b + d) {
 		return
 	}
-	if b < 2 && d > 80 && v.steady {
-		if im.Begun {
-			im.Dull.add(g/d/w.base.overcast - 1)
-		}
+	if b < 2 && d > 60 {
+		w.dullStep(v, g/d/w.base.overcast-1)
 		return
 	}
 	beam := float64(b * v.mu)
-	if beam < 40 || v.sum < 80 || !v.steady {
+	if beam < 40 || v.sum < 80 {
 		return
 	}
 	delta := g/v.sum - 1
@@ -126,7 +142,49 @@ func (w *Watcher) closureRoomAt(v *view) float64 {
 	if !w.base.known {
 		room = untaughtRoom
 	}
-	return float64(room*(1+float64(4*math.Max(0, 0.4-v.mu)))) + 6/v.sum
+	return float64(room*(1+float64(4*math.Max(0, 0.4-v.mu)))) + (6+float64(0.4*w.moved(v)))/v.sum
+}
+
+// dullStep takes a minute without a beam: global over diffuse is the ratio of the two gains, blind to levelling, clock and tracker.
+func (w *Watcher) dullStep(v *view, delta float64) {
+	im := &w.slow.Imbalance
+	room := dullRoom + w.moved(v)/v.sum
+	if w.base.overcastN == 0 {
+		room *= 2
+	}
+	off := math.Abs(delta) > room
+	if !im.Begun && !off {
+		return
+	}
+	if !im.Begun {
+		*im = imbalance{Begun: true, Since: v.minute, Humid: Number(w.humid()), Rise: w.sunrise}
+	}
+	odds := 0.0
+	switch {
+	case off:
+		odds = math.Min(0.2, 0.03*math.Abs(delta)/room)
+		im.Last = v.minute
+	case im.Model.K == 0 && math.Abs(im.Model.A.Float()) > 2*room:
+		odds = -0.1 // a gain of global would show here
+	case w.imbalanceEpisode() < 0:
+		odds = -0.02
+	}
+	im.Dull.add(delta)
+	im.Air.add(v.value[rules.AirTemperature])
+	im.N++
+	im.Recent += Number((delta - im.Recent.Float()) / math.Min(float64(im.N), 60))
+	w.imbalanceScore(v, odds)
+}
+
+// moved is by how much the sum has changed over the last minutes, W/m2: at the edge of a cloud instruments do not follow alike.
+func (w *Watcher) moved(v *view) float64 {
+	most := 0.0
+	for i := range w.before[:2] {
+		if p := &w.before[i]; p.minute >= v.minute-2 && !math.IsNaN(p.sum) {
+			most = math.Max(most, math.Abs(v.sum-p.sum))
+		}
+	}
+	return most
 }
 
 // imbalanceOdds is what one steady minute says. Before an episode is open, every deviation speaks for one; then the deviation that
@@ -163,7 +221,6 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 		}
 		*im = imbalance{Begun: true, Since: v.minute, Humid: Number(w.humid()), Rise: w.sunrise}
 	}
-	im.Score = Number(math.Min(imbalanceMost, im.Score.Float()+odds))
 	if odds > 0 {
 		im.Last = v.minute
 	}
@@ -183,6 +240,13 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 		im.Sky[1].add(v.b()/v.clear[rules.Direct] - 1)
 		im.Sky[2].add(v.d()/v.clear[rules.Diffuse] - 1)
 	}
+	w.imbalanceScore(v, odds)
+}
+
+// imbalanceScore takes a minute's odds and raises, renames or ends the episode.
+func (w *Watcher) imbalanceScore(v *view, odds float64) {
+	im := &w.slow.Imbalance
+	im.Score = Number(math.Min(imbalanceMost, im.Score.Float()+odds))
 	open := w.imbalanceEpisode()
 	switch {
 	case im.Score <= 0:
@@ -195,6 +259,27 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 	case open >= 0 && im.N%30 == 0:
 		w.renameImbalance(open, v)
 	}
+}
+
+// otherCause says whether an open episode of another kind upsets how the three close.
+func (w *Watcher) otherCause() bool {
+	for i := range w.open {
+		e := &w.open[i]
+		if e.ID != w.slow.Episode && e.Severity == rules.Act && upsetsClosing.Has(e.Kind) && w.isShortwave(e.Instrument) {
+			return true
+		}
+	}
+	return false
+}
+
+// isShortwave says whether an episode's instrument has to do with global, direct or diffuse.
+func (w *Watcher) isShortwave(instrument string) bool {
+	for _, q := range threeShortwave {
+		if w.setup.Instruments[q].ID == instrument {
+			return true
+		}
+	}
+	return instrument == Tracker || instrument == Logger
 }
 
 // ownImbalance says whether the episode that casts doubt on the instruments is the imbalance's own.
@@ -217,7 +302,7 @@ func (w *Watcher) imbalanceEpisode() int {
 func (w *Watcher) raiseImbalance(v *view) {
 	im := &w.slow.Imbalance
 	c := im.classify(w, v)
-	if c.lead < 3 && im.N < 240 {
+	if c.lead < 3 && im.N < 240 || math.Abs(im.Recent.Float()) > grossly && im.N < 120 && c.kind != rules.DomeSnow {
 		return
 	}
 	e := w.raise(Episode{Instrument: c.instrument, Kind: c.kind, Also: c.also, Severity: rules.Act, From: w.hindsight(im.Since),

@@ -44,7 +44,7 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 			evidence: []Evidence{{"gain", roundTo(1-gainP, 1000), "1"}}},
 		{kind: rules.SensitivityWrong, instrument: d, model: model{2, Number(gainD), 0}, misfit: fitD + im.elsewhere(-gainD, 0, 0) + 3,
 			evidence: []Evidence{{"gain", roundTo(1+gainD, 1000), "1"}}},
-		{kind: rules.SensorTilted, instrument: g, model: model{3, Number(tiltE), Number(tiltN)}, misfit: fitT + im.elsewhere(0, math.NaN(), 0) + 2,
+		{kind: rules.SensorTilted, instrument: g, model: model{3, Number(tiltE), Number(tiltN)}, misfit: fitT + im.elsewhere(0, im.Recent.Float(), 0) + 2,
 			evidence: []Evidence{{"tilt", roundTo(math.Sqrt(float64(tiltE*tiltE)+float64(tiltN*tiltN))*180/math.Pi, 10), "degrees"},
 				{"towards", roundTo(bearing(tiltE, tiltN), 1), "degrees"}}},
 	}
