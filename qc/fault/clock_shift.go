@@ -16,6 +16,8 @@ type jump struct {
 	Score Number `json:"score"`
 	For   int    `json:"for"`
 	Last  int64  `json:"last"`
+	// Against counts the sunlit minutes since then that fit the stamps as they are: enough of them, and the clock never jumped
+	Against int `json:"against"`
 }
 
 const (
@@ -25,6 +27,7 @@ const (
 	jumpRaise     = 3.0
 	jumpMost      = 8.0
 	jumpDaysWatch = 10
+	jumpAgainst   = 30 // sunlit minutes that acquit the clock
 )
 
 // seeHole notes that no record came for some minutes.
@@ -92,6 +95,9 @@ func (w *Watcher) watchClock(v *view) {
 			odds = math.Min(0.2, 0.1*(asStamped-shifted)/room)
 		case shifted > 3*room:
 			odds = -0.2
+			if asStamped < 1.5*room {
+				j.Against++
+			}
 		default:
 			continue
 		}
@@ -102,6 +108,7 @@ func (w *Watcher) watchClock(v *view) {
 		}
 		w.clockEpisode(v, j)
 	}
+	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(j jump) bool { return j.Against >= jumpAgainst && j.Score <= 0 && !w.clockOpen(j) })
 }
 
 func (w *Watcher) clockEpisode(v *view, j *jump) {
