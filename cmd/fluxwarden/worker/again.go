@@ -28,7 +28,7 @@ func (s *station) judgeDay(ctx context.Context, day int64, all *minute.Batch, to
 		}
 		c.excluded = excluded
 		c.gatherer.Fill(c.block, readings, 0, to)
-		if s.guard(func() { c.judger.Advance(c.block) }) {
+		if s.judge(c) {
 			return c
 		}
 		row, bad := s.firstBad(day, readings, to)
@@ -57,7 +57,7 @@ func (s *station) firstBad(day int64, readings *minute.Batch, to int) (row int, 
 	rows := c.block.Rows
 	for r := range rows {
 		c.block.Rows = r + 1
-		if !s.guard(func() { c.judger.Advance(c.block) }) {
+		if !s.judge(c) {
 			return r, true
 		}
 	}

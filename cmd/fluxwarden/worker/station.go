@@ -260,7 +260,17 @@ func (s *station) fill(to int) bool {
 	end := c.day*minute.PerDay + int64(to)
 	s.dropOpen(func(m int64) bool { return m < end })
 	c.changed = true
-	return s.guard(func() { c.judger.Advance(c.block) })
+	return s.judge(c)
+}
+
+// judge lets the core judge the rows of the block that it has not judged, and says whether it came through.
+func (s *station) judge(c *current) bool {
+	return s.guard(func() {
+		if s.w.cfg.Trap != nil {
+			s.w.cfg.Trap(c.block, c.judged.Rows)
+		}
+		c.judger.Advance(c.block)
+	})
 }
 
 // guard runs the core and says whether it came through.
@@ -271,9 +281,6 @@ func (s *station) guard(f func()) (ok bool) {
 			ok = false
 		}
 	}()
-	if s.w.cfg.Trap != nil {
-		s.w.cfg.Trap(s.id)
-	}
 	f()
 	return true
 }

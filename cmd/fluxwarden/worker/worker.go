@@ -43,8 +43,8 @@ type Config struct {
 	Grace       time.Duration // how long a minute waits for its readings after its end
 	CommitEvery time.Duration // by the clock, per partition
 	CommitRows  int           // a partition that has so many readings waiting commits at once
-	// Trap is called before the core is run on a station; a test may panic in it.
-	Trap func(station string)
+	// Trap is called before the core judges a block's rows from the given one on; a test may panic in it as the core might.
+	Trap func(block *minute.Block, from int)
 	// Faulty plants a bug: a test shows by it that the simulation can fail.
 	Faulty Faulty
 }
@@ -118,7 +118,7 @@ func (w *Worker) Ready() bool { return w.cursor != nil && w.caughtUp }
 // within the wait. It says whether a message came.
 func (w *Worker) Step(ctx context.Context, wait time.Duration) bool {
 	now := w.cfg.Clock.Now()
-	if passed(w.leased, now, leaseEvery) {
+	if len(w.partitions) == 0 || passed(w.leased, now, leaseEvery) {
 		w.leased = now
 		w.reconcile(ctx, now)
 	}

@@ -109,7 +109,7 @@ func (w *world) keptValues() (*kept, error) {
 // compareWithClean gives the very readings that raw holds, in order, to one worker that nothing happens to, and compares
 // what comes of them.
 func (w *world) compareWithClean(k *kept) error {
-	clean, err := newWorld(0, Options{Days: w.o.Days, Calm: true, Backend: w.o.cleanBackend()})
+	clean, err := newWorld(0, Options{Days: w.o.Days, Calm: true, Backend: w.o.cleanBackend(), Trap: w.o.Trap})
 	if err != nil {
 		return err
 	}

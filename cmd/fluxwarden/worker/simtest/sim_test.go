@@ -4,6 +4,7 @@ import (
 	"flag"
 	"fmt"
 	"maps"
+	"math"
 	"runtime"
 	"slices"
 	"sync"
@@ -11,6 +12,7 @@ import (
 	"testing"
 
 	"fluxwarden/cmd/fluxwarden/worker"
+	"fluxwarden/qc/minute"
 )
 
 var (
@@ -103,6 +105,31 @@ func runOne(seed uint64, o Options) (counts map[string]int, err error) {
 		}
 	}()
 	return Run(seed, o)
+}
+
+// TestTheCorePanics lets the core panic on some minutes, for good. They must be left out and set aside, the same ones whatever
+// happens, and all others judged as if they had not been sent.
+func TestTheCorePanics(t *testing.T) {
+	trap := func(b *minute.Block, from int) {
+		for r := from; r < b.Rows; r++ {
+			if v := b.Columns[0].Mean[r]; v > 0 && math.Mod(v, 47) == 0 {
+				panic("a value that the core cannot bear")
+			}
+		}
+	}
+	aside := 0
+	var mu sync.Mutex
+	simulate(*firstArg+500, 8, Options{Days: 2, Backend: memoryBackend, Trap: trap}, func(seed uint64, counts map[string]int, err error) {
+		mu.Lock()
+		defer mu.Unlock()
+		aside += counts["set aside"]
+		if err != nil {
+			t.Errorf("seed %d: %v", seed, err)
+		}
+	})
+	if aside == 0 {
+		t.Error("nothing was set aside")
+	}
 }
 
 // TestSimulationCanFail plants bugs of the kinds that the simulation is there to find.

@@ -20,6 +20,7 @@ type Options struct {
 	Faulty  worker.Faulty
 	Backend func() backend
 	Log     *slog.Logger
+	Trap    func(block *minute.Block, from int) // panics where the core is to panic
 }
 
 // cleanBackend is an archive of the same kind, so that digests can be compared.
@@ -205,7 +206,7 @@ func (w *world) cutPower() {
 func (w *world) start(i int) {
 	p := &w.procs[i]
 	p.w = worker.New(worker.Config{Journal: w.journal, Lease: lease{w, i}, Archive: w.backend.open(func() bool { return w.dies(i) }), Rules: w.rules,
-		Findings: silent{w}, Aside: silent{w}, Meter: meter{w}, Clock: w, Log: w.o.Log, Program: "simulation", CommitEvery: 40 * time.Minute, CommitRows: 250, Faulty: w.o.Faulty})
+		Findings: silent{w}, Aside: silent{w}, Meter: meter{w}, Clock: w, Log: w.o.Log, Program: "simulation", CommitEvery: 40 * time.Minute, CommitRows: 250, Faulty: w.o.Faulty, Trap: w.o.Trap})
 }
 
 // alive runs a piece of a process, which may die in it.
