@@ -40,60 +40,50 @@ func periodsOf(in *rules.Instrument) []calibrationPeriod {
 	return out
 }
 
-// at gives the calibration that holds in a minute, nil if none does.
-func (s *seriesPlan) at(minuteUTC int64) *rules.Calibration {
+// at gives the calibration that holds in a minute, nil if none does, and the first minute from which that may be another.
+func (s *seriesPlan) at(minuteUTC int64) (cal *rules.Calibration, until int64) {
+	until = math.MaxInt64
 	for i := range s.periods {
-		if p := &s.periods[i]; minuteUTC >= p.from && minuteUTC < p.to {
-			return p.cal
+		switch p := &s.periods[i]; {
+		case minuteUTC < p.from:
+			until = min(until, p.from)
+		case minuteUTC < p.to:
+			return p.cal, p.to
 		}
 	}
-	return nil
+	return nil, until
 }
 
 // convert turns rows [from, to) of the block into the series' own unit: Measured, SD, Min, Max, N, and the body temperatures of a
 // pyrgeometer. A logger's mark counts as nothing sent.
-func (s *seriesPlan) convert(out *Series, block *minute.Block, from, to int) {
+func (s *seriesPlan) convert(out *Series, block *minute.Block, nothing []float64, from, to int) {
+	out.forget(nothing, from, to)
 	col := &block.Columns[s.signal]
+	switch {
+	case s.weather != nil:
+		factor, offset := weatherUnit(s.weather.Unit)
+		s.linear(out, col, scale{factor, 1, offset}, from, to)
+		return
+	case s.quantity.Longwave():
+		s.bodies(out, block, from, to)
+	}
+	if s.instrument.Input.Irradiance != "" {
+		s.linear(out, col, scale{1, 1, 0}, from, to)
+		return
+	}
 	first := block.Day * minute.PerDay
-	var body, dome *minute.Column
-	if s.bodyCol >= 0 {
-		body = &block.Columns[s.bodyCol]
-	}
-	if s.domeCol >= 0 {
-		dome = &block.Columns[s.domeCol]
-	}
-	for r := from; r < to; r++ {
-		out.clearRow(r)
-		if body != nil {
-			out.bodyC[r] = temperatureC(body.Mean[r], s.instrument.Input.CaseUnit)
+	for r := from; r < to; {
+		cal, until := s.at(first + int64(r))
+		end := int(min(until-first, int64(to)))
+		switch {
+		case cal == nil:
+			s.uncalibrated(out, col, r, end)
+		case s.quantity.Longwave():
+			s.pyrgeometer(out, col, cal, r, end)
+		default:
+			s.linear(out, col, scale{s.microvolts, cal.SensitivityUVPerW, -cal.ZeroWm2}, r, end)
 		}
-		if dome != nil {
-			out.domeC[r] = temperatureC(dome.Mean[r], s.instrument.Input.DomeUnit)
-		}
-		v := col.Mean[r]
-		if col.N[r] == 0 || math.IsNaN(v) {
-			continue
-		}
-		if s.isMark(v) {
-			out.marked[r] = true
-			continue
-		}
-		out.N[r] = col.N[r]
-		if s.weather != nil {
-			factor, offset := weatherUnit(s.weather.Unit)
-			out.store(r, float64(v*factor)+offset, col.SD[r]*factor, float64(col.Min[r]*factor)+offset, float64(col.Max[r]*factor)+offset)
-			continue
-		}
-		if s.instrument.Input.Irradiance != "" {
-			out.store(r, v, col.SD[r], col.Min[r], col.Max[r])
-			continue
-		}
-		cal := s.at(first + int64(r))
-		if cal == nil {
-			out.N[r] = 0
-			continue
-		}
-		s.fromSignal(out, cal, col, r)
+		r = end
 	}
 }
 
@@ -106,32 +96,97 @@ func (s *seriesPlan) isMark(v float64) bool {
 	return limit.IsMark(v)
 }
 
-// fromSignal converts one row of a thermopile's voltage.
-func (s *seriesPlan) fromSignal(out *Series, cal *rules.Calibration, col *minute.Column, r int) {
-	uv := s.microvolts
-	sens := cal.SensitivityUVPerW
-	sd := math.Abs(col.SD[r] * uv / sens)
-	if !s.quantity.Longwave() {
-		radiometer := sensor.Radiometer{SensitivityUVPerWm2: sens, ZeroOffsetWm2: cal.ZeroWm2}
-		of := func(v float64) float64 { return radiometer.Irradiance(v*uv/1000, 0) }
-		out.store(r, of(col.Mean[r]), sd, of(col.Min[r]), of(col.Max[r]))
-		return
+// sent says whether a row of the channel holds a value; a mark is noted.
+func (s *seriesPlan) sent(out *Series, col *minute.Column, r int) bool {
+	v := col.Mean[r]
+	if col.N[r] == 0 || v != v {
+		return false
 	}
-	bodyC, domeC := out.bodyC[r], out.domeC[r]
-	if s.domeCol < 0 || cal.K3 == 0 { // without a coefficient for it the dome's temperature is not used, and may be broken
-		domeC, out.domeC[r] = bodyC, math.NaN()
+	if s.isMark(v) {
+		out.marked[r] = true
+		return false
 	}
-	out.net[r] = sensor.NetExchange(col.Mean[r]*uv, sens)
+	return true
+}
+
+// uncalibrated is for rows in which no calibration holds: a mark is noted, a signal is worth nothing.
+func (s *seriesPlan) uncalibrated(out *Series, col *minute.Column, from, to int) {
+	for r := from; r < to; r++ {
+		s.sent(out, col, r)
+	}
+}
+
+// A scale is value = per * signal / divisor + offset. For a thermopile it is sensor.Radiometer: per is the signal's unit in
+// microvolts, divisor the sensitivity, offset the zero taken off.
+type scale struct{ per, divisor, offset float64 }
+
+func (c *scale) of(v float64) float64 { return float64(float64(v*c.per)/c.divisor) + c.offset }
+
+// linear converts rows whose value is a straight line of the signal.
+func (s *seriesPlan) linear(out *Series, col *minute.Column, c scale, from, to int) {
+	for r := from; r < to; r++ {
+		if !s.sent(out, col, r) {
+			continue
+		}
+		v, lo, hi := col.Mean[r], col.Min[r], col.Max[r]
+		out.N[r] = col.N[r]
+		mean := RoundIrradiance(c.of(v))
+		out.Measured[r] = mean
+		if lo == v && hi == v { // one sample
+			out.Min[r], out.Max[r] = mean, mean
+		} else {
+			out.span(r, c.of(lo), c.of(hi))
+		}
+		if sd := col.SD[r]; sd == sd {
+			out.SD[r] = RoundIrradiance(math.Abs(float64(sd*c.per) / c.divisor))
+		}
+	}
+	copy(out.Value[from:to], out.Measured[from:to])
+}
+
+// bodies converts the case and dome temperatures of a pyrgeometer.
+func (s *seriesPlan) bodies(out *Series, block *minute.Block, from, to int) {
+	if s.bodyCol >= 0 {
+		body := block.Columns[s.bodyCol].Mean
+		for r := from; r < to; r++ {
+			out.bodyC[r] = temperatureC(body[r], s.instrument.Input.CaseUnit)
+		}
+	}
+	if s.domeCol >= 0 {
+		dome := block.Columns[s.domeCol].Mean
+		for r := from; r < to; r++ {
+			out.domeC[r] = temperatureC(dome[r], s.instrument.Input.DomeUnit)
+		}
+	}
+}
+
+// pyrgeometer converts a thermopile's voltage and the body temperatures by the form of Philipona et al. 1995.
+func (s *seriesPlan) pyrgeometer(out *Series, col *minute.Column, cal *rules.Calibration, from, to int) {
+	uv, sens := s.microvolts, cal.SensitivityUVPerW
 	form := sensor.Philipona{K1: cal.K1, K2: cal.K2, K3: cal.K3}
-	of := func(v float64) float64 {
-		return form.Flux(sensor.NetExchange(v*uv, sens), bodyC+limit.ZeroCelsiusK, domeC+limit.ZeroCelsiusK) - cal.ZeroWm2
+	coupled := s.domeCol < 0 || cal.K3 == 0 // the dome's temperature is not used, and may be broken
+	for r := from; r < to; r++ {
+		bodyC, domeC := out.bodyC[r], out.domeC[r]
+		if coupled {
+			domeC, out.domeC[r] = bodyC, math.NaN()
+		}
+		if !s.sent(out, col, r) {
+			continue
+		}
+		out.net[r] = sensor.NetExchange(col.Mean[r]*uv, sens)
+		of := func(v float64) float64 {
+			return form.Flux(sensor.NetExchange(v*uv, sens), bodyC+limit.ZeroCelsiusK, domeC+limit.ZeroCelsiusK) - cal.ZeroWm2
+		}
+		v := of(col.Mean[r])
+		if math.IsNaN(v) { // no body temperature: the flux is not known
+			continue
+		}
+		out.N[r] = col.N[r]
+		out.Measured[r] = RoundIrradiance(v)
+		out.span(r, of(col.Min[r]), of(col.Max[r]))
+		out.SD[r] = RoundIrradiance(math.Abs(col.SD[r] * uv / sens))
 	}
-	v := of(col.Mean[r])
-	if math.IsNaN(v) { // no body temperature: the flux is not known
-		out.N[r] = 0
-		return
-	}
-	out.store(r, v, sd, of(col.Min[r]), of(col.Max[r]))
+	copy(out.Value[from:to], out.Measured[from:to])
 }
 
 // temperatureC is a body temperature in degrees C from the unit of its channel; NaN where the channel cannot mean one.
@@ -165,24 +220,24 @@ func weatherUnit(unit string) (factor, offset float64) {
 	}
 }
 
-// store writes one row, rounded to the stored resolution.
-func (out *Series) store(r int, mean, sd, lo, hi float64) {
-	out.Measured[r] = RoundIrradiance(mean)
-	out.Value[r] = out.Measured[r]
-	out.SD[r] = RoundIrradiance(sd)
+// span writes the least and the greatest of a row, whichever way round they come.
+func (out *Series) span(r int, lo, hi float64) {
 	if hi < lo {
 		lo, hi = hi, lo
 	}
 	out.Min[r], out.Max[r] = RoundIrradiance(lo), RoundIrradiance(hi)
 }
 
-// clearRow forgets what a row said.
-func (out *Series) clearRow(r int) {
-	nan := math.NaN()
-	out.Measured[r], out.Value[r], out.SD[r], out.Min[r], out.Max[r], out.U95[r] = nan, nan, nan, nan, nan, nan
-	out.N[r], out.Missed[r], out.Passed[r], out.Faults[r], out.Verdict[r], out.Restored[r] = 0, 0, 0, 0, rules.Absent, false
-	out.marked[r] = false
-	if out.net != nil {
-		out.net[r], out.bodyC[r], out.domeC[r] = nan, nan, nan
+// forget empties rows [from, to). Outcomes and the sets of tests are not touched: every test writes every row.
+func (out *Series) forget(nothing []float64, from, to int) {
+	for _, c := range [...][]float64{out.Measured, out.Value, out.SD, out.Min, out.Max, out.U95, out.net, out.bodyC, out.domeC} {
+		if c != nil {
+			copy(c[from:to], nothing)
+		}
 	}
+	clear(out.N[from:to])
+	clear(out.Faults[from:to])
+	clear(out.Verdict[from:to]) // rules.Absent
+	clear(out.Restored[from:to])
+	clear(out.marked[from:to])
 }

@@ -86,7 +86,9 @@ func (d *dice) share() float64 {
 }
 
 // about gives a number about nothing with a standard deviation of one.
-func (d *dice) about() float64 { return (d.share() + d.share() + d.share() + d.share() - 2) * math.Sqrt(3) }
+func (d *dice) about() float64 {
+	return (d.share() + d.share() + d.share() + d.share() - 2) * math.Sqrt(3)
+}
 
 func resolved(v, steps float64) float64 { return math.RoundToEven(v*steps) / steps }
 

@@ -3,8 +3,6 @@
 package engine
 
 import (
-	"math"
-
 	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
 )
@@ -13,7 +11,7 @@ import (
 const JudgeVersion = 1
 
 // A Judged is the judged minutes of one station on one UTC day, in columns of minute.PerDay rows of which the first Rows are
-// known. NaN stands for a value that is not there.
+// known; the others may hold anything. NaN stands for a value that is not there.
 type Judged struct {
 	Station string
 	Day     int64 // days since 1970-01-01
@@ -82,19 +80,9 @@ func newJudged(p *Plan, day int64) *Judged {
 	return j
 }
 
-// reset makes the columns ready for another day.
+// reset makes the columns ready for another day. What stands in rows that are not known yet is left there.
 func (j *Judged) reset(p *Plan, day int64) {
 	j.Day, j.Rows = day, 0
-	clear(j.Records)
-	nan := math.NaN()
-	for i := range j.ClearGlobalWm2 {
-		j.ClearGlobalWm2[i], j.ClearDirectWm2[i], j.ClearDiffuseWm2[i], j.ClearLWDownWm2[i] = nan, nan, nan, nan
-	}
-	for i := range j.Series {
-		for r := 0; r < minute.PerDay; r++ {
-			j.Series[i].clearRow(r)
-		}
-	}
 	j.sun.fill(p, j, day)
 }
 
@@ -115,20 +103,19 @@ func (s *seriesPlan) columns(f *floats) Series {
 	return out
 }
 
-// set notes what a test said of a row.
+// set notes what a test said of a row whose sets of tests were begun by singleTests. A test that is asked again may only turn from not
+// applicable to pass or miss.
 func (out *Series) set(t rules.Test, r int, o rules.Outcome) {
-	if out.Outcomes[t] == nil {
+	c := out.Outcomes[t]
+	if c == nil {
 		return
 	}
-	out.Outcomes[t][r] = o
-	bit := t.Of()
-	out.Missed[r] &^= bit
-	out.Passed[r] &^= bit
+	c[r] = o
 	switch o {
 	case rules.Pass:
-		out.Passed[r] |= bit
+		out.Passed[r] |= t.Of()
 	case rules.Miss:
-		out.Missed[r] |= bit
+		out.Missed[r] |= t.Of()
 	}
 }
 

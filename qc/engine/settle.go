@@ -34,14 +34,19 @@ func Settle(plan *Plan, j *Judged, episodes []fault.Episode) {
 // settleTests gives the verdict that the tests alone come to.
 func settleTests(plan *Plan, j *Judged, i int) {
 	s := &j.Series[i]
-	for r := 0; r < j.Rows; r++ {
-		s.Faults[r], s.Restored[r] = 0, false
-		s.Value[r] = s.Measured[r]
-		if math.IsNaN(s.Value[r]) {
+	n := j.Rows
+	copy(s.Value[:n], s.Measured[:n])
+	clear(s.Faults[:n])
+	clear(s.Restored[:n])
+	for r, missed := range s.Missed[:n] {
+		switch {
+		case missed == 0:
+			s.Verdict[r] = rules.Accepted
+		case missed.Has(rules.Missing):
 			s.Verdict[r] = rules.Absent
-			continue
+		default:
+			s.Verdict[r] = testsEffect(s, plan.series[i].zeroAllowance, j.ApparentZenithDeg[r], r).Verdict()
 		}
-		s.Verdict[r] = testsEffect(s, plan.series[i].zeroAllowance, j.ApparentZenithDeg[r], r).Verdict()
 	}
 }
 
@@ -49,9 +54,6 @@ func settleTests(plan *Plan, j *Judged, i int) {
 // off nothing, as long as the zero offset that the class may have explains it.
 func testsEffect(s *Series, zeroAllowance, apparentZenithDeg float64, r int) rules.Effect {
 	missed := s.Missed[r]
-	if missed == 0 {
-		return rules.NoEffect
-	}
 	const special = rules.TestSet(1<<rules.Closure | 1<<rules.NightZero)
 	effect := rules.TestsEffect(missed &^ special)
 	if missed.Has(rules.Closure) {

@@ -32,7 +32,7 @@ func testsOf(q rules.Quantity) rules.TestSet {
 func (p *Plan) Prepare(j *Judged, block *minute.Block, from, to int) {
 	copy(j.Records[from:to], block.Records[from:to])
 	for i := range p.series {
-		p.series[i].convert(&j.Series[i], block, from, to)
+		p.series[i].convert(&j.Series[i], block, p.nothing, from, to)
 	}
 	for i := range p.series {
 		p.singleTests(j, &p.series[i], &j.Series[i], block, from, to)
@@ -40,70 +40,118 @@ func (p *Plan) Prepare(j *Judged, block *minute.Block, from, to int) {
 	p.pairTests(j, from, to)
 }
 
-// singleTests runs what needs one series alone.
+// singleTests runs what needs one series alone. It begins the rows' sets of tests.
 func (p *Plan) singleTests(j *Judged, s *seriesPlan, out *Series, block *minute.Block, from, to int) {
 	l := &p.Station.Limits
 	expected := p.layout.SamplesExpected()
 	col := &block.Columns[s.signal]
-	air := p.airColumn(j)
 	low, high := math.NaN(), math.NaN()
 	if s.instrument != nil {
 		low, high = s.instrument.Input.SignalMin, s.instrument.Input.SignalMax
 	}
+	var n notes
 	for r := from; r < to; r++ {
-		v := out.Value[r]
-		sun := &j.sun.rows[r]
-		if math.IsNaN(v) {
-			out.set(rules.Missing, r, rules.Miss)
-			if out.marked[r] {
-				out.set(rules.Signal, r, rules.Miss)
-			} else {
-				out.set(rules.Signal, r, rules.NoValue)
-			}
-			for _, t := range [...]rules.Test{rules.Sampling, rules.Clock, rules.Conflict, rules.Possible, rules.Rare, rules.NightZero} {
-				out.set(t, r, rules.NoValue)
-			}
-			continue
+		n = notes{}
+		if out.Measured[r] != out.Measured[r] {
+			n.absent(out, r)
+		} else {
+			n.note(out, rules.Missing, r, rules.Pass)
+			n.note(out, rules.Sampling, r, limit.Samples(col.N[r], expected, l))
+			n.note(out, rules.Clock, r, limit.Clock(block.Ahead[r]))
+			n.note(out, rules.Conflict, r, limit.Conflict(col.Conflict[r]))
+			n.note(out, rules.Signal, r, limit.Signal(col.Mean[r], low, high))
 		}
-		out.set(rules.Missing, r, rules.Pass)
-		out.set(rules.Sampling, r, limit.Samples(col.N[r], expected, l))
-		out.set(rules.Clock, r, limit.Clock(block.Ahead[r]))
-		out.set(rules.Conflict, r, limit.Conflict(col.Conflict[r]))
-		signal := limit.Signal(col.Mean[r], low, high)
-		if out.bodyC != nil && (limit.BodyTemperature(out.bodyC[r], air[r], l) == rules.Miss ||
-			limit.BodyTemperature(out.domeC[r], air[r], l) == rules.Miss) {
-			signal = rules.Miss
-		}
-		out.set(rules.Signal, r, signal)
-		p.valueLimits(s, out, r, v, sun)
+		out.Missed[r], out.Passed[r] = n.missed, n.passed
+	}
+	if out.bodyC != nil {
+		p.bodyTests(j, out, from, to)
+	}
+	p.valueLimits(j, s, out, from, to)
+}
+
+// notes are the sets of one row while they are being made.
+type notes struct{ missed, passed rules.TestSet }
+
+// note is Series.set for a test that every series has.
+func (n *notes) note(out *Series, t rules.Test, r int, o rules.Outcome) {
+	out.Outcomes[t][r] = o
+	switch o {
+	case rules.Pass:
+		n.passed |= t.Of()
+	case rules.Miss:
+		n.missed |= t.Of()
 	}
 }
 
-// valueLimits holds one value against the limits of its own quantity.
-func (p *Plan) valueLimits(s *seriesPlan, out *Series, r int, v float64, sun *limit.Sun) {
+// absent notes that there is no value.
+func (n *notes) absent(out *Series, r int) {
+	for _, t := range [...]rules.Test{rules.Sampling, rules.Clock, rules.Conflict} {
+		out.Outcomes[t][r] = rules.NoValue
+	}
+	n.note(out, rules.Missing, r, rules.Miss)
+	signal := rules.NoValue
+	if out.marked[r] {
+		signal = rules.Miss
+	}
+	n.note(out, rules.Signal, r, signal)
+}
+
+// bodyTests holds a pyrgeometer's case and dome against the air; what cannot be spoils its signal.
+func (p *Plan) bodyTests(j *Judged, out *Series, from, to int) {
+	l := &p.Station.Limits
+	air := p.airColumn(j)
+	for r := from; r < to; r++ {
+		if out.Measured[r] == out.Measured[r] && (limit.BodyTemperature(out.bodyC[r], air[r], l) == rules.Miss ||
+			limit.BodyTemperature(out.domeC[r], air[r], l) == rules.Miss) {
+			out.Passed[r] &^= rules.Signal.Of()
+			out.set(rules.Signal, r, rules.Miss)
+		}
+	}
+}
+
+// valueLimits holds the values against the limits of their own quantity.
+func (p *Plan) valueLimits(j *Judged, s *seriesPlan, out *Series, from, to int) {
 	l := &p.Station.Limits
 	switch q := s.quantity; q {
 	case rules.Global, rules.Direct, rules.Diffuse, rules.Reflected:
-		out.set(rules.Possible, r, limit.WithinSun(v, math.Min(l.Possible[q].Low, -s.zeroAllowance), l.Possible[q], sun))
-		out.set(rules.Rare, r, limit.WithinSun(v, math.Min(l.Rare[q].Low, -s.zeroAllowance), l.Rare[q], sun))
-		out.set(rules.NightZero, r, limit.NightZero(v, -l.Rare[q].Low, sun, l))
+		p.sunLimit(j, out, rules.Possible, math.Min(l.Possible[q].Low, -s.zeroAllowance), l.Possible[q], from, to)
+		p.sunLimit(j, out, rules.Rare, math.Min(l.Rare[q].Low, -s.zeroAllowance), l.Rare[q], from, to)
+		p.nightZero(j, out, -l.Rare[q].Low, from, to)
 	case rules.UV:
-		out.set(rules.Possible, r, limit.WithinSun(v, l.PossibleUV.Low, l.PossibleUV, sun))
-		out.set(rules.NightZero, r, limit.NightZero(v, -l.PossibleUV.Low, sun, l))
+		p.sunLimit(j, out, rules.Possible, l.PossibleUV.Low, l.PossibleUV, from, to)
+		p.nightZero(j, out, -l.PossibleUV.Low, from, to)
 	case rules.PAR:
-		out.set(rules.Possible, r, limit.WithinSun(v, l.PossiblePAR.Low, l.PossiblePAR, sun))
-		out.set(rules.NightZero, r, limit.NightZero(v, -l.PossiblePAR.Low, sun, l))
+		p.sunLimit(j, out, rules.Possible, l.PossiblePAR.Low, l.PossiblePAR, from, to)
+		p.nightZero(j, out, -l.PossiblePAR.Low, from, to)
 	case rules.LWDown, rules.LWUp:
-		out.set(rules.Possible, r, limit.WithinBand(v, l.PossibleLW[q-rules.LWDown]))
-		out.set(rules.Rare, r, limit.WithinBand(v, l.RareLW[q-rules.LWDown]))
+		bandLimit(out, rules.Possible, l.PossibleLW[q-rules.LWDown], from, to)
+		bandLimit(out, rules.Rare, l.RareLW[q-rules.LWDown], from, to)
 	case rules.AirTemperature:
-		out.set(rules.Possible, r, limit.WithinBand(v, rules.Band{Low: l.AirTemperatureMinC, High: l.AirTemperatureMaxC}))
+		bandLimit(out, rules.Possible, rules.Band{Low: l.AirTemperatureMinC, High: l.AirTemperatureMaxC}, from, to)
 	case rules.Humidity:
-		out.set(rules.Possible, r, limit.WithinBand(v, rules.Band{Low: 0, High: 105})) // sensors read up to 5 % high in fog (common practice)
+		bandLimit(out, rules.Possible, rules.Band{Low: 0, High: 105}, from, to) // sensors read up to 5 % high in fog (common practice)
 	case rules.Pressure:
-		out.set(rules.Possible, r, limit.WithinBand(v, rules.Band{Low: 400, High: 1100})) // extremes at stations of 0 to 7000 m (common practice)
+		bandLimit(out, rules.Possible, rules.Band{Low: 400, High: 1100}, from, to) // extremes at stations of 0 to 7000 m (common practice)
 	case rules.WindSpeed:
-		out.set(rules.Possible, r, limit.WithinBand(v, rules.Band{Low: 0, High: 115})) // strongest gust measured is 113 m/s (from memory)
+		bandLimit(out, rules.Possible, rules.Band{Low: 0, High: 115}, from, to) // strongest gust measured is 113 m/s (from memory)
+	}
+}
+
+func (p *Plan) sunLimit(j *Judged, out *Series, t rules.Test, lowWm2 float64, sl rules.SunLimit, from, to int) {
+	for r := from; r < to; r++ {
+		out.set(t, r, limit.WithinSun(out.Measured[r], lowWm2, sl, &j.sun.rows[r]))
+	}
+}
+
+func (p *Plan) nightZero(j *Judged, out *Series, quietWm2 float64, from, to int) {
+	for r := from; r < to; r++ {
+		out.set(rules.NightZero, r, limit.NightZero(out.Measured[r], quietWm2, &j.sun.rows[r], &p.Station.Limits))
+	}
+}
+
+func bandLimit(out *Series, t rules.Test, band rules.Band, from, to int) {
+	for r := from; r < to; r++ {
+		out.set(t, r, limit.WithinBand(out.Measured[r], band))
 	}
 }
 
@@ -142,7 +190,7 @@ func setPair(s *Series, t rules.Test, r int, o rules.Outcome) {
 	if s == nil {
 		return
 	}
-	if math.IsNaN(s.Value[r]) {
+	if s.Measured[r] != s.Measured[r] {
 		o = rules.NoValue
 	} else if o == rules.NoValue {
 		o = rules.NoPartner
@@ -155,7 +203,7 @@ func partner(s *Series, r int) float64 {
 	if s == nil || s.Missed[r]&(rules.Signal.Of()|rules.Possible.Of()) != 0 {
 		return math.NaN()
 	}
-	return s.Value[r]
+	return s.Measured[r]
 }
 
 func (p *Plan) primarySeries(j *Judged, q rules.Quantity) *Series {
@@ -168,7 +216,7 @@ func (p *Plan) primarySeries(j *Judged, q rules.Quantity) *Series {
 // airColumn is the air temperature, degrees C, all NaN where the station has none.
 func (p *Plan) airColumn(j *Judged) []float64 {
 	if s := p.primarySeries(j, rules.AirTemperature); s != nil {
-		return s.Value
+		return s.Measured
 	}
 	return p.nothing
 }
