@@ -24,6 +24,8 @@ type Judger struct {
 	watcher *fault.Watcher
 	runs    []limit.Run // one a series
 	minute  fault.Minute
+
+	global, direct, diffuse []float64 // measured by the primaries on the day begun; without a value where there is none
 }
 
 // NewJudger makes a judger that stands at the end of the last day of history. History is ascending and may be longer than
@@ -43,6 +45,11 @@ func (j *Judger) Begin(day int64) *Judged {
 // prepared again if the caller then uses AdvancePrepared.
 func (j *Judger) BeginWith(judged *Judged) *Judged {
 	j.judged, j.block = judged, nil
+	j.global, j.direct, j.diffuse = j.measured(rules.Global), j.measured(rules.Direct), j.measured(rules.Diffuse)
+	j.minute = fault.Minute{BodyC: math.NaN(), NetWm2: math.NaN()}
+	for q := range j.minute.Value {
+		j.minute.Value[q] = math.NaN()
+	}
 	var facts []fault.DayFacts
 	var carry *fault.Carry
 	carriedFrom := int64(0)
@@ -83,18 +90,25 @@ func (j *Judger) AdvancePrepared(block *minute.Block) {
 	}
 }
 
+func (j *Judger) measured(q rules.Quantity) []float64 {
+	if s := j.plan.primarySeries(j.judged, q); s != nil {
+		return s.Measured
+	}
+	return j.plan.nothing
+}
+
 // sequence is the part of a minute that needs the minutes before it.
 func (j *Judger) sequence(r int) {
-	p, l := j.plan, &j.plan.Station.Limits
+	l := &j.plan.Station.Limits
 	sun := &j.judged.sun.rows[r]
-	for i := range p.series {
+	for i := range j.judged.Series {
 		s := &j.judged.Series[i]
 		j.runs[i].Next(s.Measured[r])
 		if s.Outcomes[rules.Stuck] != nil {
 			s.set(rules.Stuck, r, limit.Stuck(&j.runs[i], s.Quantity, sun, l))
 		}
-		if s.Outcomes[rules.Spike] != nil {
-			s.set(rules.Spike, r, rules.NoHistory) // until the next minute is there
+		if spike := s.Outcomes[rules.Spike]; spike != nil {
+			spike[r] = rules.NoHistory // until the next minute is there
 			if r >= 2 {
 				s.set(rules.Spike, r-1, j.spike(s, r-1))
 			}
@@ -103,20 +117,24 @@ func (j *Judger) sequence(r int) {
 	j.watch(r)
 }
 
-// spike holds row r against its neighbours.
+// spike holds row r against its neighbours. It looks at what was measured: the value may have been restored meanwhile, and what is judged
+// may not depend on that.
 func (j *Judger) spike(s *Series, r int) rules.Outcome {
 	l := &j.plan.Station.Limits
-	v := s.Measured // the value may have been restored meanwhile, and what is judged may not depend on that
+	v := s.Measured[r-1 : r+2 : r+2]
+	nan := math.NaN()
 	if s.Quantity.Longwave() {
-		nan := math.NaN()
-		return limit.Spike(v[r-1], v[r], v[r+1], nan, nan, nan, l.SpikeLWWm2, false)
+		return limit.Spike(v[0], v[1], v[2], nan, nan, nan, l.SpikeLWWm2, false)
 	}
-	return limit.Spike(v[r-1], v[r], v[r+1], j.expected(s.Quantity, r-1), j.expected(s.Quantity, r), j.expected(s.Quantity, r+1), l.SpikeWm2, true)
+	if o := limit.Spike(v[0], v[1], v[2], nan, nan, nan, l.SpikeWm2, true); o != rules.NoPartner {
+		return o // no partner is asked for
+	}
+	return limit.Spike(v[0], v[1], v[2], j.expected(s.Quantity, r-1), j.expected(s.Quantity, r), j.expected(s.Quantity, r+1), l.SpikeWm2, true)
 }
 
 // expected is what the other two of global, direct and diffuse say that this one should be; NaN where they do not.
 func (j *Judger) expected(q rules.Quantity, r int) float64 {
-	g, b, d := measuredOf(j.plan, j.judged, rules.Global, r), measuredOf(j.plan, j.judged, rules.Direct, r), measuredOf(j.plan, j.judged, rules.Diffuse, r)
+	g, b, d := j.global[r], j.direct[r], j.diffuse[r]
 	mu := j.judged.CosZenith[r]
 	switch q {
 	case rules.Global:
@@ -135,24 +153,18 @@ func (j *Judger) expected(q rules.Quantity, r int) float64 {
 func (j *Judger) watch(r int) {
 	m, d := &j.minute, j.judged
 	m.Minute = d.Day*minute.PerDay + int64(r)
-	m.ZenithDeg, m.AzimuthDeg, m.Mu = d.ApparentZenithDeg[r], d.AzimuthDeg[r], math.Max(d.CosZenith[r], 0)
+	m.ZenithDeg, m.AzimuthDeg, m.Mu = d.ApparentZenithDeg[r], d.AzimuthDeg[r], d.CosZenith[r]
 	m.SaWm2 = d.ExtraterrestrialWm2[r]
 	m.Hidden = d.sun.rows[r].Hidden
 	m.Records = int(d.Records[r])
 	m.AnyConflict = false
-	for q := range m.Value {
-		m.Value[q], m.Marked[q], m.Run[q] = math.NaN(), false, 0
-	}
-	m.BodyC, m.NetWm2 = math.NaN(), math.NaN()
-	for i := range j.plan.series {
+	for i := range d.Series {
 		s := &d.Series[i]
 		if !s.Primary {
 			continue
 		}
 		m.Value[s.Quantity], m.Marked[s.Quantity], m.Run[s.Quantity] = s.Measured[r], s.marked[r], j.runs[i].Count
-		if s.Missed[r].Has(rules.Conflict) {
-			m.AnyConflict = true
-		}
+		m.AnyConflict = m.AnyConflict || s.Missed[r].Has(rules.Conflict)
 		if s.Quantity == rules.LWDown {
 			m.BodyC, m.NetWm2 = s.bodyC[r], s.net[r]
 		}

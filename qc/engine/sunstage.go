@@ -58,18 +58,33 @@ func (s *sunDay) fill(p *Plan, j *Judged, unixDay int64) {
 	day := sun.NewDay(unixDay, p.site)
 	for i := range s.rows {
 		at := day.AtMinute(float64(60*i + 30))
-		apparent := sun.ApparentZenith(at.ZenithDeg, p.pressureHPa, refractionTemperatureC)
-		cosApparent := at.CosZenith
-		if at.ZenithDeg > 45 { // nearer the zenith refraction changes the cosine by less than 2e-4 of it
-			cosApparent = exact.Cos(apparent * (math.Pi / 180))
-		}
 		sa := p.Station.Limits.SolarConstantWm2 / (at.DistanceAU * at.DistanceAU)
-		hidden := p.horizon != nil && p.horizon.Hides(apparent, at.AzimuthDeg)
-		s.rows[i] = limit.SunOf(roundAngle(at.ZenithDeg), at.CosZenith, roundAngle(apparent), cosApparent, sa, hidden)
+		apparent, beamMu := p.apparent(&at)
+		hidden := p.horizon != nil && (apparent > belowAnyMaskDeg || p.horizon.Hides(apparent, at.AzimuthDeg))
+		s.rows[i] = limit.SunOf(roundAngle(at.ZenithDeg), at.CosZenith, roundAngle(apparent), beamMu, sa, hidden)
 		j.ZenithDeg[i] = s.rows[i].ZenithDeg
 		j.ApparentZenithDeg[i] = s.rows[i].ApparentZenithDeg
 		j.AzimuthDeg[i] = roundBearing(at.AzimuthDeg)
 		j.CosZenith[i] = s.rows[i].BeamMu
 		j.ExtraterrestrialWm2[i] = RoundIrradiance(sa)
 	}
+}
+
+const (
+	// unrefractedZenithDeg is where refraction is not defined any more: see sun.Refraction.
+	unrefractedZenithDeg = 91
+	// belowAnyMaskDeg is the zenith angle under which no horizon mask can reach: its least elevation is -10 degrees.
+	belowAnyMaskDeg = 100
+)
+
+// apparent gives the zenith angle with refraction, degrees, and its cosine, nothing below the horizon.
+func (p *Plan) apparent(at *sun.FastPosition) (zenithDeg, beamMu float64) {
+	if at.ZenithDeg > unrefractedZenithDeg {
+		return at.ZenithDeg, 0
+	}
+	zenithDeg = sun.ApparentZenith(at.ZenithDeg, p.pressureHPa, refractionTemperatureC)
+	if at.ZenithDeg > 45 { // nearer the zenith refraction changes the cosine by less than 2e-4 of it
+		return zenithDeg, exact.Cos(zenithDeg * (math.Pi / 180))
+	}
+	return zenithDeg, at.CosZenith
 }
