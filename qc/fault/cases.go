@@ -5,6 +5,9 @@ import "fluxwarden/rules"
 // caseCount is how many cases catalogueOfCases has. The order is fixed: a carry names them by number.
 const caseCount = 30
 
+// quietDays is how long an episode that only sunlit minutes can bear out may go without a word for it.
+const quietDays = 36 * 60
+
 var threeShortwave = []rules.Quantity{rules.Global, rules.Direct, rules.Diffuse}
 
 // catalogueOfCases lists what can be told from single minutes, in the order in which one minute is asked.
@@ -25,13 +28,13 @@ func init() {
 		{kind: rules.SignalFrozen, quantity: rules.Diffuse, raise: 5, most: 8, evidence: signalFrozen, number: "value", unit: "W/m2"},
 		{kind: rules.SignalFrozen, quantity: rules.LWDown, raise: 5, most: 8, evidence: longwaveFrozen, number: "value", unit: "W/m2"},
 		{kind: rules.SignalFrozen, quantity: rules.LWUp, raise: 5, most: 8, evidence: longwaveFrozen, number: "value", unit: "W/m2"},
-		{kind: rules.PolarityReversed, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
-		{kind: rules.PolarityReversed, quantity: rules.Direct, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
-		{kind: rules.PolarityReversed, quantity: rules.Diffuse, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
-		{kind: rules.UnitSlip, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
-		{kind: rules.UnitSlip, quantity: rules.Direct, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
-		{kind: rules.UnitSlip, quantity: rules.Diffuse, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
-		{kind: rules.ChannelsSwapped, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: channelsSwapped, number: "diffuse_above_global", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quiet: quietDays, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quiet: quietDays, quantity: rules.Direct, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quiet: quietDays, quantity: rules.Diffuse, needs: threeShortwave, raise: 5, most: 10, evidence: polarityReversed, number: "value", unit: "W/m2"},
+		{kind: rules.UnitSlip, quiet: quietDays, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
+		{kind: rules.UnitSlip, quiet: quietDays, quantity: rules.Direct, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
+		{kind: rules.UnitSlip, quiet: quietDays, quantity: rules.Diffuse, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
+		{kind: rules.ChannelsSwapped, quiet: quietDays, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: channelsSwapped, number: "diffuse_above_global", unit: "W/m2"},
 		{kind: rules.PointingLost, quantity: rules.Direct, instrument: Tracker, needs: threeShortwave, raise: 6, most: 24, quiet: 1800, evidence: pointingLost, number: "global_over_clear_sky", unit: "1"},
 		{kind: rules.ShadeOff, quantity: rules.Diffuse, needs: threeShortwave, raise: 6, most: 15, quiet: 2880, evidence: shadeOff, number: "share_of_beam_on_diffuse", unit: "1"},
 		{kind: rules.Noise, quantity: rules.Global, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},

@@ -53,8 +53,11 @@ func (w *Watcher) addJump(j jump) {
 		return
 	}
 	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(o jump) bool {
-		return o.Score <= 0 && j.At-o.At > jumpDaysWatch*1440 && !w.clockOpen(o)
+		return o.Score <= 0 && (j.At-o.At > jumpDaysWatch*1440 || o.Against > 5 && j.At-o.At > 3*1440) && !w.clockOpen(o)
 	})
+	if w.putRight(j) {
+		return
+	}
 	if len(w.slow.Jumps) >= jumpsMost {
 		for i := range w.slow.Jumps {
 			if w.slow.Jumps[i].Score <= 0 {
@@ -66,6 +69,21 @@ func (w *Watcher) addJump(j jump) {
 	if len(w.slow.Jumps) < jumpsMost {
 		w.slow.Jumps = append(w.slow.Jumps, j)
 	}
+}
+
+// putRight ends the open episode if the jump takes back the shift that it names: somebody has set the clock.
+func (w *Watcher) putRight(j jump) bool {
+	for i := range w.slow.Jumps {
+		o := w.slow.Jumps[i]
+		if d := o.Shift + j.Shift; d >= -1 && d <= 1 && (w.clockOpen(o) || j.At-o.At < jumpDaysWatch*1440 && o.Score > 0) {
+			if w.clockOpen(o) {
+				w.finish(w.openIndex(Logger, rules.ClockShift), j.At)
+			}
+			w.slow.Jumps = slices.Delete(w.slow.Jumps, i, i+1)
+			return true
+		}
+	}
+	return false
 }
 
 func (w *Watcher) clockOpen(j jump) bool {
@@ -80,6 +98,9 @@ func (w *Watcher) watchClock(v *view) {
 	}
 	g, b, d := v.g(), v.b(), v.d()
 	if math.IsNaN(g+b+d) || b < 150 {
+		return
+	}
+	if i := w.imbalanceEpisode(); w.otherCause() && w.openIndex(Logger, rules.ClockShift) < 0 || i >= 0 && w.slow.Imbalance.Since-w.slow.Jumps[len(w.slow.Jumps)-1].At > 3*1440 {
 		return
 	}
 	c := w.base.closureAt(v)
@@ -98,6 +119,9 @@ func (w *Watcher) watchClock(v *view) {
 			if asStamped < 1.5*room {
 				j.Against++
 			}
+		case asStamped < room && shifted > 1.5*room:
+			odds = -0.05
+			j.Against++
 		default:
 			continue
 		}
@@ -115,6 +139,13 @@ func (w *Watcher) clockEpisode(v *view, j *jump) {
 	open := w.openIndex(Logger, rules.ClockShift)
 	evidence := []Evidence{{"shift", float64(j.Shift), "min"}, {"minutes", float64(j.For), "min"}}
 	switch {
+	case open < 0 && j.Score >= jumpRaise && w.imbalanceEpisode() >= 0:
+		// what seemed an instrument's was the clock's
+		e := &w.open[w.imbalanceEpisode()]
+		e.Instrument, e.Kind, e.Also, e.Advice = Logger, rules.ClockShift, nil, rules.ClockShift.Entry().Advice
+		e.From, e.Raised, e.Evidence = w.hindsight(j.At), v.minute, evidence
+		e.Rev++
+		w.slow.Episode, w.slow.Imbalance = "", imbalance{}
 	case open < 0 && j.Score >= jumpRaise:
 		w.raise(Episode{Instrument: Logger, Kind: rules.ClockShift, Severity: rules.Act, From: w.hindsight(j.At), Raised: v.minute,
 			Confidence: confidence(2 * j.Score.Float()), Evidence: evidence})

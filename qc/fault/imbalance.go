@@ -229,7 +229,9 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 	for i := range x {
 		x[i] *= weight
 	}
-	im.Sums.add(x, delta*weight)
+	if odds > 0 || w.imbalanceEpisode() < 0 { // once it is named, what does not bear it out may be its end
+		im.Sums.add(x, delta*weight)
+	}
 	if im.N <= 60 {
 		im.First.add(delta)
 	}
@@ -256,7 +258,7 @@ func (w *Watcher) imbalanceScore(v *view, odds float64) {
 		*im = imbalance{}
 	case open < 0 && im.Score >= imbalanceRaise && odds > 0:
 		w.raiseImbalance(v)
-	case open >= 0 && im.N%30 == 0:
+	case open >= 0 && im.N%30 == 0 && odds > 0:
 		w.renameImbalance(open, v)
 	}
 }

@@ -27,6 +27,7 @@ const (
 	dullScatter     = 0.01  // of global over diffuse under thick cloud, a day
 	globalScatter   = 0.03  // of global over the learnt clear sky
 	beamScatter     = 0.08  // of the beam over the learnt clear sky
+	leanMost        = 6.0   // degrees that an instrument on its feet can well be out of level
 )
 
 // classify names the likeliest cause of the imbalance so far.
@@ -36,6 +37,9 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 	gainG, fitG := im.fitOne(0)
 	gainP, fitP := im.fitOne(1)
 	tiltE, tiltN, fitT := im.fitTilt()
+	if lean := math.Sqrt(float64(tiltE*tiltE)+float64(tiltN*tiltN)) * 180 / math.Pi; lean > leanMost {
+		fitT += float64((lean - leanMost) * (lean - leanMost))
+	}
 	gainD, fitD := im.fitDiffuse()
 	list := []cause{
 		{kind: rules.SensitivityWrong, instrument: g, model: model{0, Number(gainG), 0}, misfit: fitG + im.elsewhere(gainG, gainG, 0),

@@ -5,6 +5,9 @@ import "math"
 // polarityReversed: the value is what its partners ask for with the sign turned round.
 func polarityReversed(w *Watcher, c *faultCase, v *view) hint {
 	x, want := v.value[c.quantity], v.expectedWithout(c.quantity)
+	if x > 20 {
+		return hint{odds: -2}
+	}
 	if !v.sunUp || math.IsNaN(x) || math.IsNaN(want) {
 		return nothing
 	}
@@ -14,8 +17,6 @@ func polarityReversed(w *Watcher, c *faultCase, v *view) hint {
 		return nothing
 	case x < -20 && math.Abs(x+want) < room:
 		return hint{0.5, x}
-	case x > 20:
-		return hint{odds: -2}
 	}
 	return nothing
 }
