@@ -95,7 +95,8 @@ func limitColumns(st *rules.Station) (names []string, bounds func(s *limit.Sun) 
 	return names, func(s *limit.Sun) []float64 {
 		var out []float64
 		for _, g := range sunGroups {
-			for _, x := range g.limits {
+			for k := range g.limits {
+				x := &g.limits[k]
 				out = append(out, x.Low, limit.SunMax(x, s))
 			}
 		}
