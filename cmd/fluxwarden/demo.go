@@ -172,11 +172,13 @@ func (d *demo) run() int {
 	shown.begin()
 	beat := time.NewTicker(demoBeat)
 	defer beat.Stop()
-	begun := time.Now()
+	last := time.Now()
 	var err error
 	for ctx.Err() == nil && err == nil {
-		until := demoBegins.Add(time.Duration(float64(time.Since(begun)) * d.options.speed))
-		err = d.senders.sendUntil(ctx, minute.Stamp(until.UnixMicro()))
+		now := time.Now()
+		passed := min(now.Sub(last), time.Second) // where the disk cannot keep up the demo is slower, and owes nothing
+		last = now
+		err = d.senders.sendUntil(ctx, d.clock.at()+minute.Stamp(passed.Seconds()*d.options.speed*minute.MicrosPerSecond))
 		shown.update()
 		select {
 		case <-ctx.Done():
@@ -190,9 +192,13 @@ func (d *demo) run() int {
 	return d.finish(shown, err)
 }
 
+// settle is how long the last readings may take from the journal to the worker.
+const settle = 500 * time.Millisecond
+
 // finish stops everything, has what was judged written, and says what there is.
 func (d *demo) finish(shown *demoScreen, err error) int {
 	d.senders.close()
+	time.Sleep(settle)
 	err = errors.Join(err, d.daemon.Stop(), d.logFile.Close())
 	shown.end()
 	if err != nil {
@@ -201,7 +207,7 @@ func (d *demo) finish(shown *demoScreen, err error) int {
 	if d.board.total() == 0 {
 		return complain(exitProblem, fmt.Errorf("demo: no minute was judged; let it run longer, or see its log %s", d.places.log))
 	}
-	// All that the journal held is committed.
+	// The demo begins anew each time: what it judged is in the archive, and its journal is of no more use.
 	if err := os.RemoveAll(d.places.journal); err != nil {
 		return complain(exitProblem, fmt.Errorf("demo: %w; remove it by hand, the archive is whole", err))
 	}

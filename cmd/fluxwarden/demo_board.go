@@ -6,7 +6,6 @@ import (
 	"sync"
 	"time"
 
-	"fluxwarden/cmd/fluxwarden/daemon"
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
@@ -136,11 +135,11 @@ func (r *demoRow) share(v rules.Verdict) float64 {
 	return 100 * float64(r.verdicts[v]) / float64(all)
 }
 
-// demoWords says what an episode means; of one that is over, no more than that.
+// demoWords says what an episode is.
 func demoWords(e *demoEvent) string {
-	if e.episode.To == fault.Open {
-		return e.station + " " + daemon.InWords(&e.episode)
-	}
 	at := func(minuteUTC int64) string { return time.Unix(60*minuteUTC, 0).UTC().Format("15:04Z") }
+	if e.episode.To == fault.Open {
+		return fmt.Sprintf("%s %s: %s since %s", e.station, e.episode.Instrument, e.episode.Kind.Entry().Title, at(e.episode.From))
+	}
 	return fmt.Sprintf("%s %s: %s is over, from %s to %s", e.station, e.episode.Instrument, e.episode.Kind.Entry().Title, at(e.episode.From), at(e.episode.To))
 }

@@ -12,6 +12,7 @@ import (
 	"golang.org/x/term"
 
 	"fluxwarden/ingest/gate"
+	"fluxwarden/qc/fault"
 	"fluxwarden/rules"
 )
 
@@ -88,6 +89,9 @@ func (s *demoScreen) report(rows []demoRow, events []demoEvent) {
 	}
 	for i := range events {
 		fmt.Fprintln(s.out, "  "+demoWords(&events[i]))
+		if e := &events[i].episode; e.To == fault.Open && e.Advice != "" {
+			fmt.Fprintln(s.out, "    "+e.Advice)
+		}
 	}
 	if now := s.d.clock.Now(); now.Sub(s.reported) >= reportEvery {
 		s.reported = now.Truncate(reportEvery)
@@ -132,7 +136,7 @@ func (s *demoScreen) block(rows []demoRow) []string {
 			if e.episode.Severity == rules.Act {
 				code = "31"
 			}
-			lines = append(lines, s.paint(code, s.cut("  "+demoWords(&e))))
+			lines = append(lines, s.paint(code, s.cut("  "+demoWords(&e))), s.cut("    "+e.episode.Advice))
 		}
 	}
 	if wrong == 0 {
