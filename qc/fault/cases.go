@@ -46,4 +46,11 @@ func init() {
 		{kind: rules.ZeroOffset, quantity: rules.Diffuse, raise: 6, most: 9, evidence: zeroOffset, number: "offset", unit: "W/m2"},
 		{kind: rules.DomeWet, quantity: rules.LWDown, raise: 6, most: 9, quiet: 720, evidence: wetPyrgeometer, number: "net", unit: "W/m2"},
 	}
+	for i := range catalogueOfCases {
+		catalogueOfCases[i].index = i
+	}
 }
+
+// onlyBySun are the kinds that a minute without the sun says nothing of.
+const onlyBySun = rules.FaultSet(1<<rules.PolarityReversed | 1<<rules.UnitSlip | 1<<rules.ChannelsSwapped | 1<<rules.PointingLost | 1<<rules.ShadeOff |
+	1<<rules.RangeClipped)

@@ -21,7 +21,7 @@ func wetPyrgeometer(w *Watcher, c *faultCase, v *view) hint {
 	}
 	wet := net > 0.25*deep
 	sunny := v.sunUp && v.b() > 0.6*v.clear[rules.Direct] && v.b() > 150
-	s := &w.cases[caseIndex(c)]
+	s := &w.cases[c.index]
 	switch {
 	case wet && sunny:
 		return hint{0.3, net}
@@ -37,7 +37,7 @@ func wetPyrgeometer(w *Watcher, c *faultCase, v *view) hint {
 
 // jumpedTo says whether the net longwave stood far below until a few minutes ago and has come up at once.
 func (w *Watcher) jumpedTo(net, from float64) bool {
-	p, o := w.netLongwave(&w.before[0]), w.netLongwave(&w.before[2])
+	p, o := w.netLongwave(w.prev(0)), w.netLongwave(w.prev(2))
 	return p < from && o < from && math.Abs(p-o) < 8 && net-p > 25 && net-p > 3*math.Abs(p-o)
 }
 

@@ -101,8 +101,8 @@ func (f *gatherFacts) sky(w *Watcher, v *view) {
 
 // smooth says whether the last minutes all had much beam and moved little, as under a clear sky.
 func (w *Watcher) smooth(v *view) bool {
-	for i := range w.before {
-		p := &w.before[i]
+	for i := range historyViews {
+		p := w.prev(i)
 		if p.minute != v.minute-1-int64(i) || !(math.Abs(p.b()-v.b()) < 0.015*v.b()*float64(i+1)) {
 			return false
 		}

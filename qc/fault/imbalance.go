@@ -179,8 +179,8 @@ func (w *Watcher) dullStep(v *view, delta float64) {
 // moved is by how much the sum has changed over the last minutes, W/m2: at the edge of a cloud instruments do not follow alike.
 func (w *Watcher) moved(v *view) float64 {
 	most := 0.0
-	for i := range w.before[:2] {
-		if p := &w.before[i]; p.minute >= v.minute-2 && !math.IsNaN(p.sum) {
+	for i := range 2 {
+		if p := w.prev(i); p.minute >= v.minute-2 && !math.IsNaN(p.sum) {
 			most = math.Max(most, math.Abs(v.sum-p.sum))
 		}
 	}

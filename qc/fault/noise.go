@@ -10,8 +10,8 @@ import (
 // and diffuse must have gone smoothly for some minutes before and after: at the edge of a cloud the three do not follow alike. At night
 // there is nothing to go up and down. It is told two minutes late.
 func noise(w *Watcher, c *faultCase, v *view) hint {
-	at := &w.before[1]
-	if at.minute != v.minute-2 || w.before[5].minute != v.minute-6 {
+	at := w.prev(1)
+	if at.minute != v.minute-2 || w.prev(5).minute != v.minute-6 {
 		return nothing
 	}
 	mine := math.Abs(w.swing(2, c.quantity))
@@ -58,7 +58,7 @@ func (w *Watcher) swing(k int, q rules.Quantity) float64 {
 		if k == 0 {
 			return w.now.value[q]
 		}
-		return w.before[k-1].value[q]
+		return w.prev(k - 1).value[q]
 	}
 	return at(k) - (at(k-1)+at(k+1))/2
 }

@@ -28,8 +28,8 @@ func pointingLost(w *Watcher, c *faultCase, v *view) hint {
 
 // followsClear says whether global moved in the last minutes as the clear sky did.
 func (w *Watcher) followsClear(v *view) bool {
-	for i := range w.before {
-		p := &w.before[i]
+	for i := range historyViews {
+		p := w.prev(i)
 		if p.minute != v.minute-1-int64(i) {
 			return false
 		}

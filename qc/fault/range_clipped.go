@@ -11,7 +11,7 @@ func rangeClipped(w *Watcher, c *faultCase, v *view) hint {
 	}
 	room := v.scale(w)
 	rail := w.railOf(c)
-	s := &w.cases[caseIndex(c)]
+	s := &w.cases[c.index]
 	switch {
 	case v.run[c.quantity] == 2 && s.For > 2 && math.Abs(x-rail) < 0.05 && v.minute-s.Last > 2:
 		return hint{2, x}
@@ -29,18 +29,9 @@ func rangeClipped(w *Watcher, c *faultCase, v *view) hint {
 
 // railOf is the value that the case has stood at, nothing below any value before it has.
 func (w *Watcher) railOf(c *faultCase) float64 {
-	s := &w.cases[caseIndex(c)]
+	s := &w.cases[c.index]
 	if s.For == 0 {
 		return math.Inf(1)
 	}
 	return s.mean()
-}
-
-func caseIndex(c *faultCase) int {
-	for i := range catalogueOfCases {
-		if &catalogueOfCases[i] == c {
-			return i
-		}
-	}
-	return 0
 }

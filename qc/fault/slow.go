@@ -37,7 +37,7 @@ func (w *Watcher) watchSlow(v *view) {
 
 // watchWeather remembers when the sun rose and how humid the hours before were.
 func (w *Watcher) watchWeather(v *view) {
-	if v.mu > 0 && w.before[0].mu <= 0 {
+	if v.mu > 0 && w.prev(0).mu <= 0 {
 		w.slow.Sunrise = v.minute
 	}
 	w.sunrise = w.slow.Sunrise

@@ -32,6 +32,7 @@ var nothing = hint{}
 
 // A faultCase is one kind of fault on one instrument as it can be told from single minutes.
 type faultCase struct {
+	index      int // in catalogueOfCases
 	kind       rules.FaultKind
 	quantity   rules.Quantity // whose primary instrument is suspected
 	instrument string         // Tracker or Logger instead of the instrument; empty otherwise

@@ -5,7 +5,7 @@ import "math"
 // unitSlip: the value follows what its partners ask for at a thousandth or a thousandfold.
 func unitSlip(w *Watcher, c *faultCase, v *view) hint {
 	x, want := v.value[c.quantity], v.expectedWithout(c.quantity)
-	if !math.IsNaN(x) && math.Abs(x) > 5 && math.Abs(x) < 1500 && w.cases[caseIndex(c)].mean() < 0.1 {
+	if !math.IsNaN(x) && math.Abs(x) > 5 && math.Abs(x) < 1500 && w.cases[c.index].mean() < 0.1 {
 		return hint{odds: -2} // a thousandth of what the sun can give is never so much
 	}
 	if !v.sunUp || math.IsNaN(x) || math.IsNaN(want) || want < 60 {

@@ -75,7 +75,7 @@ func (v *view) look(w *Watcher, m *Minute) {
 	if v.mu > evidenceMu {
 		v.expected[rules.Direct] = (v.g()/c - v.d()) / v.mu
 	}
-	before := &w.before[0]
+	before := w.prev(0)
 	v.steady = before.minute == v.minute-1 && math.Abs(v.sum-before.sum) < float64(0.03*v.sum)+3
 }
 
@@ -83,8 +83,8 @@ func (v *view) look(w *Watcher, m *Minute) {
 // on the edge of a cloud, part of what changed within the minute, for instruments do not follow alike.
 func (v *view) scale(w *Watcher) float64 {
 	moved := 0.0
-	for i := range w.before {
-		if p := &w.before[i]; p.minute >= v.minute-2 && !math.IsNaN(p.sum) && !math.IsNaN(v.sum) {
+	for i := range historyViews {
+		if p := w.prev(i); p.minute >= v.minute-2 && !math.IsNaN(p.sum) && !math.IsNaN(v.sum) {
 			moved = math.Max(moved, math.Abs(v.sum-p.sum))
 		}
 	}

@@ -11,18 +11,20 @@ import (
 // A Watcher holds, for one station and one day, how strongly each kind of fault is suspected of each instrument, and turns
 // suspicions that cross the odds into episodes.
 type Watcher struct {
-	setup   *Setup
-	day     int64
-	base    Baseline
-	facts   gatherFacts
-	cases   [caseCount]suspicion
-	open    []Episode
-	closed  []Episode // on this day
-	last    int64     // the last minute with a record; noMinute before the first
-	now     view
-	before  [historyViews]view // the minutes before, newest first
-	slow    SlowCarry
-	sunrise int64
+	setup          *Setup
+	day            int64
+	base           Baseline
+	facts          gatherFacts
+	cases          [caseCount]suspicion
+	open           []Episode
+	closed         []Episode       // on this day
+	last           int64           // the last minute with a record; noMinute before the first
+	now            *view           // the minute in hand, one of ring
+	ring           [ringViews]view // the last minutes
+	head           int             // where now stands in it
+	byDay, byNight caseList        // the cases that the station can have
+	slow           SlowCarry
+	sunrise        int64
 }
 
 const noMinute = int64(-1) << 40
@@ -65,9 +67,11 @@ func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watche
 		}
 		w.slow = carry.Slow.clone()
 	}
-	for i := range w.before {
-		w.before[i].forget()
+	for i := range w.ring {
+		w.ring[i].forget()
 	}
+	w.now = &w.ring[0]
+	w.listCases()
 	return w
 }
 
@@ -84,19 +88,53 @@ func (w *Watcher) Minute(m *Minute) {
 		}
 		w.last = m.Minute
 	}
+	w.head = (w.head + 1) % ringViews
+	w.now = &w.ring[w.head]
 	w.now.look(w, m)
-	if m.Records > 0 {
-		for i := range catalogueOfCases {
-			c := &catalogueOfCases[i]
-			if w.applies(c) {
-				w.step(i, c, c.evidence(w, c, &w.now))
-			}
-		}
-		w.watchSlow(&w.now)
-		w.facts.minute(w, &w.now)
+	if m.Records == 0 {
+		return
 	}
-	copy(w.before[1:], w.before[:historyViews-1])
-	w.before[0] = w.now
+	list := &w.byDay
+	if w.now.night {
+		list = &w.byNight
+	}
+	for _, i := range list.cases[:list.n] {
+		c := &catalogueOfCases[i]
+		w.step(int(i), c, c.evidence(w, c, w.now))
+	}
+	w.watchSlow(w.now)
+	w.facts.minute(w, w.now)
+}
+
+// ringViews holds the minute in hand and historyViews before it; a power of two.
+const ringViews = 8
+
+// prev is the view of k+1 minutes ago.
+func (w *Watcher) prev(k int) *view { return &w.ring[(w.head-1-k+ringViews)%ringViews] }
+
+// A caseList names cases by their place in the catalogue.
+type caseList struct {
+	cases [caseCount]uint8
+	n     int
+}
+
+func (l *caseList) add(i int) {
+	l.cases[l.n] = uint8(i)
+	l.n++
+}
+
+// listCases finds the cases that the station has the instruments for, and those of them that a night can tell anything of.
+func (w *Watcher) listCases() {
+	for i := range catalogueOfCases {
+		c := &catalogueOfCases[i]
+		if !w.applies(c) {
+			continue
+		}
+		w.byDay.add(i)
+		if !onlyBySun.Has(c.kind) {
+			w.byNight.add(i)
+		}
+	}
 }
 
 // Tick says that nothing more will come before the minute.
