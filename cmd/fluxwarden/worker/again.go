@@ -244,6 +244,7 @@ func (s *station) closedDayAgain(ctx context.Context, day int64) (moved bool, er
 		s.unsaved[day] = true
 	}
 	s.lastEnded = max(s.lastEnded, day)
+	s.sealing[day], s.months[monthOf(day)] = true, true
 	if old := s.judged[day]; old != nil {
 		s.w.spares.takeJudged(c.plan, old)
 	}

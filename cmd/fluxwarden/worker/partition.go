@@ -7,6 +7,8 @@ import (
 	"maps"
 	"slices"
 	"time"
+
+	"fluxwarden/qc/minute"
 )
 
 // A partition is a set of stations and what was committed of it last.
@@ -188,9 +190,32 @@ func (w *Worker) commit(ctx context.Context, p *partition, now time.Time) {
 	for i, id := range ids {
 		p.stations[id].settled(ctx, prepared[i])
 	}
+	w.compact(p, ids, now)
 	if passed(w.purged, now, purgeEvery) {
 		w.purged = now
 		w.purge(ctx, now)
+	}
+}
+
+// compact makes one file of one station's month, if there is one that is done with. The rest waits for the next commit.
+func (w *Worker) compact(p *partition, ids []string, now time.Time) {
+	for _, id := range ids {
+		s := p.stations[id]
+		month := s.compactable(minute.Stamp(now.UnixMicro()))
+		if month == "" {
+			continue
+		}
+		base, err := w.cfg.Archive.Compact(p.number, p.base, id, month)
+		switch {
+		case errors.Is(err, ErrLost):
+			w.drop(p.number, "commit", err)
+		case err != nil:
+			w.fail("commit", "a month is not compacted; it is tried again", err, "station", id, "month", month)
+		default:
+			p.base = base
+			delete(s.months, month)
+		}
+		return
 	}
 }
 

@@ -80,6 +80,9 @@ type Archive interface {
 	ReadRaw(station string, from, to int64, each func(*minute.Batch) error) error
 	Summaries(station string, from, to int64) ([]engine.DaySummary, error)
 	Faults(station string) ([]fault.Episode, error)
+	// Compact makes one file of a station's month, YYYY-MM, after the record base, and gives the record it made; base where there was
+	// nothing to do.
+	Compact(partition int, base uint64, station, month string) (uint64, error)
 }
 
 // A Commit is what is written together.

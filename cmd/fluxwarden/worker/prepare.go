@@ -121,5 +121,5 @@ func (s *station) waits(now minute.Stamp) bool {
 			return true
 		}
 	}
-	return false
+	return s.compactable(now) != ""
 }

@@ -29,7 +29,7 @@ const sealingDays = 5
 func (w *Worker) recoverStation(ctx context.Context, partition int, id string) (*station, error) {
 	s := &station{w: w, id: id, partition: partition, watermark: math.MinInt64 / 2, raw: map[int64]*minute.Batch{}, late: map[int64]*minute.Batch{},
 		open: &minute.Batch{Station: id}, summaries: map[int64]engine.DaySummary{}, lastEnded: firstDay - 1, judged: map[int64]*engine.Judged{},
-		unsaved: map[int64]bool{}, again: map[int64]bool{}, sealing: map[int64]bool{}, published: map[string]fault.Episode{}, aside: map[int64]bool{}}
+		unsaved: map[int64]bool{}, again: map[int64]bool{}, sealing: map[int64]bool{}, months: map[string]bool{}, published: map[string]fault.Episode{}, aside: map[int64]bool{}}
 	var err error
 	if s.committed, err = w.cfg.Archive.Faults(id); err != nil {
 		return nil, err
@@ -51,6 +51,7 @@ func (w *Worker) recoverStation(ctx context.Context, partition int, id string) (
 		return nil, err
 	}
 	for d := range s.summaries {
+		s.months[monthOf(d)] = true
 		if d > today-sealingDays {
 			s.sealing[d] = true
 		}

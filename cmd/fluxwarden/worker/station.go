@@ -35,7 +35,8 @@ type station struct {
 	judged     map[int64]*engine.Judged // days before the current one that are to be written
 	unsaved    map[int64]bool           // days whose summary the archive does not have
 	again      map[int64]bool           // days that gained readings after they were judged
-	sealing    map[int64]bool           // days complete but not yet sealed
+	sealing    map[int64]bool           // days not yet sealed
+	months     map[string]bool          // not yet compacted, YYYY-MM
 	committed  []fault.Episode          // as the archive has them
 	published  map[string]fault.Episode // as FINDINGS has them
 	told       bool                     // episodes have changed since the last commit
@@ -212,6 +213,7 @@ func (s *station) endDay() {
 	s.lastEnded = c.day
 	s.unsaved[c.day] = true
 	s.sealing[c.day] = true
+	s.months[monthOf(c.day)] = true
 	s.judged[c.day] = c.judged
 	s.w.spares.takeBlock(c.plan, c.block)
 }
@@ -378,4 +380,27 @@ const sealAfter = 48 * time.Hour
 
 func isComplete(day int64, now minute.Stamp) bool {
 	return now >= minute.Stamp((day+1)*minute.MicrosPerDay)+minute.Stamp(sealAfter/time.Microsecond)
+}
+
+func monthOf(day int64) string { return time.Unix(day*86400, 0).UTC().Format("2006-01") }
+
+// compactable is a month of the station that is sealed to its end and not yet one file; empty if there is none.
+func (s *station) compactable(now minute.Stamp) string {
+	for _, month := range slices.Sorted(maps.Keys(s.months)) {
+		first, err := time.Parse("2006-01", month)
+		if err != nil {
+			continue
+		}
+		if !isComplete(minute.Stamp(first.AddDate(0, 1, 0).UnixMicro()).Day()-1, now) {
+			return ""
+		}
+		open := s.current != nil && monthOf(s.current.day) == month
+		for day := range s.sealing {
+			open = open || monthOf(day) == month
+		}
+		if !open {
+			return month
+		}
+	}
+	return ""
 }

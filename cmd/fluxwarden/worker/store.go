@@ -192,3 +192,29 @@ func (s *Store) Faults(station string) (list []fault.Episode, err error) {
 	err = s.of(station, func(a *store.Archive) error { list, err = a.Faults(station); return err })
 	return list, err
 }
+
+// Compact implements Archive.
+func (s *Store) Compact(partition int, base uint64, station, month string) (number uint64, err error) {
+	lost := false
+	err = s.use(func(a *store.Archive) error {
+		r, _, err := a.Last(partition)
+		if err != nil {
+			return err
+		}
+		if lost = r.Number != base; lost {
+			return ErrLost
+		}
+		if err := a.Compact(partition, station, month); err != nil {
+			return err
+		}
+		r, _, err = a.Last(partition)
+		number = r.Number
+		return err
+	})
+	if err != nil && !lost && !errors.Is(err, errClosed) {
+		s.mu.Lock()
+		s.broken = err
+		s.mu.Unlock()
+	}
+	return number, err
+}

@@ -44,6 +44,8 @@ func (m *memory) powerLoss(uint64) {}
 
 func (m *memory) powerCut() bool { return false }
 
+func (m *memory) intact() error { return nil }
+
 func (m *memory) deathsWithin() int { return 6 }
 
 func (m *memory) digestsOf() (map[stationDay]string, error) { return m.digests, nil }
@@ -133,6 +135,8 @@ func (s *memorySession) Faults(station string) ([]fault.Episode, error) {
 	return slices.Clone(s.m.faults[station]), nil
 }
 
+func (s *memorySession) Compact(_ int, base uint64, _, _ string) (uint64, error) { return base, nil }
+
 // An archive is what a worker stands on, for one life of it.
 type archive interface{ worker.Archive }
 
@@ -140,7 +144,8 @@ type archive interface{ worker.Archive }
 type backend interface {
 	open(dieAt func() bool) archive
 	powerLoss(seed uint64)
-	powerCut() bool    // since the last powerLoss a process has died in the file system, and the machine with it
+	powerCut() bool // since the last powerLoss a process has died in the file system, and the machine with it
+	intact() error
 	deathsWithin() int // calls of dieAt in which a death is worth trying
 	digestsOf() (map[stationDay]string, error)
 }

@@ -24,6 +24,9 @@ func Run(seed uint64, o Options) (counts map[string]int, err error) {
 }
 
 func (w *world) check() error {
+	if err := w.backend.intact(); err != nil {
+		return err
+	}
 	kept, err := w.keptValues()
 	if err != nil {
 		return err

@@ -21,7 +21,7 @@ var (
 	firstArg   = flag.Uint64("first", 1, "the first of them")
 )
 
-const simulatedDays = 3
+const simulatedDays = 2
 
 func memoryBackend() backend { return newMemory() }
 

@@ -106,6 +106,9 @@ type arrival struct {
 // begin is when simulated stations start to send.
 var begin = time.Date(2026, 6, 20, 21, 0, 0, 0, time.UTC)
 
+// lastSent is the stamp of every station's last reading.
+var lastSent = time.Date(2026, 7, 1, 12, 0, 0, 0, time.UTC)
+
 // planArrivals makes up what the stations send over some days, in windows about midnight and noon, with everything that
 // may be wrong with the order of it.
 func planArrivals(rng *rand.Rand, days int) []arrival {
@@ -129,6 +132,10 @@ func planArrivals(rng *rand.Rand, days int) []arrival {
 				}
 			}
 		}
+	}
+	for _, station := range stationNames { // the month after, so that June is over
+		r := minute.Reading{At: minute.Stamp(lastSent.UnixMicro()), Values: sample(rng, station, lastSent, false)}
+		all = append(all, arrival{station: station, reading: r, at: lastSent.Add(3 * time.Second)})
 	}
 	slices.SortStableFunc(all, func(a, b arrival) int { return a.at.Compare(b.at) })
 	for i := range all {

@@ -70,6 +70,32 @@ func (d *disk) digestsOf() (map[stationDay]string, error) {
 	return storeDigests(d.open(func() bool { return false }).(*worker.Store))
 }
 
+// intact says what is wrong with the archive's files at the end: all of June must be sealed and one file by then.
+func (d *disk) intact() error {
+	s := d.open(func() bool { return false }).(*worker.Store)
+	err := s.Read(func(a *store.Archive) error {
+		found, err := a.Verify(func(int, int) {})
+		if err == nil && len(found) > 0 {
+			err = wrong("%d findings of verify, such as %v", len(found), found[0])
+		}
+		return err
+	})
+	if err != nil {
+		return err
+	}
+	for _, station := range stationNames {
+		minutes := "/archive/minutes/station=" + station
+		if july, err := d.mem.ReadDir(minutes + "/month=2026-07"); err != nil || len(july) == 0 {
+			continue // the reading of July was lost: the last day of June is still open
+		}
+		files, err := d.mem.ReadDir(minutes + "/month=2026-06")
+		if err == nil && len(files) > 1 {
+			return wrong("%s: June is %d files, not one", station, len(files))
+		}
+	}
+	return nil
+}
+
 func storeDigests(s *worker.Store) (map[stationDay]string, error) {
 	digests := map[stationDay]string{}
 	err := s.Read(func(a *store.Archive) error {

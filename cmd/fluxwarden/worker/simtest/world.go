@@ -243,14 +243,14 @@ func (w *world) finish() {
 	}
 	w.epoch++
 	w.start(0)
-	end := begin.Add(time.Duration(w.o.Days+5) * 24 * time.Hour)
+	end := lastSent.Add(5 * 24 * time.Hour)
 	for {
 		for w.procs[0].w.Step(context.Background(), 0) {
 		}
 		if !w.now.Before(end) {
 			break
 		}
-		w.now = w.now.Add(13 * time.Hour)
+		w.now = w.now.Add(17 * time.Hour)
 	}
 	w.procs[0].w.CommitAll(context.Background())
 }
