@@ -52,15 +52,12 @@ func noise(w *Watcher, c *faultCase, v *view) hint {
 	return hint{odds: -0.03}
 }
 
-// swing is the second difference of a quantity k minutes ago: how far it stood off its neighbours' mean.
+// swing is the second difference of global, direct or diffuse k minutes ago, 1 or more: how far it stood off its neighbours' mean.
 func (w *Watcher) swing(k int, q rules.Quantity) float64 {
-	at := func(k int) float64 {
-		if k == 0 {
-			return w.now.value[q]
-		}
-		return w.prev(k - 1).value[q]
+	if k == 1 {
+		return w.now.swing[q]
 	}
-	return at(k) - (at(k-1)+at(k+1))/2
+	return w.prev(k - 2).swing[q]
 }
 
 // inGlobal is how much of a change of a quantity would show in global.

@@ -27,8 +27,10 @@ type view struct {
 	clear      [rules.RadiationCount]float64
 	// what the other two of global, direct and diffuse say that this one should be, at the station's own closure
 	expected [3]float64
-	sum      float64 // direct on the horizontal plus diffuse, at the station's own closure
-	steady   bool    // the sum moved little since the minute before
+	// how far each stood off its neighbours' mean a minute ago
+	swing  [3]float64
+	sum    float64 // direct on the horizontal plus diffuse, at the station's own closure
+	steady bool    // the sum moved little since the minute before
 }
 
 const (
@@ -75,7 +77,10 @@ func (v *view) look(w *Watcher, m *Minute) {
 	if v.mu > evidenceMu {
 		v.expected[rules.Direct] = (v.g()/c - v.d()) / v.mu
 	}
-	before := w.prev(0)
+	before, older := w.prev(0), w.prev(1)
+	for q := range v.swing {
+		v.swing[q] = before.value[q] - (older.value[q]+v.value[q])/2
+	}
 	v.steady = before.minute == v.minute-1 && math.Abs(v.sum-before.sum) < float64(0.03*v.sum)+3
 }
 
