@@ -124,20 +124,23 @@ func (c *scale) of(v float64) float64 { return float64(float64(v*c.per)/c.diviso
 
 // linear converts rows whose value is a straight line of the signal.
 func (s *seriesPlan) linear(out *Series, col *minute.Column, c scale, from, to int) {
-	for r := from; r < to; r++ {
-		if !s.sent(out, col, r) {
+	sds, los, his, counts := col.SD[:to], col.Min[:to], col.Max[:to], col.N[:to]
+	for r, v := range col.Mean[:to] {
+		if r < from {
 			continue
 		}
-		v, lo, hi := col.Mean[r], col.Min[r], col.Max[r]
-		out.N[r] = col.N[r]
+		if !(counts[r] != 0 && v > limit.MarkBelow && v <= math.MaxFloat64) && !s.sent(out, col, r) {
+			continue
+		}
+		out.N[r] = counts[r]
 		mean := RoundIrradiance(c.of(v))
 		out.Measured[r] = mean
-		if lo == v && hi == v { // one sample
+		if lo, hi := los[r], his[r]; lo == v && hi == v { // one sample
 			out.Min[r], out.Max[r] = mean, mean
 		} else {
 			out.span(r, c.of(lo), c.of(hi))
 		}
-		if sd := col.SD[r]; sd == sd {
+		if sd := sds[r]; sd == sd {
 			out.SD[r] = RoundIrradiance(math.Abs(float64(sd*c.per) / c.divisor))
 		}
 	}

@@ -3,6 +3,7 @@ package engine
 import (
 	"fmt"
 	"math"
+	"slices"
 	"time"
 
 	"fluxwarden/qc/fault"
@@ -24,6 +25,7 @@ type Plan struct {
 	series      []seriesPlan
 	primary     [rules.QuantityCount]int // where the primary series of each quantity stands, -1 if there is none
 	nothing     []float64                // a column without a value
+	passes      []rules.Outcome          // a column of passes
 	setup       *fault.Setup
 }
 
@@ -48,6 +50,7 @@ func NewPlan(st *rules.Station) (*Plan, error) {
 	p := &Plan{Station: st, site: sun.Site{LatitudeDeg: st.LatitudeDeg, LongitudeDeg: st.LongitudeDeg, ElevationM: st.ElevationM},
 		pressureHPa: StandardPressure(st.ElevationM), nothing: make([]float64, minute.PerDay)}
 	fillNaN(p.nothing)
+	p.passes = slices.Repeat([]rules.Outcome{rules.Pass}, minute.PerDay)
 	p.layout.LabelEnd, p.layout.Interval = st.Time.LabelEnd, st.Time.Interval
 	if p.layout.Interval <= 0 {
 		p.layout.Interval = time.Minute

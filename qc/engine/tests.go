@@ -42,6 +42,18 @@ func (p *Plan) Prepare(j *Judged, block *minute.Block, from, to int) {
 
 // singleTests runs what needs one series alone. It begins the rows' sets of tests.
 func (p *Plan) singleTests(j *Judged, s *seriesPlan, out *Series, block *minute.Block, from, to int) {
+	p.commonTests(s, out, block, from, to)
+	if out.bodyC != nil {
+		p.bodyTests(j, out, from, to)
+	}
+	p.valueLimits(j, s, out, from, to)
+}
+
+// common are the tests that every series has.
+const common = rules.TestSet(1<<rules.Missing | 1<<rules.Sampling | 1<<rules.Clock | 1<<rules.Conflict | 1<<rules.Signal)
+
+// commonTests runs the tests that every series has. Most minutes pass them all, so that is written first and put right where not.
+func (p *Plan) commonTests(s *seriesPlan, out *Series, block *minute.Block, from, to int) {
 	l := &p.Station.Limits
 	expected := p.layout.SamplesExpected()
 	col := &block.Columns[s.signal]
@@ -49,51 +61,42 @@ func (p *Plan) singleTests(j *Judged, s *seriesPlan, out *Series, block *minute.
 	if s.instrument != nil {
 		low, high = s.instrument.Input.SignalMin, s.instrument.Input.SignalMax
 	}
-	var n notes
-	for r := from; r < to; r++ {
-		n = notes{}
-		if out.Measured[r] != out.Measured[r] {
-			n.absent(out, r)
-		} else {
-			n.note(out, rules.Missing, r, rules.Pass)
-			n.note(out, rules.Sampling, r, limit.Samples(col.N[r], expected, l))
-			n.note(out, rules.Clock, r, limit.Clock(block.Ahead[r]))
-			n.note(out, rules.Conflict, r, limit.Conflict(col.Conflict[r]))
-			n.note(out, rules.Signal, r, limit.Signal(col.Mean[r], low, high))
+	for t := rules.Missing; t <= rules.Signal; t++ {
+		copy(out.Outcomes[t][from:to], p.passes)
+	}
+	counts, conflicts, ahead, signals := col.N[:to], col.Conflict[:to], block.Ahead[:to], col.Mean[:to]
+	missed, passed := out.Missed[:to], out.Passed[:to]
+	for r, v := range out.Measured[:to] {
+		if r < from {
+			continue
 		}
-		out.Missed[r], out.Passed[r] = n.missed, n.passed
-	}
-	if out.bodyC != nil {
-		p.bodyTests(j, out, from, to)
-	}
-	p.valueLimits(j, s, out, from, to)
-}
-
-// notes are the sets of one row while they are being made.
-type notes struct{ missed, passed rules.TestSet }
-
-// note is Series.set for a test that every series has.
-func (n *notes) note(out *Series, t rules.Test, r int, o rules.Outcome) {
-	out.Outcomes[t][r] = o
-	switch o {
-	case rules.Pass:
-		n.passed |= t.Of()
-	case rules.Miss:
-		n.missed |= t.Of()
+		missed[r], passed[r] = 0, common
+		samples, signal := limit.Samples(counts[r], expected, l), limit.Signal(signals[r], low, high)
+		if v == v && samples == rules.Pass && signal == rules.Pass && !ahead[r] && !conflicts[r] {
+			continue
+		}
+		passed[r] = 0
+		if v != v {
+			out.absent(r)
+			continue
+		}
+		out.set(rules.Missing, r, rules.Pass)
+		out.set(rules.Sampling, r, samples)
+		out.set(rules.Clock, r, limit.Clock(ahead[r]))
+		out.set(rules.Conflict, r, limit.Conflict(conflicts[r]))
+		out.set(rules.Signal, r, signal)
 	}
 }
 
-// absent notes that there is no value.
-func (n *notes) absent(out *Series, r int) {
-	for _, t := range [...]rules.Test{rules.Sampling, rules.Clock, rules.Conflict} {
-		out.Outcomes[t][r] = rules.NoValue
+// absent notes that a row has no value.
+func (out *Series) absent(r int) {
+	for _, t := range [...]rules.Test{rules.Sampling, rules.Clock, rules.Conflict, rules.Signal} {
+		out.set(t, r, rules.NoValue)
 	}
-	n.note(out, rules.Missing, r, rules.Miss)
-	signal := rules.NoValue
+	out.set(rules.Missing, r, rules.Miss)
 	if out.marked[r] {
-		signal = rules.Miss
+		out.set(rules.Signal, r, rules.Miss)
 	}
-	n.note(out, rules.Signal, r, signal)
 }
 
 // bodyTests holds a pyrgeometer's case and dome against the air; what cannot be spoils its signal.
@@ -114,15 +117,11 @@ func (p *Plan) valueLimits(j *Judged, s *seriesPlan, out *Series, from, to int) 
 	l := &p.Station.Limits
 	switch q := s.quantity; q {
 	case rules.Global, rules.Direct, rules.Diffuse, rules.Reflected:
-		p.sunLimit(j, out, rules.Possible, math.Min(l.Possible[q].Low, -s.zeroAllowance), l.Possible[q], from, to)
-		p.sunLimit(j, out, rules.Rare, math.Min(l.Rare[q].Low, -s.zeroAllowance), l.Rare[q], from, to)
-		p.nightZero(j, out, -l.Rare[q].Low, from, to)
+		p.sunLimits(j, s, out, &l.Possible[q], &l.Rare[q], -l.Rare[q].Low, from, to)
 	case rules.UV:
-		p.sunLimit(j, out, rules.Possible, l.PossibleUV.Low, l.PossibleUV, from, to)
-		p.nightZero(j, out, -l.PossibleUV.Low, from, to)
+		p.sunLimits(j, s, out, &l.PossibleUV, nil, -l.PossibleUV.Low, from, to)
 	case rules.PAR:
-		p.sunLimit(j, out, rules.Possible, l.PossiblePAR.Low, l.PossiblePAR, from, to)
-		p.nightZero(j, out, -l.PossiblePAR.Low, from, to)
+		p.sunLimits(j, s, out, &l.PossiblePAR, nil, -l.PossiblePAR.Low, from, to)
 	case rules.LWDown, rules.LWUp:
 		bandLimit(out, rules.Possible, l.PossibleLW[q-rules.LWDown], from, to)
 		bandLimit(out, rules.Rare, l.RareLW[q-rules.LWDown], from, to)
@@ -137,15 +136,25 @@ func (p *Plan) valueLimits(j *Judged, s *seriesPlan, out *Series, from, to int) 
 	}
 }
 
-func (p *Plan) sunLimit(j *Judged, out *Series, t rules.Test, lowWm2 float64, sl rules.SunLimit, from, to int) {
-	for r := from; r < to; r++ {
-		out.set(t, r, limit.WithinSun(out.Measured[r], lowWm2, sl, &j.sun.rows[r]))
+// sunLimits runs what holds a shortwave value against the sun: possible, rare (nil where there is none) and the night's nothing. The zero
+// offset that an instrument's class may have widens the lower bounds.
+func (p *Plan) sunLimits(j *Judged, s *seriesPlan, out *Series, possible, rare *rules.SunLimit, quietWm2 float64, from, to int) {
+	l := &p.Station.Limits
+	possibleLow, rareLow := possible.Low, math.NaN()
+	if rare != nil {
+		possibleLow, rareLow = math.Min(possible.Low, -s.zeroAllowance), math.Min(rare.Low, -s.zeroAllowance)
 	}
-}
-
-func (p *Plan) nightZero(j *Judged, out *Series, quietWm2 float64, from, to int) {
-	for r := from; r < to; r++ {
-		out.set(rules.NightZero, r, limit.NightZero(out.Measured[r], quietWm2, &j.sun.rows[r], &p.Station.Limits))
+	suns := j.sun.rows[:to]
+	for r, v := range out.Measured[:to] {
+		if r < from {
+			continue
+		}
+		sun := &suns[r]
+		out.set(rules.Possible, r, limit.WithinSun(v, possibleLow, possible, sun))
+		out.set(rules.NightZero, r, limit.NightZero(v, quietWm2, sun, l))
+		if rare != nil {
+			out.set(rules.Rare, r, limit.WithinSun(v, rareLow, rare, sun))
+		}
 	}
 }
 

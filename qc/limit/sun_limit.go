@@ -42,7 +42,7 @@ func SunOf(zenithDeg, cosZenith, apparentZenithDeg, beamMu, saWm2 float64, hidde
 // Source: Long & Dutton 2002, BSRN Global Network recommended QC tests V2.0 (constants in rules.LimitTable). Valid for any
 // zenith angle: below the horizon mu0 is nothing and the offset alone remains; with Power 0 the bound is the same day and
 // night. Worked value: G possible, S0 1361, R 1, Z 60 degrees: 988.61.
-func SunMax(l rules.SunLimit, s *Sun) float64 {
+func SunMax(l *rules.SunLimit, s *Sun) float64 {
 	var p float64
 	switch l.Power {
 	case 1.2:
@@ -63,7 +63,7 @@ func SunMax(l rules.SunLimit, s *Sun) float64 {
 
 // WithinSun tests a shortwave value against a limit that follows the sun. The lower bound is lowWm2, which the caller widens
 // by the zero offset that the instrument's class may have: a thermopile under a cold sky reads below nothing and is sound.
-func WithinSun(v, lowWm2 float64, l rules.SunLimit, s *Sun) rules.Outcome {
+func WithinSun(v, lowWm2 float64, l *rules.SunLimit, s *Sun) rules.Outcome {
 	if math.IsNaN(v) {
 		return rules.NoValue
 	}
