@@ -16,6 +16,7 @@ import (
 	"time"
 
 	"fluxwarden/cmd/fluxwarden/daemon"
+	"fluxwarden/cmd/fluxwarden/worker"
 	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
 )
@@ -28,9 +29,9 @@ var demoSite []byte
 const (
 	demoSpeed  = 360 // an hour of station time in ten seconds
 	demoListen = "127.0.0.1:9470"
-	// demoGrace is how long a minute waits for its readings, in station time. It stands for a quarter of a second at the usual speed:
-	// the ten seconds of a real station would be over before a reading is on disk.
-	demoGrace       = 90 * time.Second
+	// demoGrace is how long a minute waits for its readings, by the clock on the wall: the ten seconds of a real station, in station
+	// time, would be over before a reading is on disk.
+	demoGrace       = 250 * time.Millisecond
 	demoCommitEvery = 20 * time.Minute // of station time
 	demoSpeedMax    = 3600
 )
@@ -128,7 +129,7 @@ func startDemo(o demoOptions) (*demo, error) {
 	d.board = newDemoBoard(site, d.clock)
 	s := daemon.DefaultSettings()
 	s.Archive, s.Listen = d.places.archive, demoAddress(o.listen)
-	s.Grace, s.CommitEvery = daemon.Duration(demoGrace), daemon.Duration(demoCommitEvery)
+	s.Grace, s.CommitEvery = daemon.Duration(demoWait(o.speed)), daemon.Duration(demoCommitEvery)
 	s.Broker.URL, s.Broker.Store, s.Broker.Listen = "", d.places.journal, "127.0.0.1:0"
 	d.daemon, err = daemon.Start(context.Background(), daemon.Config{Settings: s, Site: site, SiteText: demoSite, Clock: d.clock,
 		Log: slog.New(slog.NewTextHandler(d.logFile, nil)), Program: "fluxwarden " + version,
@@ -141,6 +142,11 @@ func startDemo(o demoOptions) (*demo, error) {
 		return nil, errors.Join(err, d.daemon.Stop())
 	}
 	return d, nil
+}
+
+// demoWait is the grace in station time, at a speed.
+func demoWait(speed float64) time.Duration {
+	return max(worker.GraceDefault, time.Duration(speed*float64(demoGrace)))
 }
 
 // demoAddress is the address asked for, else the usual one, else a free port.
