@@ -10,6 +10,7 @@ import (
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
 )
 
 // excludedMax is how many minutes of a day may be left out because the core cannot bear them.
@@ -83,11 +84,17 @@ func (s *station) setAside(ctx context.Context, m int64, readings *minute.Batch)
 // the day of the stamp, which for a logger that labels by the end may be the day after.
 func (s *station) readings(day int64) (*minute.Batch, error) {
 	all := &minute.Batch{Station: s.id}
-	err := s.w.cfg.Archive.ReadRaw(s.id, day, day+1, func(b *minute.Batch) error { appendAll(all, b); return nil })
+	to := day
+	if plan := s.w.cfg.Rules.PlanFor(s.id, day+1); plan != nil {
+		if layout := plan.Layout(); layout.LabelEnd {
+			to = day + 1
+		}
+	}
+	err := s.w.cfg.Archive.ReadRaw(s.id, day, to, func(b *minute.Batch) error { appendAll(all, b); return nil })
 	if err != nil {
 		return nil, err
 	}
-	for d := day; d <= day+1; d++ {
+	for d := day; d <= to; d++ {
 		if b := s.raw[d]; b != nil {
 			appendAll(all, b)
 		}
@@ -310,8 +317,8 @@ func (s *station) touched(episodes []fault.Episode) []int64 {
 	return slices.Sorted(maps.Keys(days))
 }
 
-// A reachKey is all of an episode that settling a minute may read. Evidence is part of it: what a restored value is restored
-// by stands there.
+// A reachKey is all of an episode that settling a minute may read. Evidence is part of it for the kinds that are reached or
+// restored by a number that stands there; that of the others changes often, and no row by it.
 type reachKey struct {
 	id, instrument string
 	evidence       string
@@ -323,7 +330,11 @@ func keyed(episodes []fault.Episode) map[reachKey]bool {
 	m := make(map[reachKey]bool, len(episodes))
 	for i := range episodes {
 		e := &episodes[i]
-		m[reachKey{e.ID, e.Instrument, fmt.Sprint(e.Evidence), uint8(e.Kind), uint8(e.Severity), e.From, e.To}] = true
+		evidence := ""
+		if e.Kind.Entry().Restorable || e.Kind == rules.RangeClipped || e.Kind == rules.Shadow {
+			evidence = fmt.Sprint(e.Evidence)
+		}
+		m[reachKey{e.ID, e.Instrument, evidence, uint8(e.Kind), uint8(e.Severity), e.From, e.To}] = true
 	}
 	return m
 }

@@ -126,8 +126,11 @@ func (w *Worker) advanceTo(d *Delivery) {
 
 // commitDue commits the partitions whose time has come.
 func (w *Worker) commitDue(ctx context.Context, now time.Time) {
-	for _, n := range slices.Sorted(maps.Keys(w.partitions)) {
+	for n := range partitionCount {
 		p := w.partitions[n]
+		if p == nil {
+			continue
+		}
 		if now.Before(p.committed) { // the clock was set back
 			p.committed = now
 		}

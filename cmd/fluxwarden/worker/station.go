@@ -139,8 +139,8 @@ func (s *station) tick(ctx context.Context, now minute.Stamp) {
 			c.judger.Tick(m)
 			c.tickSaw = c.tickSaw || !sameEpisodes(before, c.judger.Episodes())
 		})
+		s.tell(ctx)
 	}
-	s.tell(ctx)
 }
 
 // advance judges the minutes that the watermark has closed.

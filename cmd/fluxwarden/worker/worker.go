@@ -275,9 +275,15 @@ func (w *Worker) station(ctx context.Context, p *partition, id string) (*station
 
 // tick lets time go on for the stations, where nothing waits in the journal that could contradict it.
 func (w *Worker) tick(ctx context.Context, now time.Time) {
-	for _, n := range slices.Sorted(maps.Keys(w.partitions)) {
+	for n := range partitionCount {
 		p := w.partitions[n]
+		if p == nil {
+			continue
+		}
 		w.recoverOne(ctx, p)
+		if w.partitions[n] != p {
+			continue
+		}
 		for _, id := range slices.Sorted(maps.Keys(p.stations)) {
 			s := p.stations[id]
 			s.tick(ctx, minute.Stamp(now.UnixMicro()))
