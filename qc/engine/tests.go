@@ -56,6 +56,7 @@ const common = rules.TestSet(1<<rules.Missing | 1<<rules.Sampling | 1<<rules.Clo
 func (p *Plan) commonTests(s *seriesPlan, out *Series, block *minute.Block, from, to int) {
 	l := &p.Station.Limits
 	expected := p.layout.SamplesExpected()
+	enough := max(1, uint32(math.Ceil(l.SamplingShare*float64(expected))))
 	col := &block.Columns[s.signal]
 	low, high := math.NaN(), math.NaN()
 	if s.instrument != nil {
@@ -71,8 +72,7 @@ func (p *Plan) commonTests(s *seriesPlan, out *Series, block *minute.Block, from
 			continue
 		}
 		missed[r], passed[r] = 0, common
-		samples, signal := limit.Samples(counts[r], expected, l), limit.Signal(signals[r], low, high)
-		if v == v && samples == rules.Pass && signal == rules.Pass && !ahead[r] && !conflicts[r] {
+		if v == v && counts[r] >= enough && !(signals[r] <= low || signals[r] >= high) && !ahead[r] && !conflicts[r] {
 			continue
 		}
 		passed[r] = 0
@@ -81,10 +81,10 @@ func (p *Plan) commonTests(s *seriesPlan, out *Series, block *minute.Block, from
 			continue
 		}
 		out.set(rules.Missing, r, rules.Pass)
-		out.set(rules.Sampling, r, samples)
+		out.set(rules.Sampling, r, limit.Samples(counts[r], expected, l))
 		out.set(rules.Clock, r, limit.Clock(ahead[r]))
 		out.set(rules.Conflict, r, limit.Conflict(conflicts[r]))
-		out.set(rules.Signal, r, signal)
+		out.set(rules.Signal, r, limit.Signal(signals[r], low, high))
 	}
 }
 
