@@ -237,6 +237,7 @@ func free(address string) error {
 func (d *Daemon) brokerState(s broker.State) {
 	was := d.connected.Swap(s.Connected)
 	switch {
+	case d.embedded != nil && s.Connected: // nothing to tell: it is in this process
 	case s.Connected && !was:
 		d.log.Info("connected to the broker", "url", s.URL)
 	case !s.Connected && was && !s.Closed:

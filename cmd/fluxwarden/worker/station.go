@@ -341,7 +341,14 @@ func (s *station) tell(ctx context.Context) {
 		s.w.cfg.Live.Episodes(s.id, episodes)
 	}
 	if err := s.w.cfg.Findings.Publish(ctx, changes); err != nil {
-		s.w.fail("publish_findings", "findings are not published", err, "station", s.id, "changes", len(changes))
+		s.w.fail("publish_findings", "findings are not published; they are tried again with the next change or minute", err, "station", s.id, "changes", len(changes))
+		for i := range changes {
+			if id := changes[i].Episode.ID; changes[i].Withdrawn {
+				s.published[id] = changes[i].Episode
+			} else {
+				delete(s.published, id)
+			}
+		}
 	}
 }
 
