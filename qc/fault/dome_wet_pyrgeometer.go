@@ -3,6 +3,7 @@ package fault
 import (
 	"math"
 
+	"fluxwarden/qc/sensor"
 	"fluxwarden/rules"
 )
 
@@ -49,7 +50,4 @@ func (w *Watcher) netLongwave(v *view) float64 {
 	return v.value[rules.LWDown] - blackBodyC(v.value[rules.AirTemperature])
 }
 
-func blackBodyC(tC float64) float64 {
-	t := tC + 273.15
-	return 5.670374419e-8 * t * t * t * t
-}
+func blackBodyC(tC float64) float64 { return sensor.BlackbodyFlux(tC + zeroCelsiusK) }

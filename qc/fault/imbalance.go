@@ -97,6 +97,8 @@ const (
 	// closureRoom is the relative deviation from the station's own closure that a sound station stays within, most steady minutes
 	// (own choice; robust daily scatter on measured months is about 1 %).
 	closureRoom = 0.035
+	// fineRoom is the same for the mean of hours with a high sun and a steady sky.
+	fineRoom = 0.016
 	// untaughtRoom is the same while the station's own closure is not known yet.
 	untaughtRoom = 0.07
 )
@@ -120,8 +122,8 @@ func (w *Watcher) watchImbalance(v *view) {
 		return
 	}
 	g, b, d := v.g(), v.b(), v.d()
-	if math.IsNaN(g + b + d) {
-		return
+	if math.IsNaN(g+b+d) || v.run[rules.Global] > 2 || v.run[rules.Diffuse] > 2 || v.run[rules.Direct] > 2 {
+		return // what stands still is clipped or frozen
 	}
 	if b < 2 && d > 60 {
 		w.dullStep(v, g/d/w.base.overcast-1)
@@ -187,23 +189,34 @@ func (w *Watcher) moved(v *view) float64 {
 	return most
 }
 
-// imbalanceOdds is what one steady minute says. Before an episode is open, every deviation speaks for one; then the deviation that
-// its cause implies for this minute is what counts.
-func (im *imbalance) imbalanceOdds(open bool, x [regressors]float64, delta, room float64) float64 {
+// imbalanceOdds is what one minute with beam says. Before an episode is open, every deviation speaks for one, a large one loudly, a small
+// one in a good hour softly; then the deviation that its cause implies for this minute is what counts.
+func (im *imbalance) imbalanceOdds(open bool, x [regressors]float64, delta, room float64, good bool) float64 {
+	off := math.Abs(delta)
 	if !open {
-		if math.Abs(delta) > room {
-			return math.Min(0.25, 0.04*math.Abs(delta)/room)
+		switch {
+		case off > room:
+			return math.Min(0.25, 0.04*off/room)
+		case !good:
+			return -0.03 * (1 + math.Min(4, math.Abs(im.Recent.Float())/room))
+		case off > fineRoom:
+			return 0.012 * off / fineRoom
 		}
-		return -0.06 * (1 + math.Min(4, math.Abs(im.Recent.Float())/room))
+		return -0.03 * (1 + math.Min(4, math.Abs(im.Recent.Float())/room))
 	}
 	want := im.Model.predict(x)
+	size := math.Abs(want)
+	least := 0.6 * room
+	if good {
+		least = 0.8 * fineRoom
+	}
 	switch {
-	case math.Abs(want) < 0.6*room:
+	case size < least:
 		return 0
-	case math.Abs(delta-want) < 0.5*math.Abs(want):
-		return math.Min(0.25, 0.04*math.Abs(want)/room)
-	case math.Abs(delta) < 0.5*math.Abs(want) || delta*want < 0:
-		return -math.Min(0.4, 0.08*math.Abs(want)/room)
+	case math.Abs(delta-want) < 0.5*size:
+		return math.Min(0.25, 0.04*size/room)
+	case off < 0.4*size || delta*want < 0:
+		return -math.Min(0.4, 0.08*size/room)
 	}
 	return 0
 }
@@ -214,7 +227,7 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 	sinZ := math.Sqrt(math.Max(0, 1-float64(v.mu*v.mu)))
 	lever := v.b() * sinZ / v.sum
 	x := [regressors]float64{1, share, lever * sinDeg(v.azimuthDeg), lever * cosDeg(v.azimuthDeg)}
-	odds := im.imbalanceOdds(w.imbalanceEpisode() >= 0, x, delta, room)
+	odds := im.imbalanceOdds(w.imbalanceEpisode() >= 0, x, delta, room, v.steady && v.mu > 0.25 && w.base.known)
 	if !im.Begun {
 		if odds <= 0 {
 			return

@@ -27,6 +27,7 @@ const (
 	dullScatter     = 0.01  // of global over diffuse under thick cloud, a day
 	globalScatter   = 0.03  // of global over the learnt clear sky
 	beamScatter     = 0.08  // of the beam over the learnt clear sky
+	wanders         = 0.25  // of a deviation, by which it wanders
 	leanMost        = 6.0   // degrees that an instrument on its feet can well be out of level
 )
 
@@ -41,11 +42,19 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 		fitT += float64((lean - leanMost) * (lean - leanMost))
 	}
 	gainD, fitD := im.fitDiffuse()
+	fitG += absurd(1 + gainG)
+	fitD += absurd(1 + gainD)
+	beamCause := cause{kind: rules.SensitivityWrong, instrument: p, model: model{1, Number(gainP), 0}, misfit: fitP + absurd(1-gainP) + im.elsewhere(0, 0, -gainP),
+		evidence: []Evidence{{"gain", roundTo(1-gainP, 1000), "1"}}}
+	if gainP < -0.15 && im.Sky[2].N >= 20 && im.Sky[2].of() > 0.5 {
+		// a share of the beam on diffuse closes like a beam read too high, but the beam is as it should be and diffuse is not
+		beamCause = cause{kind: rules.ShadeOff, instrument: d, model: model{1, Number(gainP), 0}, misfit: fitP + im.elsewhere(0, 0, 0),
+			evidence: []Evidence{{"share_of_beam_on_diffuse", roundTo(-gainP, 100), "1"}}}
+	}
 	list := []cause{
 		{kind: rules.SensitivityWrong, instrument: g, model: model{0, Number(gainG), 0}, misfit: fitG + im.elsewhere(gainG, gainG, 0),
 			evidence: []Evidence{{"gain", roundTo(1+gainG, 1000), "1"}}},
-		{kind: rules.SensitivityWrong, instrument: p, model: model{1, Number(gainP), 0}, misfit: fitP + im.elsewhere(0, 0, -gainP),
-			evidence: []Evidence{{"gain", roundTo(1-gainP, 1000), "1"}}},
+		beamCause,
 		{kind: rules.SensitivityWrong, instrument: d, model: model{2, Number(gainD), 0}, misfit: fitD + im.elsewhere(-gainD, 0, 0) + 3,
 			evidence: []Evidence{{"gain", roundTo(1+gainD, 1000), "1"}}},
 		{kind: rules.SensorTilted, instrument: g, model: model{3, Number(tiltE), Number(tiltN)}, misfit: fitT + im.elsewhere(0, im.Recent.Float(), 0) + 2,
@@ -97,6 +106,14 @@ func (im *imbalance) grows() bool {
 	return im.N > 150 && im.Last-im.Since > 20*60 && math.Abs(im.Recent.Float()) > float64(1.3*math.Abs(im.First.of()))+0.008
 }
 
+// absurd is the penalty of a gain that no slip of a coefficient gives: half and one and a half are far enough.
+func absurd(gain float64) float64 {
+	if gain > 0.6 && gain < 1.5 {
+		return 0
+	}
+	return 20
+}
+
 // elsewhere is the misfit of what a cause implies under thick cloud, for global and for the beam over the clear sky.
 func (im *imbalance) elsewhere(dull, global, beam float64) float64 {
 	chi := 0.0
@@ -112,18 +129,24 @@ func (im *imbalance) elsewhere(dull, global, beam float64) float64 {
 	return chi
 }
 
-func chi(sse float64) float64 {
-	return math.Max(0, sse) / (closureScatter * closureScatter * closureTogether)
+// chi turns a sum of squares into chi squared. What is large wanders too, dew that dries or snow that slides, so the scatter grows
+// with the deviation itself.
+func (im *imbalance) chi(sse float64) float64 {
+	variance := closureScatter * closureScatter
+	if n := im.Sums.XX[0][0].Float(); n > 0 {
+		variance += float64(wanders * wanders * im.Sums.YY.Float() / n)
+	}
+	return math.Max(0, sse) / float64(variance*closureTogether)
 }
 
 // fitOne fits the deviation with one regressor.
 func (im *imbalance) fitOne(k int) (coefficient, misfit float64) {
 	xx, xy := im.Sums.XX[k][k].Float(), im.Sums.XY[k].Float()
 	if xx <= 0 {
-		return 0, chi(im.Sums.YY.Float())
+		return 0, im.chi(im.Sums.YY.Float())
 	}
 	c := xy / xx
-	return c, chi(im.Sums.YY.Float() - float64(c*xy))
+	return c, im.chi(im.Sums.YY.Float() - float64(c*xy))
 }
 
 // fitDiffuse fits a gain of diffuse: deviation = -gain (1 - share).
@@ -132,10 +155,10 @@ func (im *imbalance) fitDiffuse() (gain, misfit float64) {
 	xx := (s.XX[0][0] - Number(2*s.XX[0][1]) + s.XX[1][1]).Float()
 	xy := (s.XY[1] - s.XY[0]).Float()
 	if xx <= 0 {
-		return 0, chi(s.YY.Float())
+		return 0, im.chi(s.YY.Float())
 	}
 	c := xy / xx
-	return c, chi(s.YY.Float() - float64(c*xy))
+	return c, im.chi(s.YY.Float() - float64(c*xy))
 }
 
 // fitTilt fits a tilt of global, radians to the east and to the north.
@@ -143,15 +166,15 @@ func (im *imbalance) fitTilt() (east, north, misfit float64) {
 	s := &im.Sums
 	a, b, c := s.XX[2][2].Float(), s.XX[2][3].Float(), s.XX[3][3].Float()
 	p, q := s.XY[2].Float(), s.XY[3].Float()
-	ridge := 1e-3 * (a + c)
+	ridge := float64(1e-3 * (a + c))
 	a, c = a+ridge, c+ridge
 	det := float64(a*c) - float64(b*b)
 	if det <= 0 {
-		return 0, 0, chi(s.YY.Float())
+		return 0, 0, im.chi(s.YY.Float())
 	}
 	east = (float64(p*c) - float64(q*b)) / det
 	north = (float64(q*a) - float64(p*b)) / det
-	return east, north, chi(s.YY.Float() - float64(east*p) - float64(north*q))
+	return east, north, im.chi(s.YY.Float() - float64(east*p) - float64(north*q))
 }
 
 // bearing is the azimuth that a tilt to the east and north leans towards, degrees.

@@ -36,6 +36,11 @@ func noise(w *Watcher, c *faultCase, v *view) hint {
 		}
 	}
 	mine = w.inGlobal(mine, c.quantity, at.mu)
+	for _, k := range [2]int{0, 2} { // its neighbours must close: else something else is wrong
+		if p := w.prev(k); !(math.Abs(p.g()-p.sum) < 3*p.scale(w)) {
+			return nothing
+		}
+	}
 	for _, q := range threeShortwave {
 		if q != c.quantity && (w.tainted(q) || v.run[q] > 1) {
 			return nothing

@@ -33,8 +33,8 @@ func signalFrozen(w *Watcher, c *faultCase, v *view) hint {
 		return hint{1, x}
 	case math.IsNaN(want):
 		return hint{0.2, x}
-	case math.Abs(want-x) > 2*v.scale(w) && !(c.quantity == rules.Global && want > x):
-		return hint{1, x}
+	case math.Abs(want-x) > 3*v.scale(w) && !(c.quantity == rules.Global && want > x):
+		return hint{0.5, x}
 	case c.quantity == rules.Global && want > x+v.scale(w):
 		return nothing // it may be clipped there
 	}

@@ -38,7 +38,7 @@ func signalLost(w *Watcher, c *faultCase, v *view) hint {
 		return hint{odds: -8}
 	case !w.missedMuch(c.quantity, v):
 		return nothing
-	case math.Abs(float64(1000*x)-want) < float64(0.15*want)+20:
+	case math.Abs(float64(1000*x)-want) < 0.5*want:
 		return nothing
 	}
 	return hint{0.16, x - want}

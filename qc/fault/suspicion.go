@@ -86,7 +86,9 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 	}
 	open := w.openIndex(c.of(w.setup), c.kind)
 	if open >= 0 {
-		w.open[open].Evidence = w.evidenceOf(c, s)
+		if s.For <= evidenceSettles {
+			w.open[open].Evidence = w.evidenceOf(c, s)
+		}
 		if s.Score <= 0 {
 			w.finish(open, s.Last+1)
 		}
@@ -112,6 +114,10 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 func (w *Watcher) hindsight(since int64) int64 {
 	return max(since, w.now.minute-hindsightMinutes)
 }
+
+// evidenceSettles is after how many minutes the numbers of an episode stand: values are restored by some of them, and days long past must
+// not change with every new night.
+const evidenceSettles = 300
 
 const hindsightMinutes = 10 * 1440
 

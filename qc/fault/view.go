@@ -79,7 +79,7 @@ func (v *view) look(w *Watcher, m *Minute) {
 	}
 	before, older := w.prev(0), w.prev(1)
 	for q := range v.swing {
-		v.swing[q] = before.value[q] - (older.value[q]+v.value[q])/2
+		v.swing[q] = before.value[q] - float64((older.value[q]+v.value[q])/2)
 	}
 	v.steady = before.minute == v.minute-1 && math.Abs(v.sum-before.sum) < float64(0.03*v.sum)+3
 }
