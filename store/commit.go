@@ -26,7 +26,6 @@ type draft struct {
 type job struct {
 	file File
 	make func() (data []byte, f File, err error)
-	data []byte
 }
 
 // Commit writes everything the commit holds, all or nothing, and gives its record. When it returns without an error, all of it survives a

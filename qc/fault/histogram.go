@@ -13,11 +13,6 @@ func newHistogram(low, high, step float64) histogram {
 	return histogram{low: low, step: step, counts: make([]uint16, int(math.Ceil((high-low)/step)))}
 }
 
-func (h *histogram) reset() {
-	clear(h.counts)
-	h.n = 0
-}
-
 // add counts a value; one outside the range counts at its end.
 func (h *histogram) add(v float64) {
 	if math.IsNaN(v) {
