@@ -137,7 +137,7 @@ func (r *demoRow) share(v rules.Verdict) float64 {
 
 // demoWords says what an episode is.
 func demoWords(e *demoEvent) string {
-	at := func(minuteUTC int64) string { return time.Unix(60*minuteUTC, 0).UTC().Format("15:04Z") }
+	at := func(minuteUTC int64) string { return time.Unix(60*minuteUTC, 0).UTC().Format("01-02 15:04Z") }
 	if e.episode.To == fault.Open {
 		return fmt.Sprintf("%s %s: %s since %s", e.station, e.episode.Instrument, e.episode.Kind.Entry().Title, at(e.episode.From))
 	}

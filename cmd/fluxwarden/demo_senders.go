@@ -54,13 +54,13 @@ var demoFaults = []demoFault{
 	{"larkmoor", rules.SignalLost, "P1", 24, 100, 0, 0},
 	{"redbasin", rules.PolarityReversed, "G1", 45, 75, 0, 0},
 	{"whitecape", rules.SignalFrozen, "L1", 80, 110, 0, 0},
-	{"redbasin", rules.PointingLost, "", 190, 150, 0, 0},
+	{"redbasin", rules.ShadeOff, "D1", 190, 120, 0, 0},
 	{"larkmoor", rules.DataGap, "", 230, 35, 0, 0},
 	{"whitecape", rules.UnitSlip, "G1", 330, 120, 0, 0},
 	{"redbasin", rules.ThermistorBad, "L1", 420, 160, 9, 0},
 	{"whitecape", rules.Noise, "D1", 1500, 240, 60, 0},
 	{"larkmoor", rules.ChannelsSwapped, "G1", 1560, 180, 0, 0},
-	{"redbasin", rules.ShadeOff, "D1", 1600, 200, 0, 0},
+	{"redbasin", rules.PointingLost, "", 1640, 200, 0, 0},
 	{"whitecape", rules.SensorTilted, "G1", 1900, 700, 4, 210},
 }
 
