@@ -27,7 +27,7 @@ type command struct {
 
 func commands() []command {
 	return []command{
-		// demo
+		{"demo", "an invented network, from readings to archive, in one process", cmdDemo},
 		{"run", "the daemon: takes readings, judges them, keeps the archive", cmdRun},
 		{"judge", "judge files of readings into an archive", cmdJudge},
 		{"export", "write an archive's minutes as CSV", cmdExport},
@@ -35,6 +35,7 @@ func commands() []command {
 		{"sky", "what the judge expects: sun, clear sky, the bounds of every limit", cmdSky},
 		{"lint", "check site files", cmdLint},
 		{"refused", "list, show and requeue what was refused", cmdRefused},
+		{"simulate", "write a synthetic station's readings with labelled faults", cmdSimulate},
 		{"version", "print the version", func([]string) int { fmt.Println("fluxwarden", version); return exitOK }},
 	}
 }
