@@ -129,7 +129,7 @@ func (s *seriesPlan) linear(out *Series, col *minute.Column, c scale, from, to i
 		if r < from {
 			continue
 		}
-		if !(counts[r] != 0 && v > limit.MarkBelow && v <= math.MaxFloat64) && !s.sent(out, col, r) {
+		if !(counts[r] != 0 && v > limit.MarkBelow && v < minute.NoMeasurementAbove) && !s.sent(out, col, r) {
 			continue
 		}
 		out.N[r] = counts[r]

@@ -9,6 +9,8 @@ import (
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
 
+	"fluxwarden/rules"
+
 	"pgregory.net/rapid"
 )
 
@@ -246,5 +248,29 @@ func TestPlaceOfTheMachineDoesNotCount(t *testing.T) {
 		if digestOf() != want {
 			t.Errorf("other rows in the time zone %v", zone)
 		}
+	}
+}
+
+// TestSpikeOfWhatWasMeasured: whether a live station's minutes were settled, and so restored, before the next came changes no test.
+func TestSpikeOfWhatWasMeasured(t *testing.T) {
+	p := planOf(t, plainText)
+	day := dayOf(t, equinox)
+	var b minute.Batch
+	for m, v := range []float64{800, 801, 1300, 802, 800} {
+		b.Append(&minute.Reading{At: minute.Stamp(day*minute.PerDay+727+int64(m)) * minute.MicrosPerMinute, Values: []minute.ChannelValue{
+			{Channel: "ghi", Value: minute.Single(v)}, {Channel: "dni", Value: minute.Single(700)}, {Channel: "dhi", Value: minute.Single(100)}}})
+	}
+	block := blockOf(p, &b, day)
+	judger := NewJudger(p, nil)
+	j := judger.Begin(day)
+	offset := []fault.Episode{{Instrument: "G1", Kind: rules.ZeroOffset, Severity: rules.Act, From: day * minute.PerDay, To: fault.Open,
+		Evidence: []fault.Evidence{{Name: "offset", Value: 500, Unit: "W/m2"}}}}
+	rows := block.Rows
+	for block.Rows = 700; block.Rows <= rows; block.Rows++ {
+		judger.Advance(block)
+		Settle(p, j, offset)
+	}
+	if missed := j.Primary(rules.Global).Missed; !missed[729].Has(rules.Spike) || missed[728].Has(rules.Spike) || missed[730].Has(rules.Spike) {
+		t.Errorf("spikes around the one of 1300 W/m2: %v", missed[727:732])
 	}
 }

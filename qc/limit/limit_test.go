@@ -217,7 +217,7 @@ func TestSignalAndSamples(t *testing.T) {
 			t.Errorf("%s: %v, want %v", c.name, c.got, c.want)
 		}
 	}
-	for v, want := range map[float64]bool{-6000: true, -7999: true, -5999: false, 0: false, math.Inf(1): true, math.Inf(-1): true} {
+	for v, want := range map[float64]bool{-6000: true, -7999: true, -5999: false, 0: false, math.Inf(1): true, math.Inf(-1): true, 9.96921e36: true, 101325: false} {
 		if IsMark(v) != want {
 			t.Errorf("mark %v: %v, want %v", v, !want, want)
 		}
@@ -242,7 +242,8 @@ func TestStuck(t *testing.T) {
 		{"30 minutes by day", 30, 300, rules.Global, day, rules.Miss},
 		{"719 minutes by night", 719, 300, rules.Global, night, rules.Pass},
 		{"720 minutes by night", 720, 300, rules.Global, night, rules.Miss},
-		{"about nothing by day", 719, 0, rules.Direct, day, rules.Pass},
+		{"about nothing by day", 2000, 0, rules.Direct, day, rules.TooSmall},
+		{"about nothing in a polar night", 90_000, 0, rules.Global, night, rules.TooSmall},
 		{"longwave has no night", 30, 300, rules.LWDown, night, rules.Miss},
 		{"absent", 0, nan, rules.Global, day, rules.NoValue},
 	} {

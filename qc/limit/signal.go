@@ -3,6 +3,7 @@ package limit
 import (
 	"math"
 
+	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
 )
 
@@ -11,7 +12,7 @@ import (
 const MarkBelow = -6000
 
 // IsMark says whether a channel's value is a logger's mark: then the channel counts as having sent nothing.
-func IsMark(v float64) bool { return v <= MarkBelow || math.IsInf(v, 0) }
+func IsMark(v float64) bool { return v <= MarkBelow || v >= minute.NoMeasurementAbove }
 
 // Signal tests that the raw signal lies within the logger's range, low and high in the signal's own unit, NaN where not
 // stated. At a rail the true value is not known.

@@ -26,14 +26,20 @@ func (r *Run) Next(v float64) {
 
 // Stuck tests that a series still moves: it misses once the run is as long as the limit for day or night. Own choice of
 // lengths: a thermopile under any sky moves within minutes by more than a logger resolves, while at night a coarse logger
-// may stand at nothing for hours. A shortwave value of about nothing is the night's own and never stuck by day's measure.
+// may stand still for hours. A shortwave value of about nothing says nothing either way: loggers that write no negative values stand at 0.0
+// all winter night and under thick cloud; a signal that is lost is told by its partners.
 func Stuck(r *Run, q rules.Quantity, s *Sun, l *rules.Limits) rules.Outcome {
 	if math.IsNaN(r.Value) {
 		return rules.NoValue
 	}
 	most := l.StuckMinutes
-	if q.Shortwave() && (s.ZenithDeg > HorizonZenithDeg || math.Abs(r.Value) < NearNothingWm2) {
-		most = l.StuckNightMinutes
+	if q.Shortwave() {
+		if math.Abs(r.Value) < NearNothingWm2 {
+			return rules.TooSmall
+		}
+		if s.ZenithDeg > HorizonZenithDeg {
+			most = l.StuckNightMinutes
+		}
 	}
 	if float64(r.Count) >= most {
 		return rules.Miss
