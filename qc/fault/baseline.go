@@ -13,8 +13,10 @@ import (
 type Baseline struct {
 	closure   [sectors]float64 // global over direct on the horizontal plus diffuse, by the sun's sector
 	known     bool             // closure rests on enough sunlit minutes
+	spread    [sectors]float64 // how far its steady minutes scatter within a day: half of what holds the middle half
 	overcast  float64          // global over diffuse without a beam
 	overcastN int
+	dull      float64    // how far it scatters within a day
 	zero      [3]float64 // night value of global, direct, diffuse, W/m2
 	zeroKnown [3]bool
 	linke     float64 // Linke turbidity of the site's clear minutes
@@ -53,13 +55,15 @@ func (b *Baseline) closureAt(v *view) float64 { return b.closure[sectorOf(v)] }
 const (
 	// trustedMinutes is how many minutes a day's fact must rest on to be taken.
 	trustedMinutes = 20
+	// defaultSpread is the scatter assumed before the station's own is known.
+	defaultSpread = 0.01
 	// defaultLinke is the turbidity assumed before the site's own is known: a mean value of temperate lowland (from memory).
 	defaultLinke = 3.5
 )
 
 // learn makes the baseline from the facts of the days before.
 func learn(s *Setup, day int64, facts []DayFacts) Baseline {
-	b := Baseline{linke: defaultLinke, kGlobal: 1, kDiffuse: 1, kBeam: 1, kLW: 1, overcast: 1, elevation: s.ElevationM}
+	b := Baseline{linke: defaultLinke, kGlobal: 1, kDiffuse: 1, kBeam: 1, kLW: 1, overcast: 1, dull: defaultSpread, elevation: s.ElevationM}
 	b.pressure = exact.Pow(1-float64(2.25577e-5*s.ElevationM), 5.25588)
 	all, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Closure })
 	b.known = n >= 100
@@ -67,13 +71,17 @@ func learn(s *Setup, day int64, facts []DayFacts) Baseline {
 		all = 1
 	}
 	for k := range b.closure {
-		b.closure[k] = all
+		b.closure[k], b.spread[k] = all, defaultSpread
+		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Sector[k].asSpread() }); n >= 100 {
+			b.spread[k] = m
+		}
 		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Sector[k] }); b.known && n >= 100 {
 			b.closure[k] = m
 		}
 	}
 	if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Overcast }); n >= 60 {
 		b.overcast, b.overcastN = m, n
+		b.dull, _ = medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Overcast.asSpread() })
 	}
 	for k := range b.zero {
 		m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Zero[k] })

@@ -45,6 +45,9 @@ type Fact struct {
 	N      int    `json:"n"`
 }
 
+// asSpread gives the spread in the median's place.
+func (f Fact) asSpread() Fact { return Fact{Median: f.Spread, N: f.N} }
+
 func (h *histogram) fact() Fact {
 	if h.n == 0 {
 		return Fact{Median: Number(math.NaN()), Spread: Number(math.NaN())}

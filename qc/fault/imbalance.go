@@ -87,16 +87,16 @@ func (s *sums) add(x [regressors]float64, y float64) {
 
 const (
 	// dullRoom is how far global over diffuse under thick cloud may stand off its usual.
-	dullRoom       = 0.045
+	dullRoom       = 0.018
 	imbalanceRaise = 6.0
 	imbalanceMost  = 12.0
 	// imbalanceQuiet is after how many minutes without a word for it an imbalance is let go.
 	imbalanceQuiet = 36 * 60
 	// grossly is a deviation that few gains reach: then single minutes usually show a plainer cause, and it is given time.
 	grossly = 0.35
-	// closureRoom is the relative deviation from the station's own closure that a sound station stays within, most steady minutes
-	// (own choice; robust daily scatter on measured months is about 1 %).
-	closureRoom = 0.035
+	// closureRoom is the relative deviation from the station's own closure that a sound station may always have (own choice; robust
+	// daily scatter on measured months is about 1 %).
+	closureRoom = 0.025
 	// fineRoom is the same for the mean of hours with a high sun and a steady sky.
 	fineRoom = 0.016
 	// untaughtRoom is the same while the station's own closure is not known yet.
@@ -137,22 +137,22 @@ func (w *Watcher) watchImbalance(v *view) {
 	w.imbalanceStep(v, w.closureRoomAt(v), delta, beam)
 }
 
-// closureRoomAt is how far the closure of a sound station may stand off with the sun where it is: with a low sun the directional
-// errors of the class are a greater share.
+// closureRoomAt is how far the closure of a sound station may stand off with the sun where it is: what it scatters there by itself, the
+// offset of a good instrument, and more on the edge of a cloud.
 func (w *Watcher) closureRoomAt(v *view) float64 {
-	room := closureRoom
-	if !w.base.known {
-		room = untaughtRoom
+	room := untaughtRoom
+	if w.base.known {
+		room = math.Max(closureRoom, math.Min(untaughtRoom, 0.012+float64(3*w.base.spread[sectorOf(v)])))
 	}
-	return float64(room*(1+float64(4*math.Max(0, 0.4-v.mu)))) + (6+float64(0.4*w.moved(v)))/v.sum
+	return room + (4+float64(0.4*w.moved(v)))/v.sum
 }
 
 // dullStep takes a minute without a beam: global over diffuse is the ratio of the two gains, blind to levelling, clock and tracker.
 func (w *Watcher) dullStep(v *view, delta float64) {
 	im := &w.slow.Imbalance
-	room := dullRoom + w.moved(v)/v.sum
+	room := dullRoom + float64(3*w.base.dull) + w.moved(v)/v.sum
 	if w.base.overcastN == 0 {
-		room *= 2
+		room += dullRoom
 	}
 	off := math.Abs(delta) > room
 	if !im.Begun && !off {
