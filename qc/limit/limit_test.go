@@ -288,3 +288,25 @@ func TestSpike(t *testing.T) {
 		}
 	}
 }
+
+// TestFifthRoot: against the power function of qc/exact, whose error is below one unit in the last place.
+func TestFifthRoot(t *testing.T) {
+	worst := 0.0
+	for i := range 400_000 {
+		x := float64(i+1) / 400_000
+		if i%3 == 0 {
+			x = math.Ldexp(x, -i/20_000) // 0.2 is a little more than a fifth: below that the two part
+		}
+		want := exact.Pow(x, 0.2)
+		worst = math.Max(worst, math.Abs(fifthRoot(x)-want)/want)
+	}
+	t.Logf("largest relative difference %.2g", worst)
+	if worst > 9e-16 {
+		t.Errorf("largest relative difference %.2g, allowed 9e-16", worst)
+	}
+	for _, x := range []float64{1, 1.0 / 32, 1.0 / 1024, 32} {
+		if got := math.Pow(fifthRoot(x), 5); math.Abs(got/x-1) > 1e-15 {
+			t.Errorf("the fifth power of the fifth root of %v is %v", x, got)
+		}
+	}
+}

@@ -26,7 +26,7 @@ func SunOf(zenithDeg, cosZenith, apparentZenithDeg, beamMu, saWm2 float64, hidde
 	s := Sun{ZenithDeg: zenithDeg, ApparentZenithDeg: apparentZenithDeg, SaWm2: saWm2, Hidden: hidden}
 	if cosZenith > 0 {
 		s.Mu0 = cosZenith
-		s.Mu0Pow02 = exact.Pow(cosZenith, 0.2)
+		s.Mu0Pow02 = fifthRoot(cosZenith)
 		s.Mu0Pow12 = cosZenith * s.Mu0Pow02
 	}
 	if beamMu > 0 {
