@@ -320,7 +320,7 @@ func (w *Watcher) raiseImbalance(v *view) {
 	if c.lead < 3 && im.N < 240 || math.Abs(im.Recent.Float()) > grossly && im.N < 120 && c.kind != rules.DomeSnow {
 		return
 	}
-	e := w.raise(Episode{Instrument: c.instrument, Kind: c.kind, Also: c.also, Severity: rules.Act, From: w.hindsight(im.Since),
+	e := w.raise(Episode{Instrument: c.instrument, Kind: c.kind, Also: c.also, Severity: im.severity(c, v), From: w.hindsight(im.Since),
 		Raised: v.minute, Confidence: confidence(im.Score.Float() / 2), Evidence: c.evidence})
 	if e != nil {
 		w.slow.Episode = e.ID
@@ -344,6 +344,29 @@ func (w *Watcher) renameImbalance(open int, v *view) {
 		e.Kind, e.Instrument, e.Advice = c.kind, c.instrument, c.kind.Entry().Advice
 		e.Rev++
 	}
+	if e.Severity == rules.Watch && im.severity(c, v) == rules.Act {
+		e.Severity, e.Raised = rules.Act, v.minute
+		e.Rev++
+	}
 	e.Also, e.Evidence = c.also, c.evidence
 	im.Model = c.model
 }
+
+// severity says whether somebody should act: a few percent are watched until they have lasted for days.
+func (im *imbalance) severity(c cause, v *view) rules.Severity {
+	a, b := c.model.A.Float(), c.model.B.Float()
+	size := math.Abs(a)
+	if c.model.K == 3 {
+		size = math.Sqrt(float64(a*a)+float64(b*b)) * leverAt60
+	}
+	if size < smallDeviation && v.minute-im.Since < smallDays*1440 {
+		return rules.Watch
+	}
+	return rules.Act
+}
+
+const (
+	smallDeviation = 0.04
+	smallDays      = 2
+	leverAt60      = 1.73 // of a tilt on the beam with the sun 60 degrees from the zenith: its tangent
+)

@@ -68,6 +68,9 @@ func (c *faultCase) of(s *Setup) string {
 // step takes one minute's hint into case i and raises or ends its episode.
 func (w *Watcher) step(i int, c *faultCase, h hint) {
 	s := &w.cases[i]
+	if h.odds > 0 && restsOnClosing.Has(c.kind) && !math.IsNaN(w.now.value[c.quantity]) && w.upsetBy(c) {
+		return // the open episode accounts for it
+	}
 	switch {
 	case h.odds > 0:
 		if s.Score <= 0 && s.Since == noMinute {
@@ -108,6 +111,17 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 		w.raise(Episode{Instrument: c.of(w.setup), Kind: c.kind, Severity: rules.Act, From: w.hindsight(s.Since), Raised: w.now.minute,
 			Confidence: confidence(s.Score), Evidence: w.evidenceOf(c, s)})
 	}
+}
+
+// upsetBy says whether an open episode of another cause upsets how global, direct and diffuse close.
+func (w *Watcher) upsetBy(c *faultCase) bool {
+	for i := range w.open {
+		e := &w.open[i]
+		if e.Severity == rules.Act && upsetsClosing.Has(e.Kind) && (e.Kind != c.kind || e.Instrument != c.of(w.setup)) && w.isShortwave(e.Instrument) {
+			return true
+		}
+	}
+	return false
 }
 
 // hindsight bounds how far back an episode may reach.
