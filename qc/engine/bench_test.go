@@ -49,19 +49,11 @@ func BenchmarkCore(b *testing.B) {
 	p, first, blocks := benchBlocks(b)
 	judger := NewJudger(p, nil)
 	j := p.NewJudged(first)
-	var summaries []DaySummary
-	for i := range benchDays { // what thirty days have taught
-		judger.BeginWith(j)
-		judger.Advance(blocks[i])
-		summaries = append(summaries, judger.End())
-		p.Reset(j, first+int64(i)+1)
-	}
 	defer perMinute(b)()
 	for i := range b.N {
 		k := i % benchDays
 		if k == 0 {
-			judger = NewJudger(p, nil)
-			judger.history = summaries[:0:0]
+			judger = NewJudger(p, nil) // the same days come again
 		}
 		p.Reset(j, first+int64(k))
 		judger.BeginWith(j)
@@ -94,6 +86,15 @@ func BenchmarkStages(b *testing.B) {
 		}
 	})
 	judger := NewJudger(p, nil)
+	b.Run("sequence", func(b *testing.B) {
+		judger.BeginWith(j)
+		defer perMinute(b)()
+		for range b.N {
+			for r := range minute.PerDay {
+				judger.sequence(r)
+			}
+		}
+	})
 	b.Run("sequence_and_watcher", func(b *testing.B) {
 		defer perMinute(b)()
 		for i := range b.N {
@@ -109,6 +110,7 @@ func BenchmarkStages(b *testing.B) {
 		minutes := make([]fault.Minute, minute.PerDay)
 		for r := range minutes {
 			judger.sequence(r)
+			judger.watch(r)
 			minutes[r] = judger.minute
 		}
 		defer perMinute(b)()

@@ -86,6 +86,7 @@ func (j *Judger) AdvancePrepared(block *minute.Block) {
 	j.block = block
 	for r := j.judged.Rows; r < block.Rows; r++ {
 		j.sequence(r)
+		j.watch(r)
 		j.judged.Rows = r + 1
 	}
 }
@@ -114,7 +115,6 @@ func (j *Judger) sequence(r int) {
 			}
 		}
 	}
-	j.watch(r)
 }
 
 // spike holds row r against its neighbours. It looks at what was measured: the value may have been restored meanwhile, and what is judged
