@@ -72,39 +72,48 @@ func (j *batchJudge) run(all *minute.Batch) error {
 			return err
 		}
 	}
-	first := days[0]
+	history, earlier, err := j.history(days[0])
+	if err != nil {
+		return err
+	}
+	// The day that was the latest so far has no summary yet: it was left open, and is judged to its end now.
+	closed := int64(math.MinInt64)
+	if n := len(history); n > 0 {
+		closed = history[n-1].Day
+	}
 	for _, d := range kept {
 		for _, m := range [2]int64{d - 1, d} { // with end labels the first stamp of a day belongs to the day before
-			if m > first && !slices.Contains(days, m) {
+			if m > closed && !slices.Contains(days, m) {
 				days = append(days, m)
 			}
 		}
 	}
 	slices.Sort(days)
-	history, earlier, err := j.history(first)
-	if err != nil {
-		return err
-	}
 	j.episodes = earlier
 	judger := engine.NewJudger(j.plan, history)
 	stages := j.prepareAhead(days)
 	defer stages.stop()
+	begun := false // a day that the judger has begun and not ended
 	for k := range days {
 		p := <-stages.out
 		if p.err != nil {
 			return p.err
 		}
 		if p.block.Rows == 0 {
-			continue
+			continue // readings of its first minute may belong to the day before
+		}
+		if begun {
+			if err := j.dayDone(judger); err != nil {
+				return err
+			}
 		}
 		judger.BeginWith(p.judged)
 		judger.AdvancePrepared(p.block)
-		if err := j.dayDone(judger, p, k == len(days)-1); err != nil {
-			return err
-		}
+		j.inHand = append(j.inHand, p.judged)
+		j.days, begun = j.days+1, true
 		j.bar.step(k+1, len(days))
 	}
-	return j.finish(judger)
+	return j.finish(judger) // the latest day stays open: its later minutes may still come
 }
 
 // history gives the summaries before a day and the episodes that ended before it.
@@ -132,13 +141,8 @@ func (j *batchJudge) history(first int64) ([]engine.DaySummary, []fault.Episode,
 	return out, ended, nil
 }
 
-// dayDone takes a judged day in hand and lets go of those that no episode can reach any more.
-func (j *batchJudge) dayDone(judger *engine.Judger, p prepared, last bool) error {
-	j.days++
-	j.inHand = append(j.inHand, p.judged)
-	if last {
-		return nil // the latest day stays open: its later minutes may still come
-	}
+// dayDone ends a day and lets go of those in hand that no episode can reach any more.
+func (j *batchJudge) dayDone(judger *engine.Judger) error {
 	s := judger.End()
 	j.episodes = append(j.episodes, s.Closed...)
 	text, err := engine.EncodeSummary(&s)
