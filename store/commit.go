@@ -8,6 +8,7 @@ import (
 	"runtime"
 	"slices"
 	"sync"
+	"time"
 
 	"fluxwarden/store/vfs"
 )
@@ -20,6 +21,12 @@ type draft struct {
 	number  uint64
 	jobs    []*job
 	removes []Removed
+	fresh   map[rawDay]bool // days that gain readings
+}
+
+type rawDay struct {
+	station string
+	day     int64
 }
 
 // A job makes one file.
@@ -32,22 +39,11 @@ type job struct {
 // power cut. With ErrLostPartition nothing has changed. After any other error the archive is as before or as after the commit: open it anew
 // and look at the last record.
 func (a *Archive) Commit(c *Commit) (Record, error) {
-	if a.lock == nil {
-		return Record{}, fmt.Errorf("commit: archive %s is open to read only", a.dir)
+	d, err := a.draft(c)
+	if err != nil {
+		return Record{}, err
 	}
-	if c.Partition < 0 || c.Partition >= Partitions {
-		return Record{}, fmt.Errorf("commit: partition %d: there are %d, from 0 on", c.Partition, Partitions)
-	}
-	p := a.parts[c.Partition]
-	p.commit.Lock()
-	defer p.commit.Unlock()
-	if p.broken != nil {
-		return Record{}, fmt.Errorf("commit: partition %02d: an earlier commit ended half-way (%w); open the archive anew", c.Partition, p.broken)
-	}
-	if c.Base != p.last.Number {
-		return Record{}, fmt.Errorf("commit: partition %02d: stands on record %d, the last one is %d: %w", c.Partition, c.Base, p.last.Number, ErrLostPartition)
-	}
-	d := &draft{c: c, a: a, p: p, number: c.Base + 1}
+	defer d.p.commit.Unlock()
 	if err := d.plan(); err != nil {
 		return Record{}, fmt.Errorf("commit: partition %02d: %w", c.Partition, err)
 	}
@@ -61,9 +57,32 @@ func (a *Archive) Commit(c *Commit) (Record, error) {
 	return r, nil
 }
 
+// draft begins a commit; the partition's commits are locked until the caller unlocks them.
+func (a *Archive) draft(c *Commit) (*draft, error) {
+	if a.lock == nil {
+		return nil, fmt.Errorf("commit: archive %s is open to read only", a.dir)
+	}
+	if c.Partition < 0 || c.Partition >= Partitions {
+		return nil, fmt.Errorf("commit: partition %d: there are %d, from 0 on", c.Partition, Partitions)
+	}
+	p := a.parts[c.Partition]
+	p.commit.Lock()
+	var err error
+	if p.broken != nil {
+		err = fmt.Errorf("commit: partition %02d: an earlier commit ended half-way (%w); open the archive anew", c.Partition, p.broken)
+	} else if c.Base != p.last.Number {
+		err = fmt.Errorf("commit: partition %02d: stands on record %d, the last one is %d: %w", c.Partition, c.Base, p.last.Number, ErrLostPartition)
+	}
+	if err != nil {
+		p.commit.Unlock()
+		return nil, err
+	}
+	return &draft{c: c, a: a, p: p, number: c.Base + 1}, nil
+}
+
 // plan lists the files to make.
 func (d *draft) plan() error {
-	for _, step := range []func() error{d.planRaw, d.planDays, d.planMonths, d.planFaults, d.planSummaries} {
+	for _, step := range []func() error{d.planRaw, d.planDays, d.planMonths, d.planRevisions, d.planFaults, d.planSummaries} {
 		if err := step(); err != nil {
 			return err
 		}
@@ -135,7 +154,10 @@ func (d *draft) encodeOne(j *job) error {
 func (d *draft) finish() (Record, error) {
 	c, p, a := d.c, d.p, d.a
 	r := Record{Partition: c.Partition, Number: d.number, Epoch: c.Epoch, Positions: c.Positions, RulesDigest: c.RulesDigest, Program: c.Program,
-		Previous: p.hash, Removes: d.removes}
+		Reason: c.Reason, Previous: p.hash, Removes: d.removes}
+	if !c.Time.IsZero() {
+		r.Time = c.Time.UTC().Format(time.RFC3339)
+	}
 	for _, j := range d.jobs {
 		r.Files = append(r.Files, j.file)
 	}

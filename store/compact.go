@@ -66,7 +66,7 @@ func (d *draft) compactMinutes(station, month string) {
 		if err := d.inheritMeta(old); err != nil {
 			return nil, f, err
 		}
-		return d.makeMinutes(f, t, days)
+		return d.makeMinutes(f, t, days, old)
 	})
 }
 
@@ -80,7 +80,7 @@ func (d *draft) inheritMeta(old []File) error {
 			return err
 		}
 		for k, v := range meta {
-			if _, ours := own[k]; !ours && k != "columns" {
+			if _, ours := own[k]; !ours && !isOwnMeta(k) {
 				kept[k] = v
 			}
 		}

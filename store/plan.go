@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"slices"
 	"strconv"
+	"time"
 
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/minute"
@@ -20,6 +21,9 @@ func (d *draft) meta(f *File, digests map[string]string) map[string]string {
 	m := map[string]string{"station": f.Station, "table": f.Table, "period": f.Period, "sealed": strconv.FormatBool(f.Sealed),
 		"format": strconv.Itoa(FormatVersion), "partition": strconv.Itoa(d.c.Partition), "commit": strconv.FormatUint(d.number, 10),
 		"program": d.c.Program, "rules_digest": d.c.RulesDigest}
+	if !d.c.Time.IsZero() {
+		m["written"] = d.c.Time.UTC().Format(time.RFC3339)
+	}
 	if f.Table == TableMinutes {
 		for k, v := range d.c.Meta {
 			m[k] = v
@@ -37,6 +41,12 @@ func (d *draft) add(f File, makeFile func(f File) ([]byte, File, error)) {
 }
 
 func (d *draft) planRaw() error {
+	for _, r := range d.c.Raw {
+		if d.fresh == nil {
+			d.fresh = map[rawDay]bool{}
+		}
+		d.fresh[rawDay{r.Batch.Station, r.Day}] = true
+	}
 	type key struct {
 		station string
 		day     int64
@@ -150,14 +160,16 @@ func (d *draft) planDays() error {
 
 func (d *draft) planDay(day Day) {
 	j := day.Judged
+	var old []File
 	for _, f := range d.current(j.Station, TableMinutes) {
 		if f.Period == dayName(j.Day) {
+			old = append(old, f)
 			d.replace(f)
 		}
 	}
 	t := table.FromJudged(j)
 	d.add(File{Table: TableMinutes, Station: j.Station, Period: dayName(j.Day), Sealed: day.Sealed}, func(f File) ([]byte, File, error) {
-		return d.makeMinutes(f, t, []monthDay{{j.Day, 0, t.Rows}})
+		return d.makeMinutes(f, t, []monthDay{{day: j.Day, to: t.Rows}}, old)
 	})
 }
 
@@ -170,12 +182,16 @@ func (d *draft) monthFile(station, month string) *File {
 	return nil
 }
 
-func (d *draft) makeMinutes(f File, t *table.Table, days []monthDay) ([]byte, File, error) {
+// makeMinutes writes the rows in place of the old files'.
+func (d *draft) makeMinutes(f File, t *table.Table, days []monthDay, old []File) ([]byte, File, error) {
 	f.Digests = map[string]string{}
-	for _, x := range days {
-		f.Digests[dayName(x.day)] = table.Digest(t, x.from, x.to)
+	for i := range days {
+		f.Digests[dayName(days[i].day)] = days[i].digestOf(t)
 	}
 	f.Rows, t.Meta = t.Rows, d.meta(&f, f.Digests)
+	if err := d.dateDays(&f, t.Meta, old); err != nil {
+		return nil, f, err
+	}
 	w := minuteWriters.Get().(*table.Writer)
 	var b bytes.Buffer
 	if err := w.Write(&b, t); err != nil {
@@ -209,7 +225,7 @@ func (d *draft) addMonth(m *Month) {
 		if err != nil {
 			return nil, f, err
 		}
-		return d.makeMinutes(f, t, days)
+		return d.makeMinutes(f, t, days, old)
 	})
 }
 
@@ -243,7 +259,7 @@ func (a *Archive) mergeMonth(m *Month, old []File) (*table.Table, []monthDay, er
 	parts, days, at := make([]table.Part, len(list)), make([]monthDay, len(list)), 0
 	for i, s := range list {
 		parts[i] = s.part
-		days[i] = monthDay{s.day, at, at + s.part.To - s.part.From}
+		days[i] = monthDay{day: s.day, from: at, to: at + s.part.To - s.part.From}
 		at = days[i].to
 	}
 	return table.Join(table.MinuteColumns(), parts), days, nil
@@ -259,7 +275,7 @@ func daysOf(t *table.Table) []monthDay {
 	for r, x := range v.Times {
 		day := minute.Stamp(x).Day()
 		if n := len(list); n == 0 || list[n-1].day != day {
-			list = append(list, monthDay{day, r, r})
+			list = append(list, monthDay{day: day, from: r, to: r})
 		}
 		list[len(list)-1].to = r + 1
 	}

@@ -34,10 +34,13 @@ type Commit struct {
 	RulesDigest string
 	Program     string            // name and version of the program
 	Meta        map[string]string // goes into the metadata of the files of minutes: calibrations, licence, citation
+	Reason      string            // why rows change, as history shows it; where it is empty the store says what it can see
+	Time        time.Time         // when it is made, by the caller's clock; zero is not said
 
 	Raw       []RawPart
 	Days      []Day
 	Months    []*Month
+	Revisions []*Month // days that replace those in the archive, each in the file that it is in; days with the same rows are left alone
 	Faults    []StationFaults
 	Summaries []Summary
 }
@@ -80,6 +83,15 @@ type Month struct {
 type monthDay struct {
 	day      int64
 	from, to int
+	digest   string // empty until it is asked for
+}
+
+// digestOf gives the row digest of a day of the table.
+func (x *monthDay) digestOf(t *table.Table) string {
+	if x.digest == "" {
+		x.digest = table.Digest(t, x.from, x.to)
+	}
+	return x.digest
 }
 
 // NewMonth makes a month without days.
@@ -96,7 +108,7 @@ func (m *Month) Add(j *engine.Judged) error {
 		return fmt.Errorf("month %s of %s: day %s: not after the day before", m.Month, m.Station, dayName(j.Day))
 	}
 	table.Append(m.rows, j, m.used)
-	m.days = append(m.days, monthDay{j.Day, m.used, m.used + j.Rows})
+	m.days = append(m.days, monthDay{day: j.Day, from: m.used, to: m.used + j.Rows})
 	m.used += j.Rows
 	return nil
 }
@@ -137,6 +149,8 @@ type Record struct {
 	Positions   []Position `json:"positions"`
 	RulesDigest string     `json:"rules"`
 	Program     string     `json:"program"`
+	Reason      string     `json:"reason,omitempty"`   // why rows change, where the writer said so
+	Time        string     `json:"time,omitempty"`     // when it was made, RFC 3339, where the writer said so
 	Previous    string     `json:"previous,omitempty"` // sha256 of the record before
 	Files       []File     `json:"files"`
 	Removes     []Removed  `json:"removes,omitempty"`
