@@ -15,11 +15,12 @@ const LowSunZenithDeg = 93
 
 // Closure tests global against direct on the horizontal plus diffuse.
 //
-//	|G - (B*mu + D)| <= max(tolerance * (B*mu + D), floor)
+//	|G - (B*mu + D)| <= sqrt((tolerance * (B*mu + D))^2 + floor^2)
 //
 // Inputs in W/m2, as measured; mu is of the apparent sun. The relative tolerance is 0.08 below 75 degrees and 0.15 to 93
-// (Long & Dutton 2002, from memory); the absolute floor is a deviation from it: it is the combined uncertainty of three
-// class A instruments, without which a ten-watt offset would question every dull minute. Not applicable without all three,
+// (Long & Dutton 2002, from memory). The floor is a deviation from it: the published ratio says nothing of zero offsets and directional
+// errors, which three class A instruments together may have 20 W/m2 of, and without which a ten-watt offset would question every dull minute. The two
+// are independent, so they add as uncertainties do; with a floor of nothing it is the published test. Not applicable without all three,
 // with a sum not above ClosureMinWm2, or with the sun behind the horizon mask.
 func Closure(g, b, d float64, s *Sun, l *rules.Limits) rules.Outcome {
 	if math.IsNaN(g) {
@@ -42,8 +43,11 @@ func Closure(g, b, d float64, s *Sun, l *rules.Limits) rules.Outcome {
 	if s.ZenithDeg >= HighSunZenithDeg {
 		tolerance = l.ClosureLow
 	}
-	if math.Abs(g-sum) > math.Max(tolerance*sum, l.ClosureFloorWm2) {
+	if math.Abs(g-sum) > together(tolerance*sum, l.ClosureFloorWm2) {
 		return rules.Miss
 	}
 	return rules.Pass
 }
+
+// together is the root of the sum of two squares: what two independent uncertainties come to.
+func together(a, b float64) float64 { return math.Sqrt(float64(a*a) + float64(b*b)) }

@@ -8,7 +8,7 @@ import (
 
 // DiffuseRatio tests that diffuse is not more than global.
 //
-//	D <= max(ratio * G, G + floor)
+//	D <= G + sqrt(((ratio - 1) * G)^2 + floor^2)
 //
 // W/m2; ratio 1.05 below 75 degrees and 1.10 to 93, for G above 50 W/m2 (Long & Dutton 2002, from memory). The floor is
 // closure's, for the same reason. Not applicable without both, with a small global or a low sun.
@@ -29,7 +29,7 @@ func DiffuseRatio(g, d float64, s *Sun, l *rules.Limits) rules.Outcome {
 	if s.ZenithDeg >= HighSunZenithDeg {
 		ratio = l.DiffuseRatioLow
 	}
-	if d > math.Max(ratio*g, g+l.ClosureFloorWm2) {
+	if d > g+together((ratio-1)*g, l.ClosureFloorWm2) {
 		return rules.Miss
 	}
 	return rules.Pass
