@@ -152,7 +152,8 @@ func TestMuMinutesAgo(t *testing.T) {
 
 // planted is a clear day's imbalance of an instrument that is off: what gather would have summed.
 func planted(t *rapid.T, gainG, gainP, gainD, tiltE, tiltN float64) *imbalance {
-	d := sun.NewDay(20000+rapid.Int64Range(0, 364).Draw(t, "day"), sun.Site{LatitudeDeg: rapid.Float64Range(-45, 45).Draw(t, "latitude")})
+	latitude := rapid.Float64Range(25, 55).Draw(t, "latitude") * float64(1-2*rapid.IntRange(0, 1).Draw(t, "south"))
+	d := sun.NewDay(20000+rapid.Int64Range(0, 364).Draw(t, "day"), sun.Site{LatitudeDeg: latitude})
 	im := &imbalance{}
 	noise := uint64(rapid.Uint32().Draw(t, "noise"))
 	for m := range 1440 {
@@ -178,7 +179,8 @@ func planted(t *rapid.T, gainG, gainP, gainD, tiltE, tiltN float64) *imbalance {
 	return im
 }
 
-// What is planted is found again. A tilt is drawn a little towards none (the ridge): near the equator the sun's arc hardly shows its north part.
+// What is planted is found again. A tilt is drawn a little towards none (the ridge): under a sun that passes overhead its north part hardly shows,
+// so the tropics are left out here.
 func TestFitsFindWhatWasPlanted(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {
 		gain := rapid.Float64Range(0.03, 0.2).Draw(t, "gain") * float64(1-2*rapid.IntRange(0, 1).Draw(t, "sign"))
@@ -201,7 +203,7 @@ func TestFitsFindWhatWasPlanted(t *testing.T) {
 		im := planted(t, 0, 0, 0, tilt*sinDeg(towards), tilt*cosDeg(towards))
 		east, north, misfit := im.fitTilt()
 		off := math.Hypot(east-tilt*sinDeg(towards), north-tilt*cosDeg(towards)) * 180 / math.Pi
-		if off > 0.1+0.12*tilt*180/math.Pi || misfit > 2 {
+		if off > 0.1+0.1*tilt*180/math.Pi || misfit > 4 {
 			t.Fatalf("tilt to the east %v, to the north %v: %v degrees off, misfit %v", east, north, off, misfit)
 		}
 		back := math.Abs(math.Mod(bearing(east, north)-towards+540, 360) - 180)
