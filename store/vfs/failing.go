@@ -9,10 +9,11 @@ import (
 // mkdir, rename, link, remove, syncdir, lock, write, sync, close.
 type Failing struct {
 	FS
-	Fail func(op, name string, index int) error // nil goes on
+	Fail func(op, name string, index int) error // nil goes on; it is asked of one operation at a time, in the order of their numbers
 
-	mu    sync.Mutex
-	count int
+	asking sync.Mutex
+	mu     sync.Mutex
+	count  int
 }
 
 // Count is how many operations there were.
@@ -23,6 +24,8 @@ func (f *Failing) Count() int {
 }
 
 func (f *Failing) ask(op, name string) error {
+	f.asking.Lock()
+	defer f.asking.Unlock()
 	f.mu.Lock()
 	i := f.count
 	f.count++
