@@ -147,7 +147,8 @@ func (b *Budget) shortwave(c *Conditions) float64 {
 const infraredOfClassWm2 = 200.0
 
 func (b *Budget) longwave(c *Conditions) float64 {
-	l := b.longwaveOf(c)
+	var l longwaveState
+	b.longwaveOf(c, &l)
 	years := known(c.Years, YearsAssumed)
 	s := &b.square
 	return s[byNothing] + float64(float64(l.net*l.net)*(s[byNet]+float64(float64(years*years)*s[byNetYears]))) +
@@ -168,7 +169,8 @@ const (
 	zeroCelsiusK      = 273.15
 )
 
-func (b *Budget) longwaveOf(c *Conditions) (l longwaveState) {
+// longwaveOf fills a state in place: copying it back would cost as much as working it out.
+func (b *Budget) longwaveOf(c *Conditions, l *longwaveState) {
 	l.beam = b.beam(c)
 	if l.net = c.NetWm2; l.net != l.net {
 		if l.net = netDownAssumedWm2; b.quantity == rules.LWUp {
@@ -181,8 +183,9 @@ func (b *Budget) longwaveOf(c *Conditions) (l longwaveState) {
 		dome, domeKelvin := emission(c.DomeC)
 		l.domeKelvin, l.exchange = domeKelvin, dome-l.body
 	}
-	l.clearness = math.Min(1, math.Abs(l.net)*(1/clearNetWm2))
-	return l
+	if l.clearness = math.Abs(l.net) * (1 / clearNetWm2); l.clearness > 1 {
+		l.clearness = 1
+	}
 }
 
 // clearNetWm2 is the net longwave under a clear sky, roughly (common practice).
@@ -190,7 +193,10 @@ const clearNetWm2 = 100.0
 
 // emission is a black body's flux at a temperature, W/m2, and how much it grows for a kelvin; nothing under absolute zero.
 func emission(temperatureC float64) (flux, perKelvin float64) {
-	k := math.Max(0, temperatureC+zeroCelsiusK)
+	k := temperatureC + zeroCelsiusK
+	if k < 0 {
+		k = 0
+	}
 	cubed := float64(sensor.StefanBoltzmann * k * k * k)
 	return cubed * k, 4 * cubed
 }
@@ -237,7 +243,8 @@ func (b *Budget) drivers(c *Conditions) (d [driverCount]float64) {
 		d[byInfrared] = math.Abs(c.NetWm2) / infraredOfClassWm2
 	}
 	if b.quantity.Longwave() {
-		l := b.longwaveOf(c)
+		var l longwaveState
+		b.longwaveOf(c, &l)
 		d[byNet], d[byNetYears], d[byEmission] = math.Abs(l.net), math.Abs(l.net)*years, l.body
 		d[byBodyKelvin], d[byDomeKelvin], d[byDomeExchange], d[byClearness] = l.bodyKelvin, l.domeKelvin, math.Abs(l.exchange), l.clearness
 	}
