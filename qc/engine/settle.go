@@ -36,6 +36,9 @@ func settleTests(plan *Plan, j *Judged, i int) {
 	s := &j.Series[i]
 	n := j.Rows
 	copy(s.Value[:n], s.Measured[:n])
+	if s.soundU95 != nil {
+		copy(s.U95[:n], s.soundU95[:n])
+	}
 	clear(s.Faults[:n])
 	clear(s.Restored[:n])
 	for r, missed := range s.Missed[:n] {
@@ -88,14 +91,25 @@ func settleEpisode(plan *Plan, j *Judged, i int, e *fault.Episode, lo, hi int, r
 			continue
 		}
 		s.Faults[r] |= e.Kind.Of()
-		switch effect := rules.FaultEffect(e.Kind, e.Severity).Verdict(); {
+		switch effect := episodeEffect(e, s.Quantity).Verdict(); {
 		case ok:
 			s.Value[r], s.Restored[r] = RoundIrradiance(restored), true
+			s.U95[r] = plan.restoredU95(j, i, r, e, s.Value[r])
 			s.Verdict[r] = rules.RestoredEffect.Verdict()
 		case s.Verdict[r] != rules.Absent && effect > s.Verdict[r]:
 			s.Verdict[r] = effect
 		}
 	}
+}
+
+// episodeEffect is what an episode does to a quantity's minutes that it reaches. Longwave moves slowly: under a wrong clock it is seldom
+// far off, and questioned at most.
+func episodeEffect(e *fault.Episode, q rules.Quantity) rules.Effect {
+	effect := rules.FaultEffect(e.Kind, e.Severity)
+	if e.Kind == rules.ClockShift && q.Longwave() {
+		return min(effect, rules.Question)
+	}
+	return effect
 }
 
 func measuredOf(plan *Plan, j *Judged, q rules.Quantity, r int) float64 {
