@@ -6,6 +6,7 @@ import (
 	"fluxwarden/qc/limit"
 	"fluxwarden/qc/minute"
 	"fluxwarden/qc/sensor"
+	"fluxwarden/qc/uncertainty"
 	"fluxwarden/rules"
 )
 
@@ -25,13 +26,14 @@ func signalMicrovolts(unit string) float64 {
 type calibrationPeriod struct {
 	from, to int64
 	cal      *rules.Calibration
+	budget   *uncertainty.Budget
 }
 
 func periodsOf(in *rules.Instrument) []calibrationPeriod {
 	out := make([]calibrationPeriod, 0, len(in.Calibrations))
 	for i := range in.Calibrations {
 		c := &in.Calibrations[i]
-		p := calibrationPeriod{from: minute.FloorDiv(c.From.Unix(), 60), to: math.MaxInt64, cal: c}
+		p := calibrationPeriod{from: minute.FloorDiv(c.From.Unix(), 60), to: math.MaxInt64, cal: c, budget: uncertainty.NewBudget(in, c)}
 		if !c.To.IsZero() {
 			p.to = minute.FloorDiv(c.To.Unix(), 60)
 		}

@@ -28,7 +28,8 @@ type Judged struct {
 
 	Series []Series // one an instrument, in the site file's order, then the weather
 
-	sun sunDay
+	sun  sunDay
+	beam []float64 // direct normal irradiance that uncertainties are worked out with, W/m2
 }
 
 // A Series is one instrument's judged minutes, or one weather quantity's.
@@ -40,8 +41,8 @@ type Series struct {
 	Value      []float64 // after corrections; NaN where absent
 	SD         []float64 // of the samples in the minute
 	Min, Max   []float64
-	N          []uint32 // samples
-	U95        []float64
+	N          []uint32  // samples
+	U95        []float64 // expanded uncertainty of Value, k=2
 	Verdict    []rules.Verdict
 	Missed     []rules.TestSet
 	Passed     []rules.TestSet
@@ -49,6 +50,7 @@ type Series struct {
 	Restored   []bool                           // the value was restored from a fault
 	Outcomes   [rules.TestCount][]rules.Outcome // of the tests that this series has; nil for the others
 
+	soundU95     []float64 // U95 of Measured; nil for weather
 	marked       []bool    // the logger sent a mark instead of a value
 	bodyC, domeC []float64 // of a pyrgeometer; nil for others
 	net          []float64 // thermopile signal over sensitivity, W/m2; NaN where the logger converts
@@ -69,7 +71,7 @@ func newJudged(p *Plan, day int64) *Judged {
 	j := &Judged{Station: p.Station.ID, Records: make([]uint16, minute.PerDay)}
 	f := floats{}
 	for _, c := range []*[]float64{&j.ZenithDeg, &j.ApparentZenithDeg, &j.AzimuthDeg, &j.CosZenith, &j.ExtraterrestrialWm2,
-		&j.ClearGlobalWm2, &j.ClearDirectWm2, &j.ClearDiffuseWm2, &j.ClearLWDownWm2} {
+		&j.ClearGlobalWm2, &j.ClearDirectWm2, &j.ClearDiffuseWm2, &j.ClearLWDownWm2, &j.beam} {
 		*c = f.cut()
 	}
 	j.Series = make([]Series, len(p.series))
@@ -92,6 +94,9 @@ func (s *seriesPlan) columns(f *floats) Series {
 		N: make([]uint32, minute.PerDay), Verdict: make([]rules.Verdict, minute.PerDay), Missed: make([]rules.TestSet, minute.PerDay),
 		Passed: make([]rules.TestSet, minute.PerDay), Faults: make([]rules.FaultSet, minute.PerDay), Restored: make([]bool, minute.PerDay),
 		marked: make([]bool, minute.PerDay)}
+	if s.instrument != nil {
+		out.soundU95 = f.cut()
+	}
 	if s.quantity.Longwave() {
 		out.bodyC, out.domeC, out.net = f.cut(), f.cut(), f.cut()
 	}

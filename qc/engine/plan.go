@@ -10,6 +10,7 @@ import (
 	"fluxwarden/qc/limit"
 	"fluxwarden/qc/minute"
 	"fluxwarden/qc/sun"
+	"fluxwarden/qc/uncertainty"
 	"fluxwarden/rules"
 )
 
@@ -41,6 +42,7 @@ type seriesPlan struct {
 	domeCol       int
 	microvolts    float64 // in one unit of the signal
 	periods       []calibrationPeriod
+	unstated      *uncertainty.Budget // where no calibration is stated; nil where the value is absent then
 	tests         rules.TestSet
 	zeroAllowance float64 // how far below nothing a sound one may read, W/m2
 }
@@ -99,7 +101,7 @@ func (p *Plan) addInstruments() error {
 		}
 		err := p.add(seriesPlan{id: in.ID, quantity: in.Measures, instrument: in, primary: in.Primary || counts[in.Measures] == 1,
 			signal: p.column(signal), bodyCol: p.column(in.Input.Case), domeCol: p.column(in.Input.Dome),
-			microvolts: signalMicrovolts(in.Input.SignalUnit), periods: periodsOf(in),
+			microvolts: signalMicrovolts(in.Input.SignalUnit), periods: periodsOf(in), unstated: unstatedBudget(in),
 			zeroAllowance: limit.NightZeroAllowance(in.Class, in.Measures, &p.Station.Limits)})
 		if err != nil {
 			return err

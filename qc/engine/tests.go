@@ -38,6 +38,7 @@ func (p *Plan) Prepare(j *Judged, block *minute.Block, from, to int) {
 		p.singleTests(j, &p.series[i], &j.Series[i], block, from, to)
 	}
 	p.pairTests(j, from, to)
+	p.uncertainty(j, from, to)
 }
 
 // singleTests runs what needs one series alone. It begins the rows' sets of tests.
