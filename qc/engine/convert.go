@@ -76,7 +76,7 @@ func (s *seriesPlan) convert(out *Series, block *minute.Block, nothing []float64
 	first := block.Day * minute.PerDay
 	for r := from; r < to; {
 		cal, until := s.at(first + int64(r))
-		end := int(min(until-first, int64(to)))
+		end := int(min(until, first+int64(to)) - first)
 		switch {
 		case cal == nil:
 			s.uncalibrated(out, col, r, end)

@@ -29,7 +29,7 @@ func (p *Plan) uncertainty(j *Judged, from, to int) {
 		first := j.Day * minute.PerDay
 		for r := from; r < to; {
 			budget, c, until := s.budgetAt(first + int64(r))
-			end := int(min(until-first, int64(to)))
+			end := int(min(until, first+int64(to)) - first) // until may be the greatest number there is
 			if budget == nil {
 				copy(out.soundU95[r:end], p.nothing)
 			} else {

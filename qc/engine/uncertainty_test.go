@@ -192,3 +192,11 @@ func BenchmarkUncertainty(b *testing.B) {
 		})
 	}
 }
+
+// TestU95BeforeTheEpoch: a station without a calibration on a day before 1970, where minutes count below nothing.
+func TestU95BeforeTheEpoch(t *testing.T) {
+	j := judgedMinutes(t, planOf(t, plainText), "1969-12-31", map[int]map[string]float64{727: {"ghi": 500}})
+	if u := j.Primary(rules.Global).U95; !(u[727] > 0) || u[728] == u[728] {
+		t.Errorf("U95 %v", u[726:730])
+	}
+}
