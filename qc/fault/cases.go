@@ -35,7 +35,7 @@ func init() {
 		{kind: rules.UnitSlip, quiet: quietDays, quantity: rules.Direct, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
 		{kind: rules.UnitSlip, quiet: quietDays, quantity: rules.Diffuse, needs: threeShortwave, raise: 5, most: 10, evidence: unitSlip, number: "factor", unit: "1"},
 		{kind: rules.ChannelsSwapped, quiet: quietDays, quantity: rules.Global, needs: threeShortwave, raise: 5, most: 10, evidence: channelsSwapped, number: "diffuse_above_global", unit: "W/m2"},
-		{kind: rules.PointingLost, quantity: rules.Direct, instrument: Tracker, needs: threeShortwave, raise: 6, most: 24, quiet: 1800, evidence: pointingLost, number: "global_over_clear_sky", unit: "1"},
+		{kind: rules.PointingLost, quantity: rules.Direct, instrument: Tracker, needs: threeShortwave, raise: 6, most: 24, quiet: 5 * 1440, evidence: pointingLost, number: "global_over_clear_sky", unit: "1"},
 		{kind: rules.ShadeOff, quantity: rules.Diffuse, needs: threeShortwave, raise: 6, most: 15, quiet: 2880, evidence: shadeOff, number: "share_of_beam_on_diffuse", unit: "1"},
 		{kind: rules.Noise, quantity: rules.Global, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},
 		{kind: rules.Noise, quantity: rules.Direct, needs: threeShortwave, raise: 6, most: 9, evidence: noise, number: "scatter", unit: "W/m2"},

@@ -18,6 +18,8 @@ type jump struct {
 	Last  int64  `json:"last"`
 	// Against counts the sunlit minutes since then that fit the stamps as they are: enough of them, and the clock never jumped
 	Against int `json:"against"`
+	// Fits counts those that fit the stamps as they are, whether or not they would fit the shift too
+	Fits int `json:"fits"`
 }
 
 const (
@@ -27,7 +29,8 @@ const (
 	jumpRaise     = 3.0
 	jumpMost      = 8.0
 	jumpDaysWatch = 10
-	jumpAgainst   = 30 // sunlit minutes that acquit the clock
+	jumpAgainst   = 30  // sunlit minutes that acquit the clock
+	jumpFits      = 150 // sunlit minutes that do so too, if the shift would hardly show
 )
 
 // seeHole notes that no record came for some minutes.
@@ -111,10 +114,13 @@ func (w *Watcher) watchClock(v *view) {
 		then := math.Max(0, w.muMinutesAgo(v, j.Shift))
 		shifted := math.Abs(g - float64(c*(float64(b*then)+d)))
 		odds := 0.0
+		if asStamped < room {
+			j.Fits++
+		}
 		switch {
 		case shifted < 1.5*room && asStamped > 1.5*room:
 			odds = math.Min(0.2, 0.1*(asStamped-shifted)/room)
-		case shifted > 3*room:
+		case shifted > 3*room && (asStamped < 1.5*room || !w.clockOpen(*j)):
 			odds = -0.2
 			if asStamped < 1.5*room {
 				j.Against++
@@ -132,7 +138,7 @@ func (w *Watcher) watchClock(v *view) {
 		}
 		w.clockEpisode(v, j)
 	}
-	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(j jump) bool { return j.Against >= jumpAgainst && j.Score <= 0 && !w.clockOpen(j) })
+	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(j jump) bool { return (j.Against >= jumpAgainst || j.Fits >= jumpFits) && j.Score <= 0 && !w.clockOpen(j) })
 }
 
 func (w *Watcher) clockEpisode(v *view, j *jump) {

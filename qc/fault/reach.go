@@ -33,8 +33,8 @@ func Reaches(e *Episode, q rules.Quantity, measured, apparentZenithDeg, azimuthD
 		return apparentZenithDeg < sunlit || q.Longwave()
 	case rules.DomeWet, rules.DomeSnow:
 		return apparentZenithDeg < sunlit || q.Longwave()
-	case rules.ClockShift:
-		return apparentZenithDeg < 97 && q.Shortwave()
+	case rules.ClockShift: // at night there is nothing to be early or late with, but in the longwave
+		return apparentZenithDeg < 97 || q.Longwave()
 	case rules.Shadow:
 		from, ok1 := e.number("bearing_from")
 		to, ok2 := e.number("bearing_to")

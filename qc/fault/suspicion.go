@@ -101,6 +101,10 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 		return
 	}
 	if open < 0 && s.Score >= c.raise {
+		if w.imbalanceEpisode() >= 0 && c.kind == rules.ZeroOffset {
+			w.becomeZeroOffset(c, s)
+			return
+		}
 		if k := w.openIndex(c.of(w.setup), rules.RangeClipped); k >= 0 && c.kind == rules.SignalFrozen {
 			e := &w.open[k] // what seemed clipped has stood still where it should have fallen
 			e.Kind, e.Advice, e.Evidence = c.kind, c.kind.Entry().Advice, w.evidenceOf(c, s)

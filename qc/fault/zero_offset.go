@@ -1,6 +1,25 @@
 package fault
 
-import "math"
+import (
+	"math"
+
+	"fluxwarden/rules"
+)
+
+// becomeZeroOffset turns the open imbalance into a zero offset, which the night has now shown: by day an offset upsets how the three
+// close as a gain or a tilt does.
+func (w *Watcher) becomeZeroOffset(c *faultCase, s *suspicion) {
+	e := &w.open[w.imbalanceEpisode()]
+	id := c.of(w.setup)
+	if e.Instrument != id || e.Severity != rules.Act {
+		e.Raised = w.now.minute
+	}
+	e.Instrument, e.Kind, e.Also, e.Severity, e.Advice = id, c.kind, nil, rules.Act, c.kind.Entry().Advice
+	e.Evidence = w.evidenceOf(c, s)
+	e.Confidence = confidence(s.Score)
+	e.Rev++
+	w.slow.Episode, w.slow.Imbalance = "", imbalance{}
+}
 
 // zeroOffset: at night a shortwave instrument stands steadily off where it has stood in the nights before. A sky that clears or clouds
 // over moves the zero of a sound one by a few watts (ISO 9060:2018: 7 W/m2 at 200 W/m2 of net longwave for class A, from
