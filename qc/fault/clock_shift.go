@@ -138,7 +138,9 @@ func (w *Watcher) watchClock(v *view) {
 		}
 		w.clockEpisode(v, j)
 	}
-	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(j jump) bool { return (j.Against >= jumpAgainst || j.Fits >= jumpFits) && j.Score <= 0 && !w.clockOpen(j) })
+	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(j jump) bool {
+		return (j.Against >= jumpAgainst || j.Fits >= jumpFits) && j.Score <= 0 && !w.clockOpen(j)
+	})
 }
 
 func (w *Watcher) clockEpisode(v *view, j *jump) {
