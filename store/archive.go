@@ -65,6 +65,11 @@ type formatFile struct {
 	About  string `json:"about"`
 }
 
+func formatText() []byte {
+	b, _ := json.Marshal(formatFile{FormatVersion, "archive of fluxwarden; the tree under raw/, minutes/ and faults/ is plain Parquet"})
+	return append(b, '\n')
+}
+
 // Open opens an archive to read; a writer may be at work meanwhile.
 func Open(f vfs.FS, dir string) (*Archive, error) {
 	a := newArchive(f, dir)
@@ -98,8 +103,7 @@ func OpenForWriting(f vfs.FS, dir string, o Options) (*Archive, error) {
 func (a *Archive) begin() error {
 	err := a.checkFormat()
 	if errors.Is(err, fs.ErrNotExist) {
-		b, _ := json.Marshal(formatFile{FormatVersion, "archive of fluxwarden; the tree under raw/, minutes/ and faults/ is plain Parquet"})
-		err = a.writeAtomic("archive.json", append(b, '\n'))
+		err = a.writeAtomic("archive.json", formatText())
 	}
 	if err != nil {
 		return err
@@ -248,6 +252,9 @@ func (a *Archive) KeepRules(digest string, yaml []byte) error {
 	}
 	name := path.Join("rules", digest+".yaml")
 	if ok, err := vfs.Exists(a.fs, a.path(name)); ok || err != nil {
+		return err
+	}
+	if err := a.writeAtomic(name+".sha256", []byte(sumLine(name, yaml))); err != nil {
 		return err
 	}
 	return a.writeAtomic(name, yaml)

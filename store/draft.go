@@ -31,8 +31,8 @@ func (a *Archive) Begin(c *Commit) (*Draft, error) {
 }
 
 // Add adds the content of c: readings, days, months, revisions, faults, summaries. It goes on writing after it has returned, so what
-// was added must not be changed any more. All that makes one file comes in one Add: the summaries of a month, the readings of a day. An
-// error of earlier writing is given too. Add is not for several goroutines.
+// was added must not be changed any more. All that makes one file comes in one Add: the summaries of a month, the readings of a day. A
+// reason in c holds for its days instead of the draft's. An error of earlier writing is given too. Add is not for several goroutines.
 func (t *Draft) Add(c *Commit) error {
 	t.mu.Lock()
 	err := t.err
@@ -44,6 +44,9 @@ func (t *Draft) Add(c *Commit) error {
 	content := t.begun
 	content.Raw, content.Days, content.Months, content.Revisions = c.Raw, c.Days, c.Months, c.Revisions
 	content.Faults, content.Summaries = c.Faults, c.Summaries
+	if c.Reason != "" {
+		content.Reason = c.Reason
+	}
 	// The jobs of this Add see the content as it is now; what earlier ones see does not change under them.
 	part := &draft{c: &content, a: d.a, p: d.p, number: d.number, fresh: d.fresh}
 	if err := part.plan(); err != nil {

@@ -27,6 +27,7 @@ type partition struct {
 	checkpointed uint64                       // number of the record that the checkpoint stands on
 	pruned       uint64                       // records up to here are deleted
 	broken       error                        // a commit ended half-way
+	trouble      []Finding                    // what was wrong with the books when they were read
 	files        map[string]map[string][]File // by station, then table; by period and path
 }
 
@@ -92,7 +93,7 @@ func (a *Archive) load() error {
 		slots <- struct{}{}
 		go func() {
 			defer wg.Done()
-			errs[i] = a.loadPartition(i, a.parts[i])
+			errs[i] = a.loadWhole(i, a.parts[i])
 			<-slots
 		}()
 	}
@@ -106,6 +107,14 @@ func (a *Archive) load() error {
 	return a.adopt()
 }
 
+// loadWhole is loadPartition, and errs where a record is missing before later ones.
+func (a *Archive) loadWhole(i int, p *partition) error {
+	if err := a.loadPartition(i, p); err != nil {
+		return err
+	}
+	return a.noGap(i, p.last.Number+1)
+}
+
 func (a *Archive) knowStations(i int) {
 	a.mu.Lock()
 	defer a.mu.Unlock()
@@ -117,11 +126,21 @@ func (a *Archive) knowStations(i int) {
 func (a *Archive) loadPartition(i int, p *partition) error {
 	p.mu.Lock()
 	defer p.mu.Unlock()
-	err := a.loadCheckpoint(i, p)
+	damage := a.loadCheckpoint(i, p)
+	if damage != nil {
+		p.trouble = append(p.trouble, Finding{checkpointPath(i), damage.Error(), true})
+	}
 	next := p.last.Number + 1
-	if err != nil || !p.have {
-		if next, err = a.firstRecord(i); err != nil || next == 0 {
+	if !p.have {
+		var err error
+		if next, err = a.firstRecord(i); err != nil {
 			return err
+		}
+		if next == 0 && damage != nil {
+			return a.rebuildPartition(i, p)
+		}
+		if next == 0 {
+			return nil
 		}
 	}
 	return a.foldFrom(i, p, next)
@@ -136,8 +155,11 @@ func (a *Archive) loadCheckpoint(i int, p *partition) error {
 		return err
 	}
 	var c checkpointFile
-	if err := json.Unmarshal(b, &c); err != nil || c.Record.Number == 0 || c.Record.Partition != i {
-		return fmt.Errorf("%s: damaged: %v", checkpointPath(i), err)
+	if err := json.Unmarshal(b, &c); err != nil {
+		return fmt.Errorf("damaged: %w; the books are taken from the records or the tree, and it is written anew with the next ones", err)
+	}
+	if c.Record.Number == 0 || c.Record.Partition != i || !checkHolds(b, manifestCheck, "}", &checkpointFile{}) {
+		return errors.New("bytes changed since it was written; the books are taken from the records or the tree, and it is written anew with the next ones")
 	}
 	p.last, p.hash, p.have, p.checkpointed, p.pruned = c.Record, c.Hash, true, c.Record.Number, c.Pruned
 	for _, f := range c.Files {
@@ -188,7 +210,7 @@ func (a *Archive) foldFrom(i int, p *partition, next uint64) error {
 		}
 		if p.have && p.hash != "" && r.Previous != p.hash {
 			return fmt.Errorf("archive %s: %s: does not follow the record before it; one of them was changed or restored from elsewhere: "+
-				"run verify, or remove manifest/ and commit/%02d/ to build the books anew from the tree", a.dir, recordPath(i, next), i)
+				"%s", a.dir, recordPath(i, next), mendBooks(i))
 		}
 		p.fold(&r, hash)
 	}
@@ -201,8 +223,14 @@ func (a *Archive) readRecord(i int, n uint64) (Record, string, error) {
 		return Record{}, "", err
 	}
 	var r Record
-	if err := json.Unmarshal(b, &r); err != nil || r.Number != n || r.Partition != i {
-		return Record{}, "", fmt.Errorf("archive %s: %s: damaged (%v); remove manifest/ and commit/%02d/ to build the books anew from the tree", a.dir, name, err, i)
+	if err := json.Unmarshal(b, &r); err != nil {
+		return Record{}, "", fmt.Errorf("archive %s: %s: damaged: %w; %s", a.dir, name, err, mendBooks(i))
+	}
+	if r.Number != n || r.Partition != i {
+		return Record{}, "", fmt.Errorf("archive %s: %s: out of order: it holds record %d of partition %02d; %s", a.dir, name, r.Number, r.Partition, mendBooks(i))
+	}
+	if !checkHolds(b, recordCheck, "\n}\n", &Record{}) {
+		return Record{}, "", fmt.Errorf("archive %s: %s: bytes changed since it was written: its check sum differs; %s", a.dir, name, mendBooks(i))
 	}
 	return r, sha(b), nil
 }
@@ -222,7 +250,7 @@ func (a *Archive) checkpoint(i int, p *partition) error {
 	if err != nil {
 		return err
 	}
-	if err := a.writeAtomic(checkpointPath(i), b); err != nil {
+	if err := a.writeAtomic(checkpointPath(i), withCheck(b, manifestCheck, "}")); err != nil {
 		return err
 	}
 	p.checkpointed = p.last.Number

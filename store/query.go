@@ -199,7 +199,9 @@ func (a *Archive) ReadMinutes(station string, fromMinute, toMinute int64, column
 	if columns != nil && !slices.Contains(columns, "time") {
 		columns = append([]string{"time"}, columns...)
 	}
-	next := fromMinute
+	const farthest = int64(1) << 36 // in microseconds it still fits
+	next := max(fromMinute, -farthest)
+	toMinute = min(toMinute, farthest)
 	return a.retry(station, func(p *partition) error {
 		for _, f := range p.current(station, TableMinutes) {
 			from, to, err := span(f.Period)

@@ -11,20 +11,45 @@ import (
 	"fluxwarden/store/table"
 )
 
-// adopt builds the books anew from the tree, for an archive whose commit records and manifests are gone.
+// adopt builds the books anew from the tree, for stations of partitions whose commit records and manifests are gone.
 func (a *Archive) adopt() error {
-	for _, p := range a.parts {
-		if p.have {
-			return nil
-		}
+	lost, err := a.unknownStations()
+	if err != nil || len(lost) == 0 {
+		return err
 	}
 	for i, p := range a.parts {
-		if err := a.rebuildPartition(i, p); err != nil {
+		if p.have || len(p.files) > 0 {
+			continue
+		}
+		p.mu.Lock()
+		err := a.rebuildPartition(i, p)
+		if err == nil && len(p.files) > 0 {
+			p.trouble = append(p.trouble, Finding{checkpointPath(i), "missing, and so are the records; the books were built anew from the tree", true})
+		}
+		p.mu.Unlock()
+		if err != nil {
 			return err
 		}
 		a.knowStations(i)
 	}
 	return nil
+}
+
+// unknownStations lists the stations that have a folder in the tree and are in no book.
+func (a *Archive) unknownStations() ([]string, error) {
+	var list []string
+	for _, t := range []string{TableRaw, TableMinutes, TableFaults} {
+		entries, err := a.fs.ReadDir(a.path(t))
+		if err != nil && !errors.Is(err, fs.ErrNotExist) {
+			return nil, err
+		}
+		for _, e := range entries {
+			if s, ok := strings.CutPrefix(e.Name, "station="); ok && e.Dir && !a.knows(s) {
+				list = append(list, s)
+			}
+		}
+	}
+	return list, nil
 }
 
 // rebuildPartition takes the files of the tree whose metadata names the partition.

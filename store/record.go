@@ -161,7 +161,7 @@ func (r *Record) encode() (data []byte, hash string) {
 	if err != nil {
 		panic(err) // nothing in a record is without a JSON form
 	}
-	data = append(data, '\n')
+	data = withCheck(append(data, '\n'), recordCheck, "\n}\n")
 	return data, sha(data)
 }
 

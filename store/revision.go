@@ -284,7 +284,8 @@ func (a *Archive) RevisionRows(r *Revision, station string, day int64) (*Rows, e
 type MonthChange struct {
 	Days       []int64 // whose rows differ, or that are new
 	Quantities []table.Change
-	Model      int // minutes where only what stands for no quantity differs: sun, clear sky, records
+	Model      int      // minutes where what belongs to no quantity differs: sun, clear sky, records
+	Rules      []string // digests of the rules by which the days that differ had been judged, sorted
 }
 
 // Compare holds the days of a month against the archive's. Where all digests are the same no row is read.
@@ -321,6 +322,7 @@ func (a *Archive) Compare(m *Month) (*MonthChange, error) {
 // compareDays compares the days that differ; where says in which file each is, no path for one that is the same.
 func (a *Archive) compareDays(m *Month, where map[string]File, out *MonthChange) error {
 	read := map[string]*table.Table{}
+	by := map[string]map[string]Revision{}
 	for _, x := range m.days {
 		f, had := where[dayName(x.day)]
 		if had && f.Path == "" {
@@ -337,6 +339,13 @@ func (a *Archive) compareDays(m *Month, where map[string]File, out *MonthChange)
 				return err
 			}
 			read[f.Path] = t
+			if by[f.Path], err = revisionsOf(f, t.Meta); err != nil {
+				return err
+			}
+		}
+		if r := by[f.Path][dayName(x.day)].RulesDigest; !slices.Contains(out.Rules, r) {
+			out.Rules = append(out.Rules, r)
+			slices.Sort(out.Rules)
 		}
 		for _, o := range daysOf(t) {
 			if o.day == x.day {

@@ -121,6 +121,37 @@ func (a *Archive) Summaries(station string, fromDay, toDay int64) ([]Summary, er
 	return out, err
 }
 
+// EachSummary is Summaries a month at a time: f is called for each, in order. It is given up at f's first error.
+func (a *Archive) EachSummary(station string, fromDay, toDay int64, f func(Summary) error) error {
+	next := fromDay
+	return a.retry(station, func(p *partition) error {
+		for _, file := range p.current(station, TableState) {
+			from, to, err := span(file.Period)
+			if err != nil || to <= next || from > toDay {
+				continue
+			}
+			lines, err := a.readSummaries(file)
+			if err != nil {
+				return err
+			}
+			for _, l := range lines {
+				day, _, err := span(l.Day)
+				if err != nil {
+					return fmt.Errorf("%s: day %q: %w", file.Path, l.Day, err)
+				}
+				if day < next || day > toDay {
+					continue
+				}
+				next = day + 1
+				if err := f(Summary{station, day, l.Summary}); err != nil {
+					return err
+				}
+			}
+		}
+		return nil
+	})
+}
+
 // retry does a read again when a file has gone meanwhile: a commit has replaced it by another that holds as much.
 func (a *Archive) retry(station string, read func(p *partition) error) error {
 	for try := 0; ; try++ {

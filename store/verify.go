@@ -7,60 +7,160 @@ import (
 	"fmt"
 	"io/fs"
 	"path"
+	"regexp"
+	"runtime"
 	"slices"
 	"strings"
+	"sync"
 
 	"fluxwarden/store/table"
+	"fluxwarden/store/vfs"
 )
 
 // A Finding is something that is not as the archive's books say.
 type Finding struct {
 	Path    string
 	Problem string
-	Fatal   bool // rows are wrong or gone; otherwise it is only something that does not belong there
+	Fatal   bool // rows or books are wrong or gone; otherwise it is only something that does not belong there
 }
 
 func (f Finding) String() string { return f.Path + ": " + f.Problem }
 
-// Verify reads every file of the books, compares size, hash and rows, computes every row digest anew, and follows the chain of records. It names
-// what is damaged, missing or foreign, and changes nothing. progress, if not nil, is called after each file.
+// Verify reads every file of the archive: those of the tree it holds against the books (size, sha256, rows, and each row digest anew), those
+// that were superseded against the hash in their names, the books against their own check sums and the chain of records, and the rule
+// sets. It names what is damaged, missing or foreign, in order of path, and changes nothing. A writer may be at work meanwhile. progress,
+// if not nil, is called after each file, by one goroutine at a time. Files under staging/ and damaged/ are not looked at.
 func (a *Archive) Verify(progress func(done, total int)) ([]Finding, error) {
-	var files []File
-	var found []Finding
-	known := map[string]bool{}
+	v := verification{a: a, known: map[string]bool{}, progress: progress}
 	for i, p := range a.parts {
 		p.mu.RLock()
+		v.found = append(v.found, p.trouble...)
 		for _, tables := range p.files {
 			for _, list := range tables {
-				files = append(files, list...)
+				for _, f := range list {
+					v.known[f.Path] = true
+					v.todo = append(v.todo, func() []Finding { return a.verifyListed(i, f) })
+				}
 			}
 		}
 		p.mu.RUnlock()
-		found = append(found, a.verifyRecords(i)...)
+		v.todo = append(v.todo, func() []Finding { return a.verifyRecords(i) })
 	}
-	slices.SortFunc(files, func(x, y File) int { return strings.Compare(x.Path, y.Path) })
-	for n, f := range files {
-		known[f.Path] = true
-		if problem := a.verifyFile(f); problem != "" {
-			found = append(found, Finding{f.Path, problem, true})
-		}
-		if progress != nil {
-			progress(n+1, len(files))
-		}
+	if err := v.listOthers(); err != nil {
+		return nil, err
 	}
-	err := a.eachFile(func(name, _, _ string) error {
-		if !known[name] {
-			found = append(found, Finding{name, a.foreign(name), false})
-		}
-		return nil
-	})
-	return found, err
+	v.run()
+	slices.SortStableFunc(v.found, func(x, y Finding) int { return strings.Compare(x.Path, y.Path) })
+	return v.found, nil
 }
 
-func (a *Archive) foreign(name string) string {
-	if !strings.HasSuffix(name, ".parquet") {
-		return "not in the books: put here by something else"
+// A verification is one run of Verify.
+type verification struct {
+	a        *Archive
+	known    map[string]bool
+	todo     []func() []Finding
+	progress func(done, total int)
+
+	mu    sync.Mutex
+	done  int
+	found []Finding
+}
+
+// run works the list off, as many files at a time as there are processors.
+func (v *verification) run() {
+	next := make(chan func() []Finding)
+	var wg sync.WaitGroup
+	for range runtime.GOMAXPROCS(0) {
+		wg.Add(1)
+		go func() {
+			defer wg.Done()
+			for f := range next {
+				found := f()
+				v.mu.Lock()
+				v.found = append(v.found, found...)
+				if v.done++; v.progress != nil {
+					v.progress(v.done, len(v.todo))
+				}
+				v.mu.Unlock()
+			}
+		}()
 	}
+	for _, f := range v.todo {
+		next <- f
+	}
+	close(next)
+	wg.Wait()
+}
+
+// Names of the archive's own files outside the tree.
+var (
+	manifestName = regexp.MustCompile(`^manifest/\d\d\.json$`)
+	recordName   = regexp.MustCompile(`^commit/\d\d/\d{12}\.json$`)
+	rulesName    = regexp.MustCompile(`^rules/[^/]+\.yaml(\.sha256)?$`)
+	leftoverName = regexp.MustCompile(`^(manifest|rules)/[^/]+\.tmp$|^archive\.json\.tmp$`) // of a write that was cut short; the next replaces it
+	hashedName   = regexp.MustCompile(`_e\d+_c\d+_([0-9a-f]{12})\.(parquet|jsonl)$`)
+)
+
+// listOthers adds the files that the books do not list.
+func (v *verification) listOthers() error {
+	a := v.a
+	entries, err := a.fs.ReadDir(a.path("."))
+	if err != nil {
+		return err
+	}
+	one := func(name string) error {
+		switch {
+		case v.known[name] || manifestName.MatchString(name) || recordName.MatchString(name) || leftoverName.MatchString(name) || name == "lock":
+		case name == "archive.json":
+			v.todo = append(v.todo, a.verifyFormat)
+		case strings.HasPrefix(name, "superseded/") && hashedName.MatchString(name):
+			v.todo = append(v.todo, func() []Finding { return a.verifySuperseded(name) })
+		case rulesName.MatchString(name):
+			if strings.HasSuffix(name, ".yaml") {
+				v.todo = append(v.todo, func() []Finding { return a.verifyRules(name) })
+			}
+		default:
+			v.todo = append(v.todo, func() []Finding { return a.foreign(name) })
+		}
+		return nil
+	}
+	for _, e := range entries {
+		switch {
+		case !e.Dir:
+			err = one(e.Name)
+		case e.Name != "staging" && e.Name != "damaged":
+			err = a.walkDir(e.Name, one)
+		}
+		if err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+func isTree(name string) bool {
+	top, _, _ := strings.Cut(name, "/")
+	return slices.Contains([]string{TableRaw, TableMinutes, TableFaults, TableState}, top)
+}
+
+// foreign says what a file is that is in no book. One that a writer has published or taken away meanwhile is none.
+func (a *Archive) foreign(name string) []Finding {
+	if isTree(name) && a.listedNow(name) {
+		return nil
+	}
+	if ok, err := vfs.Exists(a.fs, a.path(name)); err == nil && !ok {
+		return nil
+	}
+	problem := "put here by something else"
+	if isTree(name) && strings.HasSuffix(name, ".parquet") {
+		problem = a.foreignParquet(name)
+	} else if isTree(name) {
+		problem = "not in the books: " + problem
+	}
+	return []Finding{{name, problem, false}}
+}
+
+func (a *Archive) foreignParquet(name string) string {
 	b, err := a.readBytes(File{Path: name})
 	if err != nil {
 		return fmt.Sprintf("not in the books, and cannot be read: %v", err)
@@ -74,35 +174,94 @@ func (a *Archive) foreign(name string) string {
 	return "not in the books: a Parquet file put here by something else; a glob over the tree reads its rows too"
 }
 
-// verifyFile says what is wrong with a file, empty for nothing.
-func (a *Archive) verifyFile(f File) string {
+// listedNow says whether the books list a file, after looking at what was committed meanwhile.
+func (a *Archive) listedNow(name string) bool {
+	for i, p := range a.parts {
+		if p.lists(name) {
+			return true
+		}
+		if a.lock == nil {
+			if fresh := newPartition(); a.loadPartition(i, fresh) == nil && fresh.lists(name) {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+func (p *partition) lists(name string) bool {
+	p.mu.RLock()
+	defer p.mu.RUnlock()
+	for _, tables := range p.files {
+		for _, list := range tables {
+			if slices.ContainsFunc(list, func(f File) bool { return f.Path == name }) {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// verifyListed looks at a file of the books.
+func (a *Archive) verifyListed(partition int, f File) []Finding {
 	b, err := a.readBytes(f)
 	if errors.Is(err, fs.ErrNotExist) {
-		return "missing"
+		// A writer may have replaced it since the books were read.
+		fresh := newPartition()
+		if a.loadPartition(partition, fresh) == nil && !fresh.lists(f.Path) {
+			return nil
+		}
+		return []Finding{{f.Path, "missing: the books list it", true}}
 	}
-	if err != nil {
-		return fmt.Sprintf("cannot be read: %v", err)
+	problem := ""
+	switch {
+	case err != nil:
+		problem = fmt.Sprintf("cannot be read: %v", err)
+	case f.SHA256 != "" && int64(len(b)) != f.Bytes:
+		problem = fmt.Sprintf("%d bytes, %d were written", len(b), f.Bytes)
+	case f.SHA256 != "" && sha(b) != f.SHA256 || !nameHolds(f.Path, b):
+		problem = "bytes changed since it was written: its sha256 differs"
+	case f.Table != TableState:
+		problem = verifyRows(f.Table, f.Rows, b)
 	}
-	if f.SHA256 == "" { // a summary file found in the tree, without books
-		return ""
+	if problem != "" {
+		return []Finding{{f.Path, problem, true}}
 	}
-	if int64(len(b)) != f.Bytes {
-		return fmt.Sprintf("%d bytes, %d were written", len(b), f.Bytes)
+	return nil
+}
+
+// nameHolds says whether the hash in a file's name is that of its bytes, as far as the name has one.
+func nameHolds(name string, b []byte) bool {
+	m := hashedName.FindStringSubmatch(path.Base(name))
+	return m == nil || m[1] == sha(b)[:12]
+}
+
+func (a *Archive) verifySuperseded(name string) []Finding {
+	b, err := vfs.ReadFileBytes(a.fs, a.path(name))
+	problem := ""
+	switch {
+	case err != nil:
+		problem = fmt.Sprintf("cannot be read: %v", err)
+	case !nameHolds(name, b):
+		problem = "bytes changed since it was written: its sha256 is not the one in its name"
+	case strings.HasPrefix(name, "superseded/"+TableMinutes+"/"):
+		problem = verifyRows(TableMinutes, -1, b)
 	}
-	if sha(b) != f.SHA256 {
-		return "bytes changed since it was written: its sha256 differs"
+	if problem != "" {
+		return []Finding{{name, problem, true}}
 	}
-	if f.Table == TableState {
-		return ""
-	}
+	return nil
+}
+
+// verifyRows says what is wrong with a Parquet file's rows; rows below zero are not held against anything.
+func verifyRows(tableName string, rows int, b []byte) string {
 	t, err := table.Read(bytes.NewReader(b), int64(len(b)), nil)
-	if err != nil {
+	switch {
+	case err != nil:
 		return err.Error()
-	}
-	if t.Rows != f.Rows {
-		return fmt.Sprintf("%d rows, %d were written", t.Rows, f.Rows)
-	}
-	if f.Table == TableMinutes {
+	case rows >= 0 && t.Rows != rows:
+		return fmt.Sprintf("%d rows, %d were written", t.Rows, rows)
+	case tableName == TableMinutes:
 		return verifyDigests(t)
 	}
 	return ""
@@ -123,41 +282,6 @@ func verifyDigests(t *table.Table) string {
 		}
 	}
 	return ""
-}
-
-// verifyRecords follows the records that are still there.
-func (a *Archive) verifyRecords(i int) []Finding {
-	n, err := a.firstRecord(i)
-	if err != nil {
-		return []Finding{{path.Join("commit", partName(i)), err.Error(), true}}
-	}
-	if n == 0 {
-		return nil
-	}
-	var found []Finding
-	previous := ""
-	for ; ; n++ {
-		r, hash, err := a.readRecord(i, n)
-		if errors.Is(err, fs.ErrNotExist) {
-			break
-		}
-		if err != nil {
-			return append(found, Finding{recordPath(i, n), err.Error(), true})
-		}
-		if previous != "" && r.Previous != previous {
-			found = append(found, Finding{recordPath(i, n), "does not follow the record before it: one of the two was changed", true})
-		}
-		previous = hash
-	}
-	p := a.parts[i]
-	p.mu.RLock()
-	defer p.mu.RUnlock()
-	if p.have && n-1 < p.last.Number {
-		found = append(found, Finding{recordPath(i, n), fmt.Sprintf("missing: the manifest stands on record %d", p.last.Number), true})
-	} else if p.have && n-1 == p.last.Number && previous != p.hash {
-		found = append(found, Finding{recordPath(i, n-1), "bytes changed: its sha256 is not the manifest's", true})
-	}
-	return found
 }
 
 // SetAside moves a file of the published tree to damaged/, with the reason beside it. It is never deleted. A file of the books stays in

@@ -5,10 +5,15 @@ import (
 	"flag"
 	"fmt"
 	"io"
+	"math"
 	"os"
+	"runtime"
 	"slices"
+	"time"
 
+	"fluxwarden/ingest/broker"
 	"fluxwarden/ingest/wire"
+	"fluxwarden/qc/engine"
 	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
 	"fluxwarden/store"
@@ -83,20 +88,75 @@ func judgeFiles(a *store.Archive, s *rules.Site, st *rules.Station, siteFile str
 	if err := a.KeepRules(s.Digest, text); err != nil {
 		return exitProblem, err
 	}
-	j, err := newBatchJudge(a, s, st, bar)
+	all.Station = st.ID
+	p, err := judgeBatch(a, s, st, &all, bar)
 	if err != nil {
 		return exitProblem, err
 	}
-	if err := j.run(&all); err != nil {
-		return exitProblem, err
-	}
 	bar.done()
-	fmt.Fprintf(os.Stderr, "judged %d minutes of %s on %d days; %d episodes\n", j.minutes, st.ID, j.days, len(j.episodes))
+	fmt.Fprintf(os.Stderr, "judged %d minutes of %s on %d days; %d episodes\n", p.minutes, st.ID, p.days, len(p.episodes))
 	if refused > 0 {
 		fmt.Fprintf(os.Stderr, "fluxwarden: judge: %d lines were refused; the rest is in the archive\n", refused)
 		return exitProblem, nil
 	}
 	return exitOK, nil
+}
+
+// judgeBatch judges the days that new readings touch, those that hindsight may reach, and all later ones, and commits what comes of it
+// with the readings: all or nothing.
+func judgeBatch(a *store.Archive, s *rules.Site, st *rules.Station, all *minute.Batch, bar *progress) (*pass, error) {
+	plan, err := engine.NewPlan(st)
+	if err != nil {
+		return nil, err
+	}
+	p := &pass{archive: a, station: st, plan: plan, fresh: map[int64]*minute.Batch{}, to: math.MaxInt64, helpers: runtime.GOMAXPROCS(0), step: bar.step}
+	parts := splitByDay(all)
+	for _, x := range parts {
+		p.fresh[x.Day] = x.Batch
+	}
+	p.from = minute.NewGatherer(plan.Layout()).Days(all)[0]
+	if p.from, err = firstUnended(a, st.ID, p.from); err != nil {
+		return nil, err
+	}
+	draft, err := beginDraft(a, broker.PartitionOf(st.ID), s)
+	if err != nil {
+		return nil, err
+	}
+	p.out = newMonths(a, draft, st.ID)
+	p.out.raw(parts)
+	if err := p.run(); err != nil {
+		_ = p.out.stop()
+		draft.Drop()
+		return nil, err
+	}
+	_, err = draft.Finish()
+	return p, err
+}
+
+// firstUnended is the day, or the earlier one that the archive has readings of but no summary: it was the last, and was left open.
+func firstUnended(a *store.Archive, station string, day int64) (int64, error) {
+	if !slices.Contains(a.Stations(), station) {
+		return day, nil
+	}
+	last := int64(math.MinInt64)
+	err := a.EachSummary(station, math.MinInt32, day, func(s store.Summary) error { last = s.Day; return nil })
+	if err != nil || last == math.MinInt64 {
+		return math.MinInt32, err
+	}
+	return min(day, last+1), nil
+}
+
+// beginDraft starts a commit of a partition that stands on its last record.
+func beginDraft(a *store.Archive, partition int, s *rules.Site) (*store.Draft, error) {
+	c := store.Commit{Partition: partition, RulesDigest: s.Digest, Program: "fluxwarden " + version, Time: time.Now()}
+	last, ok, err := a.Last(partition)
+	if err != nil {
+		return nil, err
+	}
+	if ok {
+		c.Base, c.Epoch, c.Positions = last.Number, last.Epoch, last.Positions
+	}
+	return a.Begin(&c)
 }
 
 // readReadings adds a file's readings to all and prints the lines it could not take.

@@ -1,8 +1,12 @@
 package main
 
 import (
-	"runtime"
+	"errors"
+	"fmt"
+	"math"
+	"slices"
 
+	"fluxwarden/cmd/fluxwarden/worker"
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/minute"
 )
@@ -14,101 +18,182 @@ type prepared struct {
 	err    error
 }
 
-// A stages runs the stateless stage for days ahead, several at a time, and gives them in order.
-type stages struct {
-	out  chan prepared
-	quit chan struct{}
+// A dayTask is a day on its way through the stateless stage.
+type dayTask struct {
+	day      int64
+	readings *minute.Batch
+	done     chan prepared
 }
 
-func (s *stages) stop() { close(s.quit) }
+// errQuit ends a reading that nobody waits for any more.
+var errQuit = errors.New("quit")
 
-// prepareAhead starts the stage for the days.
-func (j *batchJudge) prepareAhead(days []int64) *stages {
-	n := runtime.GOMAXPROCS(0)
-	s := &stages{out: make(chan prepared), quit: make(chan struct{})}
-	slots := make([]chan prepared, len(days))
-	for i := range slots {
-		slots[i] = make(chan prepared, 1)
-	}
-	room := make(chan struct{}, 2*n+2)
-	next := make(chan int)
-	go func() {
-		defer close(next)
-		for i := range days {
-			select {
-			case room <- struct{}{}:
-			case <-s.quit:
-				return
-			}
-			select {
-			case next <- i:
-			case <-s.quit:
-				return
-			}
-		}
-	}()
-	for range n {
+// prepareAhead reads the days and runs the stateless stage for some ahead, several at a time. They come in order. It ends when quit is
+// closed.
+func (p *pass) prepareAhead(rawDays []int64, quit chan struct{}) <-chan *dayTask {
+	order := make(chan *dayTask, 2*p.helpers+2)
+	tasks := make(chan *dayTask)
+	for range p.helpers {
 		go func() {
-			g := minute.NewGatherer(j.plan.Layout())
-			for i := range next {
-				slots[i] <- j.prepareDay(g, days[i])
+			g := minute.NewGatherer(p.plan.Layout())
+			for t := range tasks {
+				t.done <- p.prepareDay(g, t.day, t.readings)
 			}
 		}()
 	}
+	send := func(t *dayTask, to chan *dayTask) error {
+		select {
+		case to <- t:
+			return nil
+		case <-quit:
+			return errQuit
+		}
+	}
 	go func() {
-		for i := range days {
-			select {
-			case p := <-slots[i]:
-				select {
-				case s.out <- p:
-				case <-s.quit:
-					return
-				}
-			case <-s.quit:
-				return
+		defer close(order)
+		defer close(tasks)
+		err := p.eachDay(rawDays, func(day int64, readings *minute.Batch) error {
+			t := &dayTask{day, readings, make(chan prepared, 1)}
+			if err := send(t, order); err != nil {
+				return err
 			}
-			<-room
+			return send(t, tasks)
+		})
+		if err != nil && !errors.Is(err, errQuit) {
+			t := &dayTask{done: make(chan prepared, 1)}
+			t.done <- prepared{err: err}
+			_ = send(t, order)
 		}
 	}()
-	return s
+	return order
 }
 
-// prepareDay gathers one day's minutes from the archive's readings and the new ones.
-func (j *batchJudge) prepareDay(g *minute.Gatherer, day int64) prepared {
-	last := day
-	if g.Layout().LabelEnd {
-		last++ // the day's last minute carries a stamp of the next day
-	}
-	var all minute.Batch
-	if j.known {
-		err := j.archive.ReadRaw(j.station.ID, day, last, func(b *minute.Batch) error {
-			joinBatch(&all, b)
+// eachDay gives the readings of each day's minutes, in order. Readings are kept by the day of their stamps; with end labels the first
+// stamp of a day belongs to the day before.
+func (p *pass) eachDay(rawDays []int64, each func(day int64, readings *minute.Batch) error) error {
+	give := func(day int64, readings *minute.Batch) error {
+		if day < p.firstDay {
 			return nil
-		})
-		if err != nil {
-			return prepared{err: err}
 		}
+		return each(day, readings)
 	}
-	if b := j.fresh[day]; b != nil && all.Rows() == 0 && last == day {
-		all = *b
-	} else {
-		for d := day; d <= last; d++ {
-			if b := j.fresh[d]; b != nil {
-				appendCopy(&all, b)
+	layout := p.plan.Layout()
+	var waiting *minute.Batch // of the day of stamps before, whose last minute is not whole
+	waitingDay := int64(math.MinInt64)
+	arrive := func(day int64, b *minute.Batch) error {
+		if !layout.LabelEnd {
+			return give(day, b)
+		}
+		first := 0
+		if slices.IsSorted(b.At) {
+			for first < b.Rows() && layout.Minute(b.At[first]) < day*minute.PerDay {
+				first++
+			}
+		} else {
+			first = b.Rows()
+		}
+		early := cutBatch(b, 0, first)
+		if waiting != nil && waitingDay < day-1 {
+			if err := give(waitingDay, waiting); err != nil {
+				return err
+			}
+			waiting = nil
+		}
+		if waiting != nil || first > 0 {
+			if err := give(day-1, together(waiting, early)); err != nil {
+				return err
 			}
 		}
+		waiting, waitingDay = b, day
+		return nil
 	}
-	block := minute.NewBlock(day, len(g.Layout().Channels))
-	g.Fill(block, &all, 0, minute.PerDay)
-	judged := j.plan.NewJudged(day)
-	j.plan.Prepare(judged, block, 0, block.Rows)
-	return prepared{judged: judged, block: block}
+	if err := p.eachRawDay(rawDays, arrive); err != nil {
+		return err
+	}
+	if waiting != nil {
+		return give(waitingDay, waiting)
+	}
+	return nil
 }
 
-// appendCopy appends b's readings to all without sharing memory with either's origin.
-func appendCopy(all, b *minute.Batch) {
+// eachRawDay gives the readings of each day of stamps, those of the archive with the new ones.
+func (p *pass) eachRawDay(rawDays []int64, each func(day int64, b *minute.Batch) error) error {
+	next := 0
+	if p.known {
+		err := p.archive.ReadRaw(p.station.ID, rawDays[0], rawDays[len(rawDays)-1], func(b *minute.Batch) error {
+			day := b.At[0].Day()
+			for ; next < len(rawDays) && rawDays[next] < day; next++ {
+				if err := each(rawDays[next], p.fresh[rawDays[next]]); err != nil {
+					return err
+				}
+			}
+			next++
+			return each(day, together(b, p.fresh[day]))
+		})
+		if err != nil {
+			return err
+		}
+	}
+	for ; next < len(rawDays); next++ {
+		if err := each(rawDays[next], p.fresh[rawDays[next]]); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// together is the readings of two batches, either of which may be nil. It shares memory with a batch only if the other is empty.
+func together(a, b *minute.Batch) *minute.Batch {
+	switch {
+	case b == nil || b.Rows() == 0:
+		if a == nil {
+			return &minute.Batch{}
+		}
+		return a
+	case a == nil || a.Rows() == 0:
+		return b
+	}
+	out := worker.CopyBatch(a)
 	for i := range b.Rows() {
 		r := b.Reading(i)
-		all.Append(&r)
+		out.Append(&r)
+	}
+	return out
+}
+
+// prepareDay gathers one day's minutes and runs the stateless stage over them.
+func (p *pass) prepareDay(g *minute.Gatherer, day int64, readings *minute.Batch) (out prepared) {
+	defer func() {
+		if r := recover(); r != nil {
+			out = prepared{err: fmt.Errorf("station %s: %s: the judge panicked: %v; nothing was written", p.station.ID, dayText(day), r)}
+		}
+	}()
+	select {
+	case out = <-p.spares:
+	default:
+	}
+	if out.block == nil {
+		out.block = minute.NewBlock(day, len(g.Layout().Channels))
+	} else {
+		out.block.Reset(day)
+	}
+	if out.judged == nil {
+		out.judged = p.plan.NewJudged(day)
+	} else {
+		p.plan.Reset(out.judged, day)
+	}
+	g.Fill(out.block, readings, 0, minute.PerDay)
+	p.plan.Prepare(out.judged, out.block, 0, out.block.Rows)
+	return out
+}
+
+// reuse takes back the memory of a day that is done with.
+func (p *pass) reuse(pr prepared) {
+	if pr.block == nil && pr.judged == nil {
+		return
+	}
+	select {
+	case p.spares <- pr:
+	default:
 	}
 }
