@@ -148,7 +148,10 @@ func TestWhoMayReject(t *testing.T) {
 }
 
 // soundRows holds what has to be so in every row: sets that agree with the outcomes, and verdicts that agree with values.
-func soundRows(t testing.TB, p *Plan, j *Judged) {
+func soundRows(t interface {
+	Helper()
+	Fatalf(string, ...any)
+}, p *Plan, j *Judged) {
 	t.Helper()
 	if j.Rows != minute.PerDay {
 		t.Fatalf("%d rows after the day's end", j.Rows)

@@ -153,9 +153,15 @@ func (g *Gatherer) column(to *Column, from *Channel, at []Stamp, row int, rows [
 	}
 }
 
-// whole fills in what a value leaves out and can have one meaning only, so that 5 and {mean: 5} are the same.
+// whole fills in what a value leaves out and can have one meaning only, so that 5 and {mean: 5} are the same. A mark among a logger's
+// statistics is as if it was not given.
 func whole(v Value) Value {
 	v.Mean += 0 // never minus nothing
+	for _, x := range [...]*float64{&v.SD, &v.Min, &v.Max} {
+		if IsMark(*x) {
+			*x = math.NaN()
+		}
+	}
 	v.Min, v.Max, v.N = orElse(v.Min, v.Mean)+0, orElse(v.Max, v.Mean)+0, max(v.N, 1)
 	return v
 }

@@ -106,6 +106,7 @@ func TestRow(t *testing.T) {
 		{"a part whose spread is not known", []any{0, 1.0, 30, Value{4, nan, 4, 4, 3}}, 3.25, nan, 1, 4, 4, false, 2, 0},
 		{"a spread without a count", []any{0, Value{1, 0.5, 0, 2, 1}, 30, Value{3, 0.5, 2, 4, 1}}, 2, nan, 0, 4, 2, false, 2, 0},
 		{"a mark beside samples is no sample", []any{0, 1.0, 1, -7999.0, 2, 3.0}, 2, math.Sqrt2, 1, 3, 2, false, 3, 0},
+		{"marks among the logger's statistics", []any{0, Value{10, -7999, -7999, 14, 60}}, 10, nan, 10, 14, 60, false, 1, 0},
 		{"nothing but marks", []any{0, -6999.0, 1, -7999.0}, -7999, nan, -7999, -7999, 1, false, 2, 0},
 	} {
 		t.Run(c.name, func(t *testing.T) {
