@@ -33,23 +33,28 @@ func (b *Budget) pyranometer(in *rules.Instrument, cal *rules.Calibration) {
 	l, classified := rules.PyranometerClass(in.Class)
 	source := b.class("ISO 9060:2018 class "+l.Class, classified)
 	b.calibration(byValue, cal, l.CalibrationPercent)
-	b.add("non-stability since the calibration", byValueYears, l.StabilityPercent*percent, Rectangular, source+", a year")
+	b.share("non-stability since the calibration", byValueYears, l.StabilityPercent, source, " a year")
 	if in.Measures == rules.Global {
-		b.add("directional response, beam", byBeam, l.DirectionalWm2/1000, Rectangular, source+", of the beam")
+		b.add("directional response, beam", byBeam, l.DirectionalWm2/1000, Rectangular, fmt.Sprintf("%s, %g W/m2 at 1000 of beam", source, l.DirectionalWm2))
 		b.add("levelling", byBeamAslant, levellingDeg*(math.Pi/180), Rectangular, "0.2 degrees by the bubble, common practice")
 	}
-	b.add("directional response, sky", bySky, 2*l.DirectionalWm2/1000, Triangular, source+", over an even sky")
-	b.add("temperature response", byValue, l.TemperaturePercent*percent, Rectangular, source)
-	b.add("non-linearity", byValue, l.LinearityPercent*percent, Rectangular, source)
-	b.add("spectral", byValue, l.SpectralPercent*percent, Rectangular, source)
-	b.add("tilt response", byValue, l.TiltPercent*percent, Rectangular, source+", the attitude of the calibration is not known")
+	b.add("directional response, sky", bySky, 2*l.DirectionalWm2/1000, Triangular, source+", the same over an even sky")
+	b.share("temperature response", byValue, l.TemperaturePercent, source, "")
+	b.share("non-linearity", byValue, l.LinearityPercent, source, "")
+	b.share("spectral", byValue, l.SpectralPercent, source, "")
+	b.share("tilt response", byValue, l.TiltPercent, source, ": the attitude of the calibration is not known")
 	if cal.ZeroWm2 != 0 {
-		b.add("zero offset a", byInfrared, zeroCorrectedShare*l.ZeroThermalWm2, Rectangular, source+", halved: a zero is taken off")
+		b.add("zero offset a", byInfrared, zeroCorrectedShare*l.ZeroThermalWm2, Rectangular, fmt.Sprintf("%s, half of %g W/m2 at 200 of net longwave: a zero is taken off", source, l.ZeroThermalWm2))
 	} else {
-		b.add("zero offset a", byInfrared, l.ZeroThermalWm2, Rectangular, source+", at 200 W/m2 net longwave")
+		b.add("zero offset a", byInfrared, l.ZeroThermalWm2, Rectangular, fmt.Sprintf("%s, %g W/m2 at 200 of net longwave", source, l.ZeroThermalWm2))
 	}
-	b.add("zero offset b", byNothing, l.ZeroChangeWm2, Rectangular, source+", at 5 K an hour")
+	b.add("zero offset b", byNothing, l.ZeroChangeWm2, Rectangular, fmt.Sprintf("%s, %g W/m2 at 5 K an hour", source, l.ZeroChangeWm2))
 	b.logger(byValue, in, cal, l.ProcessingWm2, source)
+}
+
+// share adds a class limit in percent, rectangular, and says it beside the source.
+func (b *Budget) share(name string, by driver, limitPercent float64, source, more string) {
+	b.add(name, by, limitPercent*percent, Rectangular, fmt.Sprintf("%s, %g %%%s", source, limitPercent, more))
 }
 
 // class notes what was assumed of the class and gives the words for a row.
@@ -73,7 +78,7 @@ func (b *Budget) calibration(by driver, cal *rules.Calibration, assumedPercent f
 // logger adds what turns the signal into a number: a data logger behind a voltage, or the electronics of an instrument that converts.
 func (b *Budget) logger(by driver, in *rules.Instrument, cal *rules.Calibration, processing float64, source string) {
 	if in.Input.Signal == "" || !(cal.SensitivityUVPerW > 0) {
-		b.add("signal processing", byNothing, processing, Rectangular, source)
+		b.add("signal processing", byNothing, processing, Rectangular, fmt.Sprintf("%s, %g %s", source, processing, in.Measures.Unit()))
 		return
 	}
 	b.add("logger, gain", by, loggerGainPercent*percent, Rectangular, "0.1 %, assumed")

@@ -26,12 +26,11 @@ const (
 // sensitivity's, with which it was fitted.
 func (b *Budget) pyrgeometer(in *rules.Instrument, cal *rules.Calibration) {
 	b.Class = "pyrgeometer, limits assumed"
-	const assumed = "assumed, of the net signal"
 	b.calibration(byNet, cal, pyrgeometerCalibrationPercent)
-	b.add("non-stability since the calibration", byNetYears, pyrgeometerStabilityPercent*percent, Rectangular, "assumed, a year")
-	b.add("temperature response", byNet, pyrgeometerTemperaturePercent*percent, Rectangular, assumed)
-	b.add("non-linearity", byNet, pyrgeometerLinearityPercent*percent, Rectangular, assumed)
-	b.add("tilt response", byNet, pyrgeometerTiltPercent*percent, Rectangular, assumed)
+	b.share("non-stability since the calibration", byNetYears, pyrgeometerStabilityPercent, "assumed, of the net signal", " a year")
+	b.share("temperature response", byNet, pyrgeometerTemperaturePercent, "assumed, of the net signal", "")
+	b.share("non-linearity", byNet, pyrgeometerLinearityPercent, "assumed, of the net signal", "")
+	b.share("tilt response", byNet, pyrgeometerTiltPercent, "assumed, of the net signal", "")
 	b.add("emission of the body, k2", byEmission, emissionCoefficient, Rectangular, "Groebner 2008")
 	b.add("body temperature", byBodyKelvin, bodyToleranceK*(cal.K2+cal.K3), Rectangular, "0.2 K, from memory")
 	b.dome(in, cal)

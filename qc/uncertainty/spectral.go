@@ -23,11 +23,11 @@ func (b *Budget) spectral(in *rules.Instrument, cal *rules.Calibration) {
 	b.Class = k.words
 	const assumed = "assumed"
 	b.calibration(byValue, cal, k.calibration)
-	b.add("non-stability since the calibration", byValueYears, k.stability*percent, Rectangular, "assumed, a year")
-	b.add("directional response", byValue, k.directional*percent, Rectangular, assumed)
-	b.add("temperature response", byValue, k.temperature*percent, Rectangular, assumed)
-	b.add("non-linearity", byValue, k.line*percent, Rectangular, assumed)
-	b.add("spectral", byValue, k.spectral*percent, Rectangular, assumed)
+	b.share("non-stability since the calibration", byValueYears, k.stability, assumed, " a year")
+	b.share("directional response", byValue, k.directional, assumed, "")
+	b.share("temperature response", byValue, k.temperature, assumed, "")
+	b.share("non-linearity", byValue, k.line, assumed, "")
+	b.share("spectral", byValue, k.spectral, assumed, "")
 	b.add("zero offset", byNothing, k.zero, Rectangular, assumed)
 	b.logger(byValue, in, cal, k.processing, assumed)
 }
