@@ -69,7 +69,7 @@ func TestReaches(t *testing.T) {
 		{rules.DomeSnow, nil, rules.Global, 30, 60, 0, true},
 		{rules.ClockShift, nil, rules.Global, 30, 96.9, 0, true},
 		{rules.ClockShift, nil, rules.Global, 30, 97, 0, false},
-		{rules.ClockShift, nil, rules.LWDown, 300, 50, 0, false},
+		{rules.ClockShift, nil, rules.LWDown, 300, 120, 0, true},
 		{rules.Shadow, mast, rules.Direct, 10, 50, 113, true},
 		{rules.Shadow, mast, rules.Direct, 10, 50, 110, true},
 		{rules.Shadow, mast, rules.Direct, 10, 50, 109.9, false},
