@@ -198,7 +198,7 @@ func emission(temperatureC float64) (flux, perKelvin float64) {
 		k = 0
 	}
 	cubed := float64(sensor.StefanBoltzmann * k * k * k)
-	return cubed * k, 4 * cubed
+	return float64(cubed * k), float64(4 * cubed)
 }
 
 func known(v, otherwise float64) float64 {
