@@ -31,6 +31,8 @@ func commands() []command {
 		{"run", "the daemon: takes readings, judges them, keeps the archive", cmdRun},
 		{"judge", "judge files of readings into an archive", cmdJudge},
 		{"rejudge", "judge an archive's readings again with today's site file", cmdRejudge},
+		{"verify", "prove an archive intact, or name what is not", cmdVerify},
+		{"history", "the revisions of a station-day: what changed, why, by how much", cmdHistory},
 		{"export", "write an archive's minutes as CSV", cmdExport},
 		{"faults", "list the episodes: which instrument, what, since when, what to do", cmdFaults},
 		{"sky", "what the judge expects: sun, clear sky, the bounds of every limit", cmdSky},
