@@ -173,6 +173,9 @@ func readReadings(all *minute.Batch, st *rules.Station, name string, bar *progre
 	if err != nil {
 		return 0, err
 	}
+	if err := warnOfColumns(os.Stderr, name, c, st); err != nil {
+		return 0, err
+	}
 	for {
 		var b minute.Batch
 		err := c.Next(&b)
