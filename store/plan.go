@@ -242,6 +242,13 @@ func (a *Archive) mergeMonth(m *Month, old []File) (*table.Table, []monthDay, er
 	}
 	fresh := len(list)
 	for _, f := range old {
+		kept, err := a.keepsOther(f, m)
+		if err != nil {
+			return nil, nil, err
+		}
+		if !kept {
+			continue // all its days are in m
+		}
 		t, err := a.readFile(f, nil)
 		if err != nil {
 			return nil, nil, err
@@ -263,6 +270,15 @@ func (a *Archive) mergeMonth(m *Month, old []File) (*table.Table, []monthDay, er
 		at = days[i].to
 	}
 	return table.Join(table.MinuteColumns(), parts), days, nil
+}
+
+// keepsOther says whether a file has days that the month has not.
+func (a *Archive) keepsOther(f File, m *Month) (bool, error) {
+	digests, err := a.digests(f)
+	for _, x := range m.days {
+		delete(digests, dayName(x.day))
+	}
+	return len(digests) > 0, err
 }
 
 // daysOf finds the days in rows sorted by time.

@@ -54,7 +54,10 @@ func SumChanges(to, more []Change) []Change {
 func Compare(before, after *Table) (changes []Change, model int) {
 	c := comparison{before: before, after: after}
 	c.align()
-	seen := make([]bool, len(c.b))
+	if c.rows == 0 {
+		return nil, 0
+	}
+	seen := make([]bool, c.rows)
 	for i := colTime + 1; i < colQuantities; i++ {
 		c.mark(seen, i)
 	}
@@ -75,24 +78,97 @@ func Compare(before, after *Table) (changes []Change, model int) {
 type comparison struct {
 	before, after *Table
 	b, a          []int
+	straight      bool // both have the same minutes
+	rows          int
+	nothing       []float64
 }
 
 func (c *comparison) align() {
 	x, y := c.before.Find("time").Times, c.after.Find("time").Times
-	c.b, c.a = make([]int, 0, len(y)), make([]int, 0, len(y))
-	for i, k := 0, 0; i < len(x) || k < len(y); {
-		switch {
-		case k == len(y) || i < len(x) && x[i] < y[k]:
-			c.b, c.a = append(c.b, i), append(c.a, -1)
-			i++
-		case i == len(x) || y[k] < x[i]:
-			c.b, c.a = append(c.b, -1), append(c.a, k)
-			k++
-		default:
-			c.b, c.a = append(c.b, i), append(c.a, k)
-			i, k = i+1, k+1
+	if c.straight = slices.Equal(x, y); c.straight {
+		c.rows = len(x)
+	} else {
+		for i, k := 0, 0; i < len(x) || k < len(y); {
+			switch {
+			case k == len(y) || i < len(x) && x[i] < y[k]:
+				c.b, c.a = append(c.b, i), append(c.a, -1)
+				i++
+			case i == len(x) || y[k] < x[i]:
+				c.b, c.a = append(c.b, -1), append(c.a, k)
+				k++
+			default:
+				c.b, c.a = append(c.b, i), append(c.a, k)
+				i, k = i+1, k+1
+			}
+		}
+		c.rows = len(c.b)
+	}
+	c.nothing = filled(c.rows, nan)
+}
+
+// paired gives the values of a column in the order of the pairs; nothing where it has none.
+func paired[T any](c *comparison, values []T, rows []int, null T) []T {
+	if values != nil && c.straight {
+		return values
+	}
+	out := filled(c.rows, null)
+	if values == nil {
+		return out
+	}
+	for k, i := range rows {
+		if i >= 0 {
+			out[k] = values[i]
 		}
 	}
+	return out
+}
+
+func (c *comparison) doubles(column int) (before, after []float64) {
+	of := func(t *Table, rows []int) []float64 {
+		v := t.Find(minuteColumns[column].Name)
+		if v == nil || v.Doubles == nil {
+			return c.nothing
+		}
+		return paired(c, v.Doubles, rows, nan)
+	}
+	return of(c.before, c.b), of(c.after, c.a)
+}
+
+func (c *comparison) ints(column int) (before, after []int32) {
+	of := func(t *Table, rows []int) []int32 {
+		v := t.Find(minuteColumns[column].Name)
+		if v == nil {
+			v = &Vector{}
+		}
+		return paired(c, v.Ints, rows, NullInt)
+	}
+	return of(c.before, c.b), of(c.after, c.a)
+}
+
+// texts gives a text column as codes of one dictionary; null and the empty text are the same, NullCode.
+func (c *comparison) texts(column int) (before, after []int32, dict []string) {
+	joint := &Vector{}
+	of := func(t *Table, rows []int) []int32 {
+		v := t.Find(minuteColumns[column].Name)
+		if v == nil || v.Codes == nil {
+			return filled[int32](c.rows, NullCode)
+		}
+		to := make([]int32, len(v.Dict))
+		for d, text := range v.Dict {
+			if to[d] = NullCode; text != "" {
+				to[d] = joint.code(text)
+			}
+		}
+		codes := make([]int32, len(v.Codes))
+		for i, x := range v.Codes {
+			if codes[i] = x; x != NullCode {
+				codes[i] = to[x]
+			}
+		}
+		return paired(c, codes, rows, NullCode)
+	}
+	before, after = of(c.before, c.b), of(c.after, c.a)
+	return before, after, joint.Dict
 }
 
 func (c *comparison) quantity(q rules.Quantity) Change {
@@ -101,15 +177,24 @@ func (c *comparison) quantity(q rules.Quantity) Change {
 	if int(q) >= rules.RadiationCount {
 		width = weatherWidth
 	}
-	verdict := c.verdicts(first + offVerdict)
-	value := c.doubles(first + offValue)
-	details := make([]bool, len(c.b))
+	codeB, codeA, dict := c.texts(first + offVerdict)
+	verdicts := make([]rules.Verdict, len(dict)+1) // the first is for null
+	verdicts[0] = rules.Absent
+	for d, text := range dict {
+		for v := rules.Verdict(0); v < rules.VerdictCount; v++ {
+			if v.String() == text {
+				verdicts[d+1] = v
+			}
+		}
+	}
+	valueB, valueA := c.doubles(first + offValue)
+	details := make([]bool, c.rows)
 	for i := first + offReasons; i < first+width; i++ {
 		c.mark(details, i)
 	}
-	for k := range c.b {
-		vb, va := verdict(k)
-		xb, xa := value(k)
+	for k, xb := range valueB {
+		xa := valueA[k]
+		vb, va := verdicts[codeB[k]+1], verdicts[codeA[k]+1]
 		other, moved := vb != va, xb != xa && (xb == xb || xa == xa)
 		switch {
 		case other || moved:
@@ -136,80 +221,28 @@ func (c *comparison) quantity(q rules.Quantity) Change {
 	return out
 }
 
-// verdicts gives the two verdicts of a pair.
-func (c *comparison) verdicts(column int) func(k int) (before, after rules.Verdict) {
-	of := func(t *Table) func(i int) rules.Verdict {
-		v := t.Find(minuteColumns[column].Name)
-		if v == nil || v.Codes == nil {
-			return func(int) rules.Verdict { return rules.Absent }
-		}
-		known := make([]rules.Verdict, len(v.Dict))
-		for d, text := range v.Dict {
-			for x := rules.Verdict(0); x < rules.VerdictCount; x++ {
-				if x.String() == text {
-					known[d] = x
-				}
-			}
-		}
-		return func(i int) rules.Verdict {
-			if i < 0 || v.Codes[i] == NullCode {
-				return rules.Absent
-			}
-			return known[v.Codes[i]]
-		}
-	}
-	b, a := of(c.before), of(c.after)
-	return func(k int) (rules.Verdict, rules.Verdict) { return b(c.b[k]), a(c.a[k]) }
-}
-
-func (c *comparison) doubles(column int) func(k int) (before, after float64) {
-	of := func(t *Table) func(i int) float64 {
-		v := t.Find(minuteColumns[column].Name)
-		if v == nil || v.Doubles == nil {
-			return func(int) float64 { return nan }
-		}
-		return func(i int) float64 {
-			if i < 0 {
-				return nan
-			}
-			return v.Doubles[i]
-		}
-	}
-	b, a := of(c.before), of(c.after)
-	return func(k int) (float64, float64) { return b(c.b[k]), a(c.a[k]) }
-}
-
 // mark notes the pairs that differ in a column.
 func (c *comparison) mark(seen []bool, column int) {
-	name := minuteColumns[column].Name
-	b, a := c.before.Find(name), c.after.Find(name)
 	switch minuteColumns[column].Kind {
 	case Double:
-		value := c.doubles(column)
-		for k := range seen {
-			if x, y := value(k); x != y && (x == x || y == y) {
+		b, a := c.doubles(column)
+		if &b[0] == &a[0] { // neither has a value
+			return
+		}
+		for k, x := range b {
+			if y := a[k]; x != y && (x == x || y == y) {
 				seen[k] = true
 			}
 		}
 	case Int:
-		of := func(v *Vector, i int) int32 {
-			if v == nil || v.Ints == nil || i < 0 {
-				return NullInt
-			}
-			return v.Ints[i]
-		}
-		for k := range seen {
-			seen[k] = seen[k] || of(b, c.b[k]) != of(a, c.a[k])
+		b, a := c.ints(column)
+		for k, x := range b {
+			seen[k] = seen[k] || x != a[k]
 		}
 	case Text:
-		of := func(v *Vector, i int) string {
-			if v == nil || v.Codes == nil || i < 0 || v.Codes[i] == NullCode {
-				return ""
-			}
-			return v.Dict[v.Codes[i]]
-		}
-		for k := range seen {
-			seen[k] = seen[k] || of(b, c.b[k]) != of(a, c.a[k])
+		b, a, _ := c.texts(column)
+		for k, x := range b {
+			seen[k] = seen[k] || x != a[k]
 		}
 	}
 }
