@@ -5,6 +5,7 @@ import (
 	"slices"
 
 	"fluxwarden/qc/exact"
+	"fluxwarden/qc/sky"
 	"fluxwarden/rules"
 )
 
@@ -28,6 +29,7 @@ type Baseline struct {
 	bodyKnown [2]bool
 	kLW       float64 // measured over modelled clear-sky longwave
 	lwKnown   bool
+	model     sky.IneichenSite
 	pressure  float64 // station pressure over the standard one
 	elevation float64
 }
@@ -98,6 +100,7 @@ func learn(s *Setup, day int64, facts []DayFacts) Baseline {
 			b.kDiffuse = m
 		}
 	}
+	b.model = sky.NewIneichenSite(math.Max(b.linke, 1), b.elevation)
 	for k := range b.bodyAir {
 		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.BodyAir[k] }); n >= 60 {
 			b.bodyAir[k], b.bodyKnown[k] = m, true

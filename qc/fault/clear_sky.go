@@ -10,9 +10,14 @@ import (
 // ineichen is the clear sky of the site's own turbidity: global horizontal and direct normal, W/m2; both nothing where the
 // model has no answer.
 func (b *Baseline) ineichen(m *Minute) (global, direct float64) {
-	in := sky.IneichenInput{CosZenith: m.Mu, AirMass: sun.AirMassKastenYoung(m.ZenithDeg) * b.pressure, LinkeTurbidity: math.Max(b.linke, 1),
-		ElevationM: b.elevation, ExtraterrestrialWm2: m.SaWm2}
-	out, _ := sky.IneichenPerez(in)
+	out, _ := b.model.At(m.Mu, sun.AirMassKastenYoung(m.ZenithDeg)*b.pressure, m.SaWm2)
+	return out.GlobalWm2, out.DirectWm2
+}
+
+// withLinke is the clear sky at another turbidity.
+func (b *Baseline) withLinke(linke float64, v *view) (global, direct float64) {
+	model := sky.NewIneichenSite(math.Max(linke, 1), b.elevation)
+	out, _ := model.At(v.mu, sun.AirMassKastenYoung(v.zenithDeg)*b.pressure, v.sa)
 	return out.GlobalWm2, out.DirectWm2
 }
 

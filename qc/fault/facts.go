@@ -87,11 +87,7 @@ func (f *gatherFacts) sky(w *Watcher, v *view) {
 	}
 	tl := w.base.linkeOf(v)
 	f.linke.add(tl)
-	m := Minute{ZenithDeg: v.zenithDeg, Mu: v.mu, SaWm2: v.sa}
-	was := w.base.linke
-	w.base.linke = tl
-	cg, cn := w.base.ineichen(&m)
-	w.base.linke = was
+	cg, cn := w.base.withLinke(tl, v)
 	f.clearGlobal.add(g / cg)
 	f.clearDiffuse.add(d / (cg - float64(cn*v.mu)))
 	if b > 0.8*v.clear[rules.Direct] && !w.tainted(rules.LWDown) {

@@ -31,6 +31,7 @@ type view struct {
 	swing  [3]float64
 	sum    float64 // direct on the horizontal plus diffuse, at the station's own closure
 	steady bool    // the sum moved little since the minute before
+	room   float64 // what workScale gives
 }
 
 const (
@@ -81,12 +82,16 @@ func (v *view) look(w *Watcher, m *Minute) {
 	for q := range v.swing {
 		v.swing[q] = before.value[q] - float64((older.value[q]+v.value[q])/2)
 	}
+	v.room = v.workScale(w)
 	v.steady = before.minute == v.minute-1 && math.Abs(v.sum-before.sum) < float64(0.03*v.sum)+3
 }
 
-// scale is how well one expected value can be held against one measured, W/m2: a share of it, the offset of a good instrument, and,
+// scale is workScale's result, worked out once.
+func (v *view) scale(*Watcher) float64 { return v.room }
+
+// workScale is how well one expected value can be held against one measured, W/m2: a share of it, the offset of a good instrument, and,
 // on the edge of a cloud, part of what changed within the minute, for instruments do not follow alike.
-func (v *view) scale(w *Watcher) float64 {
+func (v *view) workScale(w *Watcher) float64 {
 	moved := 0.0
 	for i := range historyViews {
 		if p := w.prev(i); p.minute >= v.minute-2 && !math.IsNaN(p.sum) && !math.IsNaN(v.sum) {

@@ -29,28 +29,53 @@ func IneichenPerez(in IneichenInput) (Irradiance, bool) {
 		within(in.ExtraterrestrialWm2, 0, 2000) && within(in.CosZenith, -1, 1)) {
 		return Irradiance{}, false
 	}
-	if in.CosZenith <= 0 {
+	site := NewIneichenSite(in.LinkeTurbidity, in.ElevationM)
+	out, ok := site.At(in.CosZenith, in.AirMass, in.ExtraterrestrialWm2)
+	if ok && in.PerezFactor && in.CosZenith > 0 {
+		out.GlobalWm2 = float64(out.GlobalWm2 * exact.Exp(float64(0.01*exact.Pow(in.AirMass, 1.8))))
+		out = site.split(out.GlobalWm2, in.CosZenith, in.AirMass, in.ExtraterrestrialWm2)
+	}
+	return out, ok
+}
+
+// IneichenSite is what IneichenPerez needs of a place and its turbidity, worked out once for many minutes.
+type IneichenSite struct {
+	global, globalDepth, direct, directDepth, share float64
+}
+
+// NewIneichenSite takes the Linke turbidity (1..15) and the elevation in metres (-430..9000); it does not check them.
+func NewIneichenSite(linkeTurbidity, elevationM float64) IneichenSite {
+	fh1 := exact.Exp(-elevationM / 8000)
+	fh2 := exact.Exp(-elevationM / 1250)
+	cg2 := float64(3.92e-5*elevationM) + 0.0387
+	return IneichenSite{
+		global:      float64(5.09e-5*elevationM) + 0.868,
+		globalDepth: float64(-cg2 * (fh1 + float64(fh2*(linkeTurbidity-1)))),
+		direct:      0.664 + 0.163/fh1,
+		directDepth: float64(-0.09 * (linkeTurbidity - 1)),
+		share:       1 - (0.1-float64(0.2*exact.Exp(-linkeTurbidity)))/(0.1+0.882/fh1),
+	}
+}
+
+// At returns the cloudless irradiance as IneichenPerez does, for the cosine of the apparent zenith, the pressure-corrected air mass
+// (0.3..45) and the extraterrestrial normal irradiance in W m-2.
+func (s *IneichenSite) At(cosZenith, airMass, extraterrestrialWm2 float64) (Irradiance, bool) {
+	if cosZenith <= 0 {
 		return Irradiance{}, true
 	}
-	if !within(in.AirMass, 0.3, 45) {
+	if !within(airMass, 0.3, 45) {
 		return Irradiance{}, false
 	}
-	tl, am := in.LinkeTurbidity, in.AirMass
-	fh1 := exact.Exp(-in.ElevationM / 8000)
-	fh2 := exact.Exp(-in.ElevationM / 1250)
-	cg1 := float64(5.09e-5*in.ElevationM) + 0.868
-	cg2 := float64(3.92e-5*in.ElevationM) + 0.0387
-	global := float64(cg1 * in.ExtraterrestrialWm2 * in.CosZenith *
-		exact.Exp(float64(-cg2*am*(fh1+float64(fh2*(tl-1))))))
-	if in.PerezFactor {
-		global = float64(global * exact.Exp(float64(0.01*exact.Pow(am, 1.8))))
-	}
-	b := 0.664 + 0.163/fh1
-	direct := float64(b * in.ExtraterrestrialWm2 * exact.Exp(float64(-0.09*am*(tl-1))))
-	limit := float64(global*(1-(0.1-float64(0.2*exact.Exp(-tl)))/(0.1+0.882/fh1))) / in.CosZenith
-	direct = math.Min(direct, limit)
-	beam := float64(direct * in.CosZenith)
-	return Irradiance{GlobalWm2: global, DirectWm2: direct, DiffuseWm2: global - beam}, true
+	global := float64(s.global * extraterrestrialWm2 * cosZenith * exact.Exp(float64(s.globalDepth*airMass)))
+	return s.split(global, cosZenith, airMass, extraterrestrialWm2), true
+}
+
+// split takes the beam out of global.
+func (s *IneichenSite) split(global, cosZenith, airMass, extraterrestrialWm2 float64) Irradiance {
+	direct := float64(s.direct * extraterrestrialWm2 * exact.Exp(float64(s.directDepth*airMass)))
+	direct = math.Min(direct, float64(global*s.share)/cosZenith)
+	beam := float64(direct * cosZenith)
+	return Irradiance{GlobalWm2: global, DirectWm2: direct, DiffuseWm2: global - beam}
 }
 
 // LinkeTurbidity returns the Linke turbidity that gives a measured cloudless direct normal irradiance,

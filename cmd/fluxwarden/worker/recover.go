@@ -94,6 +94,16 @@ func (s *station) load(from int64) error {
 		s.summaries[sum.Day] = sum
 		s.lastEnded = max(s.lastEnded, sum.Day)
 	}
+	if len(s.summaries) == 0 && from > firstDay { // silent for weeks: the last day before them is looked back on all the same
+		earlier, err := s.w.cfg.Archive.Summaries(s.id, firstDay, from-1)
+		if err != nil {
+			return err
+		}
+		if n := len(earlier); n > 0 {
+			s.summaries[earlier[n-1].Day] = earlier[n-1]
+			s.lastEnded = max(s.lastEnded, earlier[n-1].Day)
+		}
+	}
 	s.loadedFrom = from
 	s.older = s.older[:0]
 	inSummaries := map[string]bool{}
@@ -119,8 +129,14 @@ func (s *station) trim() {
 	if s.loadedFrom >= keep {
 		return
 	}
+	newest := int64(firstDay) - 1
 	for d := range s.summaries {
-		if d < keep {
+		if d < s.current.day {
+			newest = max(newest, d)
+		}
+	}
+	for d := range s.summaries {
+		if d < keep && d != newest {
 			s.older = append(s.older, s.summaries[d].Closed...)
 			delete(s.summaries, d)
 		}

@@ -252,6 +252,17 @@ func (s *station) history(day int64) []engine.DaySummary {
 			h = append(h, sum)
 		}
 	}
+	if len(h) == 0 { // after weeks of silence the last day before them still hands on what was open
+		last := int64(firstDay) - 1
+		for d := range s.summaries {
+			if d < day {
+				last = max(last, d)
+			}
+		}
+		if sum, ok := s.summaries[last]; ok {
+			h = append(h, sum)
+		}
+	}
 	return h
 }
 
