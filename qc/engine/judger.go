@@ -154,7 +154,7 @@ func (j *Judger) watch(r int) {
 	m, d := &j.minute, j.judged
 	m.Minute = d.Day*minute.PerDay + int64(r)
 	m.ZenithDeg, m.AzimuthDeg, m.Mu = d.ApparentZenithDeg[r], d.AzimuthDeg[r], d.CosZenith[r]
-	m.SaWm2 = d.ExtraterrestrialWm2[r]
+	m.SaWm2 = RoundIrradiance(d.sun.sunlightWm2(r))
 	m.Hidden = d.sun.rows[r].Hidden
 	m.Records = int(d.Records[r])
 	m.AnyConflict = false

@@ -35,8 +35,9 @@ func roundBearing(v float64) float64 {
 
 // A sunDay is where the sun stands in each minute of a day, worked out once.
 type sunDay struct {
-	day  int64
-	rows []limit.Sun
+	day      int64
+	rows     []limit.Sun
+	obscured []float64 // share of the sun's disc that the moon covers; nil on a day without an eclipse here
 }
 
 // StandardPressure is the pressure of the standard atmosphere at an elevation, hPa: 1013.25 (1 - 2.25577e-5 h)^5.25588 (ISO
@@ -49,6 +50,15 @@ func StandardPressure(elevationM float64) float64 {
 // weather channel for less than 0.02 degrees at the horizon.
 const refractionTemperatureC = 10
 
+// sunlightWm2 is what comes from the part of the sun's disc that the moon leaves, normal to the beam: an eclipse scales the expected sky
+// and is nobody's fault. The limits keep the whole disc: they are there for what no sky can do.
+func (s *sunDay) sunlightWm2(r int) float64 {
+	if s.obscured == nil {
+		return s.rows[r].SaWm2
+	}
+	return float64(s.rows[r].SaWm2 * (1 - s.obscured[r]))
+}
+
 // fill works out the sun for the day, mid-minute, and writes it to the judged columns.
 func (s *sunDay) fill(p *Plan, j *Judged, unixDay int64) {
 	s.day = unixDay
@@ -56,6 +66,13 @@ func (s *sunDay) fill(p *Plan, j *Judged, unixDay int64) {
 		s.rows = make([]limit.Sun, minute.PerDay)
 	}
 	day := sun.NewDay(unixDay, p.site)
+	s.obscured = nil
+	if eclipse := sun.NewEclipse(&day, p.site); eclipse.Possible() {
+		s.obscured = make([]float64, minute.PerDay)
+		for i := range s.obscured {
+			s.obscured[i] = eclipse.ObscuredFraction(float64(60*i + 30))
+		}
+	}
 	for i := range s.rows {
 		at := day.AtMinute(float64(60*i + 30))
 		sa := p.Station.Limits.SolarConstantWm2 / (at.DistanceAU * at.DistanceAU)
