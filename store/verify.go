@@ -111,6 +111,8 @@ func (v *verification) listOthers() error {
 	one := func(name string) error {
 		switch {
 		case v.known[name] || manifestName.MatchString(name) || recordName.MatchString(name) || leftoverName.MatchString(name) || name == "lock":
+		case name == scheduleName:
+			v.todo = append(v.todo, a.verifySchedule)
 		case name == "archive.json":
 			v.todo = append(v.todo, a.verifyFormat)
 		case strings.HasPrefix(name, "superseded/") && hashedName.MatchString(name):

@@ -84,7 +84,7 @@ func openToRejudge(dir string, readOnly bool) (*store.Archive, error) {
 
 // dayRange reads the first and the last day of a range, either of which may be left out.
 func dayRange(from, to string) (first, last int64, err error) {
-	first, last = math.MinInt32, math.MaxInt32
+	first, last = math.MinInt32, math.MaxInt32 // no bound
 	for _, x := range []struct {
 		text string
 		into *int64
@@ -130,6 +130,9 @@ func (r *rejudging) run(station string, asJSON bool) (int, error) {
 	}
 	if !slices.ContainsFunc(r.diffs, func(d difference) bool { return !d.empty() }) {
 		fmt.Fprintln(os.Stderr, "nothing changes; nothing was written")
+		if r.atOnce {
+			return exitOK, r.keepSchedule(station != "")
+		}
 		return exitOK, nil
 	}
 	if r.dryRun {
@@ -149,7 +152,7 @@ func (r *rejudging) run(station string, asJSON bool) (int, error) {
 		}
 	}
 	fmt.Fprintf(os.Stderr, "written: %d commits\n", r.wrote)
-	return exitOK, nil
+	return exitOK, r.keepSchedule(station != "")
 }
 
 // groups gives the stations to judge, those of one partition together: their rows are committed together.
