@@ -149,6 +149,8 @@ func TestWhatIsSaid(t *testing.T) {
 		{"dome taken out", pyrgeometer(true, "d", 3, "SI"), "uncoupled dome", false},
 		{"uncoupled dome", pyrgeometer(true, "d", 0, "SI"), "uncoupled dome", true},
 		{"coupled dome", pyrgeometer(true, "", 0, "SI"), "taken as coupled", true},
+		{"dome taken out by the logger", NewBudget(&rules.Instrument{Measures: rules.LWDown, Input: rules.Input{Irradiance: "l", Case: "c", Dome: "d"}}, nil), "dome temperature", true},
+		{"dome not taken out by the logger", NewBudget(&rules.Instrument{Measures: rules.LWDown, Input: rules.Input{Irradiance: "l", Case: "c", Dome: "d"}}, nil), "not taken out", false},
 		{"SI", pyrgeometer(true, "", 0, "SI"), "scale", false},
 		{"WISG", pyrgeometer(true, "", 0, "WISG"), "scale: WISG", true},
 		{"no scale", pyrgeometer(true, "", 0, ""), "scale: not stated", true},

@@ -26,16 +26,20 @@ const (
 // sensitivity's, with which it was fitted.
 func (b *Budget) pyrgeometer(in *rules.Instrument, cal *rules.Calibration) {
 	b.Class = "pyrgeometer, limits assumed"
+	k3 := cal.K3
+	if in.Input.Signal == "" && in.Input.Dome != "" && k3 == 0 {
+		k3 = silicon // the logger takes the dome out, by a coefficient that it does not tell
+	}
 	b.calibration(byNet, cal, pyrgeometerCalibrationPercent)
 	b.share("non-stability since the calibration", byNetYears, pyrgeometerStabilityPercent, "assumed, of the net signal", " a year")
 	b.share("temperature response", byNet, pyrgeometerTemperaturePercent, "assumed, of the net signal", "")
 	b.share("non-linearity", byNet, pyrgeometerLinearityPercent, "assumed, of the net signal", "")
 	b.share("tilt response", byNet, pyrgeometerTiltPercent, "assumed, of the net signal", "")
 	b.add("emission of the body, k2", byEmission, emissionCoefficient, Rectangular, "Groebner 2008")
-	b.add("body temperature", byBodyKelvin, bodyToleranceK*(cal.K2+cal.K3), Rectangular, "0.2 K, from memory")
-	b.dome(in, cal)
+	b.add("body temperature", byBodyKelvin, bodyToleranceK*(cal.K2+k3), Rectangular, "0.2 K, from memory")
+	b.dome(in, k3)
 	if in.Measures == rules.LWDown && !in.Shaded {
-		if cal.K3 > 0 {
+		if k3 > 0 {
 			b.add("unshaded: sun on the dome", byBeam, unshadedDomeWm2/1000, Rectangular, "2.6 W/m2 at 1000 of beam, dome temperature taken out")
 		} else {
 			b.add("unshaded: sun on the dome", byBeam, unshadedWm2/1000, Rectangular, "15 W/m2 at 1000 of beam")
@@ -52,10 +56,10 @@ func (b *Budget) pyrgeometer(in *rules.Instrument, cal *rules.Calibration) {
 }
 
 // dome adds what the dome's own emission leaves.
-func (b *Budget) dome(in *rules.Instrument, cal *rules.Calibration) {
+func (b *Budget) dome(in *rules.Instrument, k3 float64) {
 	switch {
-	case cal.K3 > 0 && in.Input.Dome != "":
-		b.add("dome temperature", byDomeKelvin, bodyToleranceK*cal.K3, Rectangular, "0.2 K, from memory")
+	case k3 > 0 && in.Input.Dome != "":
+		b.add("dome temperature", byDomeKelvin, bodyToleranceK*k3, Rectangular, "0.2 K, from memory")
 		b.add("emission of the dome, k3", byDomeExchange, domeCoefficient, Rectangular, "Groebner 2008")
 	case in.Input.Dome != "":
 		b.add("uncoupled dome, not taken out", byBodyKelvin, silicon*uncoupledDomeK, Rectangular, "0.5 K off the body, assumed: no k3")
