@@ -13,7 +13,7 @@ import (
 func pointingLost(w *Watcher, c *faultCase, v *view) hint {
 	g, b, d := v.g(), v.b(), v.d()
 	cg, cb := v.clear[rules.Global], v.clear[rules.Direct]
-	if !v.sunUp || math.IsNaN(g+b+d) || !w.base.skyKnown || v.mu < 0.15 || cg < 80 {
+	if !v.sunUp || math.IsNaN(g+b+d) || !w.base.skyKnown || v.mu < 0.25 || cg < 80 {
 		return nothing
 	}
 	k := g / cg

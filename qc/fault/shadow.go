@@ -17,7 +17,7 @@ type dip struct {
 const (
 	dipsMost         = 40
 	dipDays          = 12
-	dipLongest       = 45 // minutes: beyond it is no mast or pole
+	dipLongest       = 30 // minutes: beyond it is no mast or pole
 	dipShortest      = 3
 	shadowEdgeDeg    = 0.7 // by which two bearings of one obstacle may differ, and the sun's own width
 	shadowClearMost  = 4   // minutes of full beam at its bearing that end it

@@ -176,7 +176,7 @@ func (w *Watcher) Episodes() []Episode {
 func (w *Watcher) raise(e Episode) *Episode {
 	for i := range w.open {
 		o := &w.open[i]
-		if o.Instrument == e.Instrument && o.Kind == e.Kind || explains(o, &e) {
+		if o.Instrument == e.Instrument && o.Kind == e.Kind || explains(o, &e) && (o.Instrument == e.Instrument || w.isShortwave(o.Instrument)) {
 			return nil
 		}
 	}
