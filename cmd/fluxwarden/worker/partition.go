@@ -154,7 +154,8 @@ func (w *Worker) CommitAll(ctx context.Context) {
 }
 
 func (w *Worker) commit(ctx context.Context, p *partition, now time.Time) {
-	c := &Commit{Partition: p.number, Base: p.base, Epoch: p.epoch, Positions: []Position{p.taken}, RulesDigest: w.cfg.Rules.Digest(), Program: w.cfg.Program}
+	c := &Commit{Partition: p.number, Base: p.base, Epoch: p.epoch, Positions: []Position{p.taken}, RulesDigest: w.cfg.Rules.Digest(),
+		Program: w.cfg.Program, Time: now}
 	if w.cfg.Faulty.PositionEarly && w.cursor != nil {
 		c.Positions[0].Seq += w.cursor.Pending()
 		c.Positions[0].Stamp = 0

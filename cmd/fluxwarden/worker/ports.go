@@ -93,6 +93,7 @@ type Commit struct {
 	Positions   []Position
 	RulesDigest string
 	Program     string
+	Time        time.Time // when it was made
 	Raw         []RawPart
 	Days        []Day
 	Faults      []StationFaults

@@ -127,7 +127,7 @@ func (s *Store) Last(partition int) (base uint64, positions []Position, err erro
 
 // Commit implements Archive.
 func (s *Store) Commit(c *Commit) (number uint64, err error) {
-	out := &store.Commit{Partition: c.Partition, Base: c.Base, Epoch: c.Epoch, RulesDigest: c.RulesDigest, Program: c.Program}
+	out := &store.Commit{Partition: c.Partition, Base: c.Base, Epoch: c.Epoch, RulesDigest: c.RulesDigest, Program: c.Program, Time: c.Time}
 	for _, p := range c.Positions {
 		out.Positions = append(out.Positions, store.Position{Stream: p.Stream, Created: p.Created, Seq: p.Seq},
 			store.Position{Stream: stampStream(p.Stream), Created: p.Stamp, Seq: p.Seq})
