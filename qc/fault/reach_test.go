@@ -173,3 +173,16 @@ func TestExplains(t *testing.T) {
 		}
 	}
 }
+
+// A lost or wet pyrgeometer says nothing about how global, direct and diffuse close.
+func TestLongwaveExplainsNoShortwave(t *testing.T) {
+	for _, kind := range []rules.FaultKind{rules.SignalLost, rules.SignalFrozen, rules.DomeWet, rules.Noise} {
+		for _, who := range []string{"L1", "U1", "R1"} {
+			w := NewWatcher(whole(), 20000, nil, nil)
+			w.raise(Episode{Instrument: who, Kind: kind, Severity: rules.Act, From: 1, Raised: 2})
+			if w.raise(Episode{Instrument: "G1", Kind: rules.SensorTilted, Severity: rules.Act, From: 1, Raised: 3}) == nil {
+				t.Errorf("%s of %s hides that G1 is out of level", kind, who)
+			}
+		}
+	}
+}
