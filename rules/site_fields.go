@@ -172,7 +172,7 @@ var calibrationField = field{kind: objectKind, doc: "One period of the history. 
 	{key: "k2", kind: numberKind, low: 0.9, high: 1.1, fallback: "1", doc: "Pyrgeometer coefficient k2."},
 	{key: "k3", kind: numberKind, low: -1, high: 10, fallback: "0", doc: "Pyrgeometer coefficient k3, on the dome; it needs a dome temperature."},
 	{key: "zero", kind: numberKind, unit: "W/m2", low: -50, high: 50, fallback: "0", doc: "Subtracted after the conversion, in the quantity's unit."},
-	{key: "temperature", kind: numbersKind, unit: "1/K, 1/K2, ...", least: 1, most: 4, low: -0.1, high: 0.1,
+	{key: "temperature", kind: numbersKind, unit: "1/K, 1/K2, ...", least: 1, most: 3, low: -0.1, high: 0.1,
 		doc: "Coefficients a, b, ... of the response: sensitivity times 1 + a (T-20) + b (T-20)^2 + ..., T in degrees C."},
 }}
 

@@ -58,7 +58,7 @@ func (s *seriesPlan) at(minuteUTC int64) (cal *rules.Calibration, until int64) {
 
 // convert turns rows [from, to) of the block into the series' own unit: Measured, SD, Min, Max, N, and the body temperatures of a
 // pyrgeometer. A logger's mark counts as nothing sent.
-func (s *seriesPlan) convert(out *Series, block *minute.Block, nothing []float64, from, to int) {
+func (s *seriesPlan) convert(out *Series, block *minute.Block, nothing, air []float64, from, to int) {
 	out.forget(nothing, from, to)
 	col := &block.Columns[s.signal]
 	switch {
@@ -82,10 +82,33 @@ func (s *seriesPlan) convert(out *Series, block *minute.Block, nothing []float64
 			s.uncalibrated(out, col, r, end)
 		case s.quantity.Longwave():
 			s.pyrgeometer(out, col, cal, r, end)
+		case len(cal.TemperatureCoeff) > 0:
+			s.warmed(out, block, cal, air, r, end)
 		default:
 			s.linear(out, col, scale{s.microvolts, cal.SensitivityUVPerW, -cal.ZeroWm2}, r, end)
 		}
 		r = end
+	}
+}
+
+// responseReferenceC is the temperature that a certificate's sensitivity holds at, where it gives a temperature response.
+const responseReferenceC = 20
+
+// warmed converts rows of an instrument whose sensitivity depends on its temperature: on its own thermometer, or on the air where it has
+// none. Where neither is there the sensitivity is taken as it is.
+func (s *seriesPlan) warmed(out *Series, block *minute.Block, cal *rules.Calibration, air []float64, from, to int) {
+	response := sensor.TemperatureResponse{ReferenceC: responseReferenceC}
+	copy(response.Coefficients[:], cal.TemperatureCoeff)
+	for r := from; r < to; r++ {
+		t := air[r]
+		if s.bodyCol >= 0 {
+			t = temperatureC(block.Columns[s.bodyCol].Mean[r], s.instrument.Input.CaseUnit)
+		}
+		sens := cal.SensitivityUVPerW
+		if f := response.FactorAt(t); !math.IsNaN(f) {
+			sens *= f
+		}
+		s.linear(out, &block.Columns[s.signal], scale{s.microvolts, sens, -cal.ZeroWm2}, r, r+1)
 	}
 }
 
@@ -127,10 +150,8 @@ func (c *scale) of(v float64) float64 { return float64(float64(v*c.per)/c.diviso
 // linear converts rows whose value is a straight line of the signal.
 func (s *seriesPlan) linear(out *Series, col *minute.Column, c scale, from, to int) {
 	sds, los, his, counts := col.SD[:to], col.Min[:to], col.Max[:to], col.N[:to]
-	for r, v := range col.Mean[:to] {
-		if r < from {
-			continue
-		}
+	for r := from; r < to; r++ {
+		v := col.Mean[r]
 		if !(counts[r] != 0 && v > limit.MarkBelow && v < minute.NoMeasurementAbove) && !s.sent(out, col, r) {
 			continue
 		}
@@ -167,11 +188,17 @@ func (s *seriesPlan) bodies(out *Series, block *minute.Block, from, to int) {
 
 // pyrgeometer converts a thermopile's voltage and the body temperatures by the form of Philipona et al. 1995.
 func (s *seriesPlan) pyrgeometer(out *Series, col *minute.Column, cal *rules.Calibration, from, to int) {
-	uv, sens := s.microvolts, cal.SensitivityUVPerW
+	uv := s.microvolts
 	form := sensor.Philipona{K1: cal.K1, K2: cal.K2, K3: cal.K3}
 	coupled := s.domeCol < 0 || cal.K3 == 0 // the dome's temperature is not used, and may be broken
+	response := sensor.TemperatureResponse{ReferenceC: responseReferenceC}
+	copy(response.Coefficients[:], cal.TemperatureCoeff)
 	for r := from; r < to; r++ {
 		bodyC, domeC := out.bodyC[r], out.domeC[r]
+		sens := cal.SensitivityUVPerW
+		if f := response.FactorAt(bodyC); !math.IsNaN(f) {
+			sens *= f
+		}
 		if coupled {
 			domeC, out.domeC[r] = bodyC, math.NaN()
 		}

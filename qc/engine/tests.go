@@ -32,7 +32,15 @@ func testsOf(q rules.Quantity) rules.TestSet {
 func (p *Plan) Prepare(j *Judged, block *minute.Block, from, to int) {
 	copy(j.Records[from:to], block.Records[from:to])
 	for i := range p.series {
-		p.series[i].convert(&j.Series[i], block, p.nothing, from, to)
+		if p.series[i].weather != nil {
+			p.series[i].convert(&j.Series[i], block, p.nothing, nil, from, to)
+		}
+	}
+	air := p.airColumn(j) // for the instruments that have a temperature response and no thermometer of their own
+	for i := range p.series {
+		if p.series[i].weather == nil {
+			p.series[i].convert(&j.Series[i], block, p.nothing, air, from, to)
+		}
 	}
 	for i := range p.series {
 		p.singleTests(j, &p.series[i], &j.Series[i], block, from, to)
