@@ -180,6 +180,9 @@ func (w *Watcher) raise(e Episode) *Episode {
 			return nil
 		}
 	}
+	if again := w.reopen(&e); again != nil {
+		return again
+	}
 	e.Station, e.To, e.Rev = w.setup.Station, Open, 1
 	e.ID = episodeID(&e)
 	if e.Advice == "" {
@@ -188,6 +191,30 @@ func (w *Watcher) raise(e Episode) *Episode {
 	e.Confidence = float64(quantise(e.Confidence))
 	w.open = append(w.open, e)
 	return &w.open[len(w.open)-1]
+}
+
+// reopenMinutes is within how long the same fault of the same instrument is the same episode that had seemed to be over.
+const reopenMinutes = 240
+
+// reopen takes back the end of an episode that has turned out not to be over; nil if there is none.
+//
+// Only what rests on how the three close can seem to be over: a signal that came back, or a record, did come back.
+func (w *Watcher) reopen(e *Episode) *Episode {
+	if !restsOnClosing.Has(e.Kind) || e.Kind == rules.SignalLost {
+		return nil
+	}
+	for i := range w.closed {
+		o := w.closed[i]
+		if o.Instrument == e.Instrument && o.Kind == e.Kind && o.Severity == e.Severity && e.Raised-o.To < reopenMinutes {
+			o.To, o.Evidence, o.Also = Open, e.Evidence, e.Also
+			o.From = min(o.From, e.From)
+			o.Rev++
+			w.closed = slices.Delete(w.closed, i, i+1)
+			w.open = append(w.open, o)
+			return &w.open[len(w.open)-1]
+		}
+	}
+	return nil
 }
 
 // finish closes the open episode i with the first minute that is sound again.
