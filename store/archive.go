@@ -91,7 +91,10 @@ func OpenForWriting(f vfs.FS, dir string, o Options) (*Archive, error) {
 	}
 	var err error
 	if a.lock, err = f.Lock(a.path("lock"), o.Owner); err != nil {
-		return nil, fmt.Errorf("archive %s: %w; only one program may write to it", dir, err)
+		if held := (*vfs.HeldError)(nil); errors.As(err, &held) {
+			return nil, fmt.Errorf("archive %s: %w; only one program may write to it", dir, err)
+		}
+		return nil, fmt.Errorf("archive %s: cannot be written to: %w", dir, err)
 	}
 	if err := a.begin(); err != nil {
 		a.lock.Close()

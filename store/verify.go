@@ -43,8 +43,11 @@ func (a *Archive) Verify(progress func(done, total int)) ([]Finding, error) {
 				}
 			}
 		}
+		have := p.have
 		p.mu.RUnlock()
-		v.todo = append(v.todo, func() []Finding { return a.verifyRecords(i) })
+		if n, err := a.firstRecord(i); have || err != nil || n > 0 {
+			v.todo = append(v.todo, func() []Finding { return a.verifyRecords(i) })
+		}
 	}
 	if err := v.listOthers(); err != nil {
 		return nil, err

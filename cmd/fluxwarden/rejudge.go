@@ -10,6 +10,7 @@ import (
 	"slices"
 	"strings"
 	"sync"
+	"syscall"
 	"time"
 
 	"fluxwarden/ingest/broker"
@@ -68,6 +69,9 @@ func cmdRejudge(args []string) int {
 		return complain(exitProblem, fmt.Errorf("rejudge: %w", err))
 	}
 	code, err := r.run(*station, *asJSON)
+	if errors.Is(err, syscall.ENOSPC) {
+		err = fmt.Errorf("%w; the archive is whole: make room and run it again", err)
+	}
 	if err = errors.Join(err, r.archive.Close()); err != nil {
 		return complain(exitProblem, fmt.Errorf("rejudge: %w", err))
 	}
