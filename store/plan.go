@@ -7,7 +7,6 @@ import (
 	"fmt"
 	"slices"
 	"strconv"
-	"time"
 
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/minute"
@@ -21,9 +20,7 @@ func (d *draft) meta(f *File, digests map[string]string) map[string]string {
 	m := map[string]string{"station": f.Station, "table": f.Table, "period": f.Period, "sealed": strconv.FormatBool(f.Sealed),
 		"format": strconv.Itoa(FormatVersion), "partition": strconv.Itoa(d.c.Partition), "commit": strconv.FormatUint(d.number, 10),
 		"program": d.c.Program, "rules_digest": d.c.RulesDigest}
-	if !d.c.Time.IsZero() {
-		m["written"] = d.c.Time.UTC().Format(time.RFC3339)
-	}
+	// When a file was written stands in the commit record: the same rows give the same bytes.
 	if f.Table == TableMinutes {
 		for k, v := range d.c.Meta {
 			m[k] = v

@@ -28,8 +28,8 @@ type Revision struct {
 	Program      string `json:"program"`
 	JudgeVersion int    `json:"judge"`
 	Reason       string `json:"reason,omitempty"`
-	Written      string `json:"written,omitempty"` // RFC 3339; empty where the writer did not say
-	Path         string `json:"-"`                 // of the file that holds it
+	Written      string `json:"-"` // RFC 3339; empty where the writer did not say or the record is no longer there
+	Path         string `json:"-"` // of the file that holds it
 	Superseded   bool   `json:"-"`
 }
 
@@ -43,7 +43,7 @@ const (
 
 // isOwnMeta says whether a key is the store's own, and written anew with each file.
 func isOwnMeta(key string) bool {
-	return slices.Contains([]string{"columns", "written", metaDayCommits, metaCommits, metaDayReasons}, key)
+	return slices.Contains([]string{"columns", metaDayCommits, metaCommits, metaDayReasons}, key)
 }
 
 // revisionsOf gives the revisions that a file of minutes holds, by the day's name.
@@ -60,7 +60,7 @@ func revisionsOf(f File, meta map[string]string) (map[string]Revision, error) {
 			}
 		}
 	}
-	own := Revision{RulesDigest: meta["rules_digest"], Program: meta["program"], Written: meta["written"]}
+	own := Revision{RulesDigest: meta["rules_digest"], Program: meta["program"]}
 	own.Commit, _ = strconv.ParseUint(meta["commit"], 10, 64)
 	own.JudgeVersion, _ = strconv.Atoi(meta["judge_version"])
 	out := map[string]Revision{}
@@ -126,7 +126,7 @@ func (d *draft) dateDays(f *File, meta map[string]string, old []File) error {
 
 // strip leaves what is the same for all days of a commit, or nearly so.
 func strip(r Revision) Revision {
-	r.Commit, r.Digest, r.Path, r.Superseded = 0, "", "", false
+	r.Commit, r.Digest, r.Written, r.Path, r.Superseded = 0, "", "", "", false
 	return r
 }
 
@@ -230,6 +230,7 @@ func (a *Archive) Revisions(station string, day int64) ([]Revision, error) {
 		return nil
 	})
 	slices.SortStableFunc(list, func(x, y Revision) int { return cmp.Compare(x.Commit, y.Commit) })
+	a.dateRevisions(station, list)
 	// A month that was written again for another day's sake holds the same revision of this one; the current file is the one to name.
 	out := list[:0]
 	for _, r := range list {
@@ -239,7 +240,24 @@ func (a *Archive) Revisions(station string, day int64) ([]Revision, error) {
 		}
 		out = append(out, r)
 	}
+	if i, ok := a.partitionOf(station); ok {
+		for k := range out { // the record says when; a file does not, so that the same rows give the same bytes
+			if r, _, e := a.readRecord(i, out[k].Commit); e == nil && out[k].Written == "" {
+				out[k].Written = r.Time
+			}
+		}
+	}
 	return out, err
+}
+
+// dateRevisions says when revisions were written, where the records of then are still there.
+func (a *Archive) dateRevisions(station string, list []Revision) {
+	i, ok := a.partitionOf(station)
+	for k := range list {
+		if r, _, err := a.readRecord(i, list[k].Commit); ok && err == nil {
+			list[k].Written = r.Time
+		}
+	}
 }
 
 // supersededOf lists the replaced files of minutes of a station's month.

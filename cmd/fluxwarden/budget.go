@@ -47,7 +47,7 @@ func cmdBudget(args []string) int {
 	fs.Float64Var(&q.netWm2, "net", math.NaN(), "net longwave, W/m2, negative under a clear sky; assumed otherwise")
 	fs.Float64Var(&q.bodyC, "body", math.NaN(), "body temperature of a pyrgeometer, degrees C; assumed otherwise")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	numbers := 0
 	fs.Visit(func(f *flag.Flag) {

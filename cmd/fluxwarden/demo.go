@@ -59,7 +59,7 @@ func cmdDemo(args []string) int {
 	fs.StringVar(&o.listen, "listen", "", "address of pages and metrics; "+demoListen+" or a free port otherwise")
 	fs.DurationVar(&o.length, "for", 0, "stop after so long, such as 30s; at Ctrl-C otherwise")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if fs.NArg() > 0 || !(o.speed >= 1 && o.speed <= demoSpeedMax) || o.length < 0 {
 		return complain(exitUsage, errors.New("demo: want [--speed 1..3600] [--archive DIR] [--seed N] [--listen HOST:PORT] [--for 30s]"))

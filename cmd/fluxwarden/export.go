@@ -23,7 +23,7 @@ func cmdExport(args []string) int {
 	from := fs.String("from", "", "first minute: a date or RFC 3339; the first there is otherwise")
 	to := fs.String("to", "", "end, not included: a date or RFC 3339; the last there is otherwise")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *archive == "" || fs.NArg() > 0 || *product != "minutes" || *format != "csv" {
 		return complain(exitUsage, errors.New("export: want --archive DIR --station S --product minutes --format csv [--from T] [--to T]"))

@@ -24,7 +24,7 @@ func cmdFaults(args []string) int {
 	station := fs.String("station", "", "one station; all of them otherwise")
 	format := fs.String("format", "table", "table or jsonl")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *archive == "" || fs.NArg() > 0 || *format != "table" && *format != "jsonl" {
 		return complain(exitUsage, errors.New("faults: want --archive DIR [--station S] [--format table|jsonl]"))

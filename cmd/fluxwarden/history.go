@@ -32,7 +32,7 @@ func cmdHistory(args []string) int {
 	day := fs.String("day", "", "UTC day such as 2026-06-21")
 	asJSON := fs.Bool("json", false, "print revisions as JSON lines")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *archive == "" || *day == "" || fs.NArg() > 0 {
 		return complain(exitUsage, errors.New("history: want --archive DIR --station S --day DAY [--json]"))

@@ -27,7 +27,7 @@ func cmdJudge(args []string) int {
 	archive := fs.String("archive", "", "folder of the archive; made if it is not there")
 	station := fs.String("station", "", "station that the readings are of; needed where the site file has several")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *site == "" || *archive == "" || fs.NArg() == 0 {
 		return complain(exitUsage, errors.New("judge: want --site FILE --archive DIR and at least one file of readings"))

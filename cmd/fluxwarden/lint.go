@@ -15,7 +15,7 @@ func cmdLint(args []string) int {
 	fs := flag.NewFlagSet("lint", flag.ContinueOnError)
 	schema := fs.Bool("schema", false, "print the JSON Schema of a site file and stop")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *schema {
 		os.Stdout.Write(rules.Schema())

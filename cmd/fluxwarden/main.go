@@ -3,6 +3,8 @@
 package main
 
 import (
+	"errors"
+	"flag"
 	"fmt"
 	"os"
 	"strings"
@@ -45,9 +47,13 @@ func commands() []command {
 }
 
 func main() {
-	if len(os.Args) < 2 || os.Args[1] == "help" || os.Args[1] == "-h" || os.Args[1] == "--help" {
+	if len(os.Args) < 2 {
 		usage()
 		os.Exit(exitUsage)
+	}
+	if os.Args[1] == "help" || os.Args[1] == "-h" || os.Args[1] == "--help" {
+		usage()
+		os.Exit(exitOK)
 	}
 	for _, c := range commands() {
 		if c.name == os.Args[1] {
@@ -90,4 +96,12 @@ func suggestion(typed string) string {
 func complain(code int, err error) int {
 	fmt.Fprintf(os.Stderr, "fluxwarden: %v\n", err)
 	return code
+}
+
+// parseCode is the exit code after flags that could not be parsed: asking for help is no misuse.
+func parseCode(err error) int {
+	if errors.Is(err, flag.ErrHelp) {
+		return exitOK
+	}
+	return exitUsage
 }

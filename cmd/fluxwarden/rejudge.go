@@ -52,7 +52,7 @@ func cmdRejudge(args []string) int {
 	dryRun := fs.Bool("dry-run", false, "show what would change and write nothing; a daemon may be running meanwhile")
 	asJSON := fs.Bool("json", false, "print the differences as JSON lines")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *archive == "" || *site == "" || fs.NArg() > 0 || *yes && *dryRun {
 		return complain(exitUsage, errors.New("rejudge: want --archive DIR --site FILE [--station S] [--from DAY] [--to DAY] [--yes | --dry-run] [--json]"))

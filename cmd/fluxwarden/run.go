@@ -32,7 +32,7 @@ func cmdRun(args []string) int {
 		fs.PrintDefaults()
 	}
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	s := daemon.DefaultSettings()
 	if *settings != "" {

@@ -30,7 +30,7 @@ func cmdSimulate(args []string) int {
 	seed := fs.Uint64("seed", 1, "of the weather and the noise: the same seed gives the same readings")
 	climate := fs.String("climate", "", "maritime, desert, tropical or polar; by latitude otherwise")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *site == "" || *from == "" || *to == "" || *out == "" || fs.NArg() > 0 {
 		return complain(exitUsage, errors.New("simulate: want --site FILE --from T --to T --out readings.csv [--station S] [--faults FILE] [--seed N] [--climate NAME]"))

@@ -31,7 +31,7 @@ func cmdSky(args []string) int {
 	step := fs.Duration("step", time.Minute, "time between rows")
 	format := fs.String("format", "table", "csv or table")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *site == "" || *from == "" || *to == "" || fs.NArg() > 0 || *step <= 0 || *format != "csv" && *format != "table" {
 		return complain(exitUsage, errors.New("sky: want --site FILE [--station S] --from T --to T [--step 1m] [--format csv|table]"))

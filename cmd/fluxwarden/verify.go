@@ -24,7 +24,7 @@ func cmdVerify(args []string) int {
 	archive := fs.String("archive", "", "folder of the archive; a daemon may be running meanwhile")
 	asJSON := fs.Bool("json", false, "print findings as JSON lines")
 	if err := fs.Parse(args); err != nil {
-		return exitUsage
+		return parseCode(err)
 	}
 	if *archive == "" || fs.NArg() > 0 {
 		return complain(exitUsage, errors.New("verify: want --archive DIR [--json]"))

@@ -60,6 +60,7 @@ func Connect(s ConnectSettings) (*Broker, error) {
 		nats.CustomReconnectDelay(retryDelay), nats.PingInterval(pingInterval), nats.MaxPingsOutstanding(2),
 		nats.ReconnectBufSize(reconnectBytes),
 		nats.ConnectHandler(state(nil)), nats.ReconnectHandler(state(nil)), nats.ClosedHandler(func(c *nats.Conn) { state(c.LastError())(c) }),
+		nats.ReconnectErrHandler(func(c *nats.Conn, err error) { state(err)(c) }),
 		nats.DisconnectErrHandler(func(c *nats.Conn, err error) { state(err)(c) }),
 		nats.ErrorHandler(func(c *nats.Conn, _ *nats.Subscription, err error) { state(err)(c) }),
 	}
@@ -85,6 +86,9 @@ func Connect(s ConnectSettings) (*Broker, error) {
 	}
 	return &Broker{conn, js}, nil
 }
+
+// Connected says whether the broker answers now.
+func (b *Broker) Connected() bool { return b.Conn.IsConnected() }
 
 // Publish writes a message to the stream that its subject belongs to, and returns when it is on disk.
 func (b *Broker) Publish(ctx context.Context, subject string, data []byte) error {

@@ -208,6 +208,10 @@ func (d *Daemon) openBroker(ctx context.Context) error {
 	if d.broker, err = broker.Connect(connect); err != nil {
 		return &Unusable{err}
 	}
+	if !d.broker.Connected() && d.embedded == nil {
+		d.metrics.Failed("broker")
+		d.log.Warn("the broker does not answer; it is tried again for ever, and nothing is taken meanwhile", "url", b.URL)
+	}
 	return nil
 }
 
@@ -240,6 +244,8 @@ func (d *Daemon) brokerState(s broker.State) {
 	case d.embedded != nil && s.Connected: // nothing to tell: it is in this process
 	case s.Connected && !was:
 		d.log.Info("connected to the broker", "url", s.URL)
+	case !s.Connected && !was && !s.Closed && s.Err != nil:
+		d.metrics.Failed("broker") // one more try in vain
 	case !s.Connected && was && !s.Closed:
 		d.metrics.Failed("broker")
 		d.log.Warn("the broker is away; it is tried again for ever", "cause", s.Err)

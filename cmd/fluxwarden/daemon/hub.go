@@ -33,9 +33,14 @@ type stationState struct {
 
 // Minutes implements worker.Live.
 func (h *hub) Minutes(j *engine.Judged, from, to int) {
-	h.metrics.Minutes(j, from, to)
 	h.mu.Lock()
 	st := h.station(j.Station)
+	if st.Last.IsZero() { // a day's minutes before the first reading ever heard are nobody's loss
+		for from < to && j.Records[from] == 0 {
+			from++
+		}
+	}
+	h.metrics.Minutes(j, from, to)
 	if at := time.Unix((j.Day*minute.PerDay+int64(to))*60, 0).UTC(); at.After(st.Last) {
 		st.Last = at
 	}
