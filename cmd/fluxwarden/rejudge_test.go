@@ -13,6 +13,8 @@ import (
 	"testing"
 	"time"
 
+	"fluxwarden/ingest/broker"
+	"fluxwarden/qc/engine"
 	"fluxwarden/qc/minute"
 	"fluxwarden/qc/synth"
 	"fluxwarden/rules"
@@ -422,4 +424,71 @@ func TestRejudgeRefusals(t *testing.T) {
 			t.Errorf("%v: %d %s", bad, code, said)
 		}
 	}
+}
+
+// A part that is judged again ends where nothing that later days look back on differs any more, and the archive is then what judging
+// everything by the new rules makes of it.
+func TestRejudgeOfAPartStopsInTime(t *testing.T) {
+	if testing.Short() {
+		t.Skip("judges sixty days")
+	}
+	b := newYard(t, 60, yardFaults(t)...)
+	archive := filepath.Join(b.dir, "archive")
+	// Two days have a calibration of their own; later ones keep theirs.
+	between := func(sensitivity string) string {
+		return strings.Replace(yard("start", "2026-06-06", sensitivity), "sensitivity: "+sensitivity+", unit: uV/(W/m2), uncertainty: 1.2%}]",
+			"to: 2026-06-08, sensitivity: "+sensitivity+", unit: uV/(W/m2), uncertainty: 1.2%}, {from: 2026-06-08, sensitivity: 8.62, unit: uV/(W/m2), uncertainty: 1.2%}]", 1)
+	}
+	b.write("site.yaml", between("8.64"))
+	b.judge(archive, b.days...)
+	b.write("site.yaml", between("8.70"))
+	site, err := rules.Load(b.site)
+	if err != nil {
+		t.Fatal(err)
+	}
+	a, err := store.OpenForWriting(vfs.OS{}, archive, store.Options{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	first, _ := time.Parse(time.DateOnly, "2026-06-06")
+	day := first.Unix() / 86400
+	judged := 0
+	draft, err := beginDraft(a, broker.PartitionOf("yard"), site)
+	if err != nil {
+		t.Fatal(err)
+	}
+	plan, err := engine.NewPlan(&site.Stations[0])
+	if err != nil {
+		t.Fatal(err)
+	}
+	p := &pass{archive: a, station: &site.Stations[0], plan: plan, from: day, to: day + 1, helpers: 2, step: func(done, _ int) { judged = done }}
+	p.out = newMonths(a, draft, "yard")
+	if err := p.run(); err != nil {
+		t.Fatal(err)
+	}
+	if err := p.out.stop(); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := draft.Finish(); err != nil {
+		t.Fatal(err)
+	}
+	if err := a.Close(); err != nil {
+		t.Fatal(err)
+	}
+	if judged >= 60 || p.out.diff.Days == 0 {
+		t.Errorf("%d of 60 days judged, %d changed", judged, p.out.diff.Days)
+	}
+	got, episodes := b.digests(archive)
+	anew := filepath.Join(b.dir, "anew")
+	b.judge(anew, b.days...)
+	want, wantEpisodes := b.digests(anew)
+	for d := range want {
+		if got[d] != want[d] {
+			t.Errorf("day %d: %s, judged anew %s", d, got[d], want[d])
+		}
+	}
+	if episodes != wantEpisodes {
+		t.Errorf("episodes\n%s\njudged anew\n%s", episodes, wantEpisodes)
+	}
+	t.Logf("%d of 60 days judged, %d changed", judged, p.out.diff.Days)
 }
