@@ -110,7 +110,10 @@ func judgeBatch(a *store.Archive, s *rules.Site, st *rules.Station, all *minute.
 		return nil, err
 	}
 	p := &pass{archive: a, station: st, plan: plan, fresh: map[int64]*minute.Batch{}, to: math.MaxInt64, helpers: runtime.GOMAXPROCS(0), step: bar.step}
-	parts := splitByDay(all)
+	parts, err := dropKnown(a, st.ID, splitByDay(all))
+	if err != nil {
+		return nil, err
+	}
 	for _, x := range parts {
 		p.fresh[x.Day] = x.Batch
 	}
