@@ -53,9 +53,10 @@ func newMonths(a *store.Archive, draft *store.Draft, station string) *months {
 	m := &months{archive: a, draft: draft, station: station, known: slices.Contains(a.Stations(), station), work: make(chan func() error, 1),
 		done: make(chan error, 1)}
 	m.diff.Station = station
+	work := m.work // stop takes it away
 	go func() {
 		var err error
-		for f := range m.work {
+		for f := range work {
 			if err == nil {
 				err = f()
 			}
