@@ -33,7 +33,7 @@ func channelsSwapped(w *Watcher, c *faultCase, v *view) hint {
 	switch {
 	case swapped < 1.5*room && asIs > 4*room && d-g > 40 && g > 0.06*d && g > 15:
 		return hint{0.3, d - g}
-	case asIs < 2*room:
+	case asIs < 2*room && swapped > 4*room:
 		return hint{odds: -1}
 	}
 	return nothing

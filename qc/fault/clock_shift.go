@@ -26,8 +26,8 @@ const (
 	jumpsMost     = 4
 	jumpLeast     = 2   // minutes
 	jumpGreatest  = 200 // minutes
-	jumpRaise     = 3.0
-	jumpMost      = 8.0
+	jumpRaise     = 4.0
+	jumpMost      = 10.0
 	jumpDaysWatch = 10
 	jumpAgainst   = 30  // sunlit minutes that acquit the clock
 	jumpFits      = 150 // sunlit minutes that do so too, if the shift would hardly show
@@ -108,27 +108,19 @@ func (w *Watcher) watchClock(v *view) {
 	}
 	c := w.base.closureAt(v)
 	asStamped := math.Abs(g - v.sum)
-	room := 6 + float64(0.02*v.sum)
+	sigma := 4 + float64(0.012*v.sum)
 	for i := range w.slow.Jumps {
 		j := &w.slow.Jumps[i]
 		then := math.Max(0, w.muMinutesAgo(v, j.Shift))
 		shifted := math.Abs(g - float64(c*(float64(b*then)+d)))
-		odds := 0.0
-		if asStamped < room {
+		odds := jumpOdds(asStamped, shifted, sigma, w.clockOpen(*j))
+		if asStamped < 1.2*sigma {
 			j.Fits++
 		}
-		switch {
-		case shifted < 1.5*room && asStamped > 1.5*room:
-			odds = math.Min(0.2, 0.1*(asStamped-shifted)/room)
-		case shifted > 3*room && (asStamped < 1.5*room || !w.clockOpen(*j)):
-			odds = -0.2
-			if asStamped < 1.5*room {
-				j.Against++
-			}
-		case asStamped < room && shifted > 1.5*room:
-			odds = -0.05
+		if odds < -0.03 && asStamped < 2*sigma {
 			j.Against++
-		default:
+		}
+		if odds == 0 {
 			continue
 		}
 		j.Score = Number(math.Max(0, math.Min(jumpMost, j.Score.Float()+odds)))
@@ -141,6 +133,26 @@ func (w *Watcher) watchClock(v *view) {
 	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(j jump) bool {
 		return (j.Against >= jumpAgainst || j.Fits >= jumpFits) && j.Score <= 0 && !w.clockOpen(j)
 	})
+}
+
+// jumpOdds are the log odds that one steady minute gives for a shift: two normal errors of the same scatter, of which some minutes
+// scatter together and count once. Where neither time fits, something else is wrong and it says nothing for the shift; against one that
+// is only a guess it counts all the same.
+func jumpOdds(asStamped, shifted, sigma float64, open bool) float64 {
+	if math.Abs(asStamped-shifted) < 1.2*sigma {
+		return 0 // the two differ by less than the directional error of a sound instrument
+	}
+	odds := (float64(asStamped*asStamped) - float64(shifted*shifted)) / float64(2*sigma*sigma*closureTogether)
+	switch {
+	case shifted > 2.5*sigma && asStamped > 2.5*sigma:
+		if open {
+			return 0
+		}
+		return -0.1
+	case odds > 0:
+		return math.Min(0.2, odds)
+	}
+	return math.Max(-0.2, odds)
 }
 
 func (w *Watcher) clockEpisode(v *view, j *jump) {

@@ -51,7 +51,7 @@ type mean struct {
 }
 
 func (m *mean) add(v float64) {
-	if !math.IsNaN(v) {
+	if !math.IsNaN(v) && !math.IsInf(v, 0) {
 		m.Sum += Number(v)
 		m.N++
 	}
@@ -124,6 +124,9 @@ func (w *Watcher) watchImbalance(v *view) {
 	g, b, d := v.g(), v.b(), v.d()
 	if math.IsNaN(g+b+d) || v.run[rules.Global] > 2 || v.run[rules.Diffuse] > 2 || v.run[rules.Direct] > 2 {
 		return // what stands still is clipped or frozen
+	}
+	if g > 60 && d < openCircuitWm2 {
+		return // an open input, not a gain
 	}
 	if b < 2 && d > 60 {
 		w.dullStep(v, g/d/w.base.overcast-1)

@@ -45,7 +45,7 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 	fitG += absurd(1 + gainG)
 	fitD += absurd(1 + gainD)
 	beamCause := cause{kind: rules.SensitivityWrong, instrument: p, model: model{1, Number(gainP), 0}, misfit: fitP + absurd(1-gainP) + im.elsewhere(0, 0, -gainP),
-		evidence: []Evidence{{"gain", roundTo(1-gainP, 1000), "1"}}}
+		evidence: []Evidence{{"gain", roundTo(1/(1+gainP), 1000), "1"}}}
 	if gainP < -0.15 && im.Sky[2].N >= 20 && im.Sky[2].of() > 0.5 {
 		// a share of the beam on diffuse closes like a beam read too high, but the beam is as it should be and diffuse is not
 		beamCause = cause{kind: rules.ShadeOff, instrument: d, model: model{1, Number(gainP), 0}, misfit: fitP + im.elsewhere(0, 0, 0),
@@ -56,7 +56,7 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 			evidence: []Evidence{{"gain", roundTo(1+gainG, 1000), "1"}}},
 		beamCause,
 		{kind: rules.SensitivityWrong, instrument: d, model: model{2, Number(gainD), 0}, misfit: fitD + im.elsewhere(-gainD, 0, 0) + 3,
-			evidence: []Evidence{{"gain", roundTo(1+gainD, 1000), "1"}}},
+			evidence: []Evidence{{"gain", roundTo(1/(1-gainD), 1000), "1"}}},
 		{kind: rules.SensorTilted, instrument: g, model: model{3, Number(tiltE), Number(tiltN)}, misfit: fitT + im.elsewhere(0, im.Recent.Float(), 0) + 2,
 			evidence: []Evidence{{"tilt", roundTo(math.Sqrt(float64(tiltE*tiltE)+float64(tiltN*tiltN))*180/math.Pi, 10), "degrees"},
 				{"towards", roundTo(bearing(tiltE, tiltN), 1), "degrees"}}},
@@ -74,7 +74,7 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 		}
 	}
 	best = im.weather(best, g, v)
-	if best.kind == rules.SensitivityWrong && im.grows() {
+	if best.kind == rules.SensitivityWrong && im.grows() && best.loss() {
 		best.kind, best.also = rules.DomeSoiled, []rules.FaultKind{rules.SensitivityDrift}
 	}
 	best.evidence = append(best.evidence, Evidence{"closure_off", roundTo(100*im.Recent.Float(), 10), "%"}, Evidence{"minutes", float64(im.N), "min"})
@@ -188,3 +188,12 @@ func bearing(east, north float64) float64 {
 
 func sinDeg(d float64) float64 { return exact.Sin(d * (math.Pi / 180)) }
 func cosDeg(d float64) float64 { return exact.Cos(d * (math.Pi / 180)) }
+
+// loss says whether the cause is a gain that is too low.
+func (c *cause) loss() bool {
+	a := c.model.A.Float()
+	if c.model.K == 1 {
+		return a > 0
+	}
+	return a < 0
+}

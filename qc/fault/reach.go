@@ -38,7 +38,7 @@ func Reaches(e *Episode, q rules.Quantity, measured, apparentZenithDeg, azimuthD
 	case rules.Shadow:
 		from, ok1 := e.number("bearing_from")
 		to, ok2 := e.number("bearing_to")
-		return ok1 && ok2 && azimuthDeg >= from && azimuthDeg <= to && apparentZenithDeg < sunlit
+		return ok1 && ok2 && withinArc(azimuthDeg, from, to) && apparentZenithDeg < sunlit
 	}
 	return true
 }

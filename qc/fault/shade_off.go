@@ -25,8 +25,16 @@ func shadeOff(w *Watcher, c *faultCase, v *view) hint {
 	switch {
 	case excess > 3*room && share > 0.15 && share < 1.15 && plausible && d-g < float64(0.06*g)+room:
 		return hint{0.3, share}
-	case math.Abs(excess) < 1.5*room:
+	case math.Abs(excess) < 1.5*room && w.shareSeen(c)*beam > 4*room:
 		return hint{odds: -1}
 	}
 	return nothing
+}
+
+// shareSeen is the share of the beam that the case rests on.
+func (w *Watcher) shareSeen(c *faultCase) float64 {
+	if s := &w.cases[c.index]; s.For > 0 {
+		return s.mean()
+	}
+	return 0.15
 }

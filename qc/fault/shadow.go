@@ -72,22 +72,31 @@ func (w *Watcher) shadowAgain(v *view) {
 		return
 	}
 	from, to := s.Dip.From.Float(), s.Dip.To.Float()
-	first, lo, hi, n := int64(0), from, to, 0
+	dir := 1.0 // south of the sun's path its bearing falls
+	if turn(from, to) < 0 {
+		dir = -1
+	}
+	first, lo, hi, n := int64(0), 0.0, dir*turn(from, to), 0
 	last := w.day
 	for i := len(s.Dips) - 1; i >= 0; i-- {
 		o := &s.Dips[i]
-		if o.Day == last || math.Abs(o.From.Float()-from) > shadowEdgeDeg || o.To.Float() < to-shadowEdgeDeg {
+		begin, end := dir*turn(from, o.From.Float()), dir*turn(from, o.To.Float())
+		if o.Day == last || math.Abs(begin) > shadowEdgeDeg || end < float64(dir*turn(from, to))-shadowEdgeDeg {
 			continue
 		}
 		last, first, n = o.Day, o.At, n+1
-		lo, hi = math.Min(lo, o.From.Float()), math.Max(hi, o.To.Float())
+		lo, hi = math.Min(lo, begin), math.Max(hi, end)
 	}
 	if n == 0 {
 		return
 	}
+	lo, hi = math.Mod(from+float64(dir*(lo-0.5))+360, 360), math.Mod(from+float64(dir*(hi+0.5))+360, 360)
+	if dir < 0 {
+		lo, hi = hi, lo
+	}
 	w.raise(Episode{Instrument: p, Kind: rules.Shadow, Severity: rules.Act, From: w.hindsight(first), Raised: v.minute,
-		Confidence: confidence(2 + float64(2*n)), Evidence: []Evidence{{"bearing_from", roundTo(lo-0.5, 10), "degrees"},
-			{"bearing_to", roundTo(hi+0.5, 10), "degrees"}, {"days", float64(n + 1), "1"}}})
+		Confidence: confidence(2 + float64(2*n)), Evidence: []Evidence{{"bearing_from", roundTo(lo, 10), "degrees"},
+			{"bearing_to", roundTo(hi, 10), "degrees"}, {"days", float64(n + 1), "1"}}})
 }
 
 // shadowGone ends it after some minutes of full beam in the middle of its bearing.
@@ -99,7 +108,8 @@ func (w *Watcher) shadowGone(v *view, full bool) {
 	}
 	from, _ := w.open[i].number("bearing_from")
 	to, _ := w.open[i].number("bearing_to")
-	if !full || v.azimuthDeg < from+1.2 || v.azimuthDeg > to-1.2 {
+	width := math.Mod(to-from+360, 360)
+	if inset := math.Min(1.2, width/4); !full || !withinArc(v.azimuthDeg, from+inset, to-inset) {
 		return
 	}
 	w.slow.FullBeam++
@@ -107,4 +117,12 @@ func (w *Watcher) shadowGone(v *view, full bool) {
 		w.finish(i, v.minute)
 		w.slow.FullBeam = 0
 	}
+}
+
+// turn is by how much a bearing turns clockwise from a to b, -180..180 degrees.
+func turn(a, b float64) float64 { return math.Mod(b-a+900, 360) - 180 }
+
+// withinArc says whether a bearing lies on the arc clockwise from one bearing to another.
+func withinArc(azimuth, from, to float64) bool {
+	return math.Mod(azimuth-from+720, 360) <= math.Mod(to-from+720, 360)
 }

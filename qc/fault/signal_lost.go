@@ -52,6 +52,9 @@ const openCircuitWm2 = 5
 func (w *Watcher) missedMuch(q rules.Quantity, v *view) bool {
 	want := v.expected[q]
 	if q == rules.Direct {
+		if v.d() < float64(0.05*v.g()) {
+			return false // no sky gives so little diffuse: it is diffuse that is lost
+		}
 		want *= v.mu
 		return want > 50 && want > 4*v.scale(w) && want > 0.3*v.g()
 	}

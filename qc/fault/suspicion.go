@@ -71,6 +71,9 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 	if h.odds > 0 && restsOnClosing.Has(c.kind) && !math.IsNaN(w.now.value[c.quantity]) && w.upsetBy(c) {
 		return // the open episode accounts for it
 	}
+	if h.odds > 0 && w.explainedBy(c) {
+		return
+	}
 	switch {
 	case h.odds > 0:
 		if s.Score <= 0 && s.Since == noMinute {
@@ -93,6 +96,9 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 			w.open[open].Evidence = w.evidenceOf(c, s)
 		}
 		if s.Score <= 0 {
+			if w.open[open].ID == w.slow.Episode {
+				w.slow.Episode, w.slow.Imbalance = "", imbalance{}
+			}
 			w.finish(open, s.Last+1)
 		}
 	}
@@ -115,6 +121,21 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 		w.raise(Episode{Instrument: c.of(w.setup), Kind: c.kind, Severity: rules.Act, From: w.hindsight(s.Since), Raised: w.now.minute,
 			Confidence: confidence(s.Score), Evidence: w.evidenceOf(c, s)})
 	}
+}
+
+// explainedBy says whether an open episode of another kind on the same instrument accounts for what the case would say.
+func (w *Watcher) explainedBy(c *faultCase) bool {
+	for i := range w.open {
+		e := &w.open[i]
+		if e.Severity != rules.Act || e.Instrument != c.of(w.setup) || e.Kind == c.kind || e.Kind == rules.DataGap {
+			continue
+		}
+		if e.Kind == rules.RangeClipped && c.kind == rules.SignalFrozen || e.ID == w.slow.Episode {
+			continue // it may turn out to be this
+		}
+		return true
+	}
+	return false
 }
 
 // upsetBy says whether an open episode of another cause upsets how global, direct and diffuse close.
