@@ -12,6 +12,7 @@ import (
 	"text/tabwriter"
 	"time"
 
+	"fluxwarden/cmd/fluxwarden/daemon"
 	"fluxwarden/qc/fault"
 	"fluxwarden/store"
 	"fluxwarden/store/vfs"
@@ -70,47 +71,14 @@ func stationsOf(a *store.Archive, id string) ([]string, error) {
 	return []string{id}, nil
 }
 
-// A faultLine is one episode as scripts read it: a contract.
-type faultLine struct {
-	ID            string         `json:"id"`
-	Rev           int            `json:"rev"`
-	Station       string         `json:"station"`
-	Instrument    string         `json:"instrument"`
-	Kind          string         `json:"kind"`
-	AlsoSuspected []string       `json:"also_suspected"`
-	Severity      string         `json:"severity"`
-	From          time.Time      `json:"from"`
-	To            *time.Time     `json:"to"`
-	Raised        time.Time      `json:"raised"`
-	Confidence    float64        `json:"confidence"`
-	Evidence      map[string]any `json:"evidence"`
-	Advice        string         `json:"advice"`
-}
-
 func minuteTime(m int64) time.Time { return time.Unix(60*m, 0).UTC() }
 
-func newFaultLine(e *fault.Episode) faultLine {
-	l := faultLine{ID: e.ID, Rev: e.Rev, Station: e.Station, Instrument: e.Instrument, Kind: e.Kind.String(), AlsoSuspected: []string{},
-		Severity: e.Severity.String(), From: minuteTime(e.From), Raised: minuteTime(e.Raised), Confidence: e.Confidence,
-		Evidence: map[string]any{}, Advice: e.Advice}
-	for _, k := range e.Also {
-		l.AlsoSuspected = append(l.AlsoSuspected, k.String())
-	}
-	if e.To != fault.Open {
-		to := minuteTime(e.To)
-		l.To = &to
-	}
-	for _, v := range e.Evidence {
-		l.Evidence[v.Name] = map[string]any{"value": v.Value, "unit": v.Unit}
-	}
-	return l
-}
-
+// writeFaultLines writes one object a line, as the stream FINDINGS has them: a contract.
 func writeFaultLines(w *bufio.Writer, all []fault.Episode) error {
 	enc := json.NewEncoder(w)
 	enc.SetEscapeHTML(false)
 	for i := range all {
-		if err := enc.Encode(newFaultLine(&all[i])); err != nil {
+		if err := enc.Encode(daemon.NewFindingLine(&all[i])); err != nil {
 			return err
 		}
 	}

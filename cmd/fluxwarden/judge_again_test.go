@@ -8,6 +8,7 @@ import (
 	"strings"
 	"testing"
 
+	"fluxwarden/cmd/fluxwarden/daemon"
 	"fluxwarden/store"
 	"fluxwarden/store/export"
 	"fluxwarden/store/vfs"
@@ -72,7 +73,7 @@ func judgedPieces(t *testing.T, pieces ...string) string {
 		t.Fatal(err)
 	}
 	for i := range episodes {
-		line := newFaultLine(&episodes[i])
+		line := daemon.NewFindingLine(&episodes[i])
 		out.WriteString(strings.Join([]string{line.ID, line.Kind, line.Instrument, line.From.String(), line.Raised.String()}, " ") + "\n")
 	}
 	return out.String()

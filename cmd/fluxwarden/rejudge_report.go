@@ -8,6 +8,7 @@ import (
 	"strings"
 	"text/tabwriter"
 
+	"fluxwarden/cmd/fluxwarden/daemon"
 	"fluxwarden/qc/fault"
 	"fluxwarden/rules"
 	"fluxwarden/store/table"
@@ -112,22 +113,22 @@ func episodeText(e *fault.Episode) string {
 
 // A differenceLine is one station's difference as scripts read it: a contract.
 type differenceLine struct {
-	Station    string          `json:"station"`
-	Days       int             `json:"days"`
-	FirstDay   string          `json:"first_day,omitempty"`
-	LastDay    string          `json:"last_day,omitempty"`
-	Reasons    []string        `json:"reasons"`
-	Quantities []changeLine    `json:"quantities"`
-	Model      int             `json:"model_minutes"`
-	Learnt     int             `json:"learnt_days"`
-	Come       []faultLine     `json:"episodes_come"`
-	Gone       []faultLine     `json:"episodes_gone"`
-	Changed    []faultPairLine `json:"episodes_changed"`
+	Station    string               `json:"station"`
+	Days       int                  `json:"days"`
+	FirstDay   string               `json:"first_day,omitempty"`
+	LastDay    string               `json:"last_day,omitempty"`
+	Reasons    []string             `json:"reasons"`
+	Quantities []changeLine         `json:"quantities"`
+	Model      int                  `json:"model_minutes"`
+	Learnt     int                  `json:"learnt_days"`
+	Come       []daemon.FindingLine `json:"episodes_come"`
+	Gone       []daemon.FindingLine `json:"episodes_gone"`
+	Changed    []faultPairLine      `json:"episodes_changed"`
 }
 
 type faultPairLine struct {
-	Before faultLine `json:"before"`
-	After  faultLine `json:"after"`
+	Before daemon.FindingLine `json:"before"`
+	After  daemon.FindingLine `json:"after"`
 }
 
 // A changeLine is one quantity's change as scripts read it: a contract.
@@ -172,10 +173,10 @@ func changeLines(list []table.Change) []changeLine {
 func writeDifferences(w io.Writer, list []difference) error {
 	enc := json.NewEncoder(w)
 	enc.SetEscapeHTML(false)
-	lines := func(list []fault.Episode) []faultLine {
-		out := make([]faultLine, len(list))
+	lines := func(list []fault.Episode) []daemon.FindingLine {
+		out := make([]daemon.FindingLine, len(list))
 		for i := range list {
-			out[i] = newFaultLine(&list[i])
+			out[i] = daemon.NewFindingLine(&list[i])
 		}
 		return out
 	}
@@ -187,7 +188,7 @@ func writeDifferences(w io.Writer, list []difference) error {
 			l.FirstDay, l.LastDay = dayText(d.FirstDay), dayText(d.LastDay)
 		}
 		for k := range d.Changed {
-			l.Changed = append(l.Changed, faultPairLine{newFaultLine(&d.Changed[k].Before), newFaultLine(&d.Changed[k].After)})
+			l.Changed = append(l.Changed, faultPairLine{daemon.NewFindingLine(&d.Changed[k].Before), daemon.NewFindingLine(&d.Changed[k].After)})
 		}
 		if err := enc.Encode(&l); err != nil {
 			return err
