@@ -40,12 +40,7 @@ func cmdJudge(args []string) int {
 	if err != nil {
 		return complain(exitUsage, fmt.Errorf("judge: %w", err))
 	}
-	a, err := store.OpenForWriting(vfs.OS{}, *archive, store.Options{Owner: fmt.Sprintf("fluxwarden judge, process %d", os.Getpid())})
-	if err != nil {
-		return complain(exitProblem, fmt.Errorf("judge: %w", err))
-	}
-	defer a.Close()
-	code, err := judgeFiles(a, s, st, *site, fs.Args())
+	code, err := judgeFiles(*archive, s, st, *site, fs.Args())
 	if err != nil {
 		return complain(exitProblem, fmt.Errorf("judge: %w", err))
 	}
@@ -66,7 +61,8 @@ func pickStation(s *rules.Site, id string) (*rules.Station, error) {
 	return nil, fmt.Errorf("the site file has no station %q", id)
 }
 
-func judgeFiles(a *store.Archive, s *rules.Site, st *rules.Station, siteFile string, files []string) (int, error) {
+// judgeFiles reads all files first: where they cannot be read no archive is made or touched.
+func judgeFiles(archive string, s *rules.Site, st *rules.Station, siteFile string, files []string) (int, error) {
 	bar := newProgress(len(files))
 	defer bar.done()
 	var all minute.Batch
@@ -85,6 +81,11 @@ func judgeFiles(a *store.Archive, s *rules.Site, st *rules.Station, siteFile str
 	if err != nil {
 		return exitProblem, err
 	}
+	a, err := store.OpenForWriting(vfs.OS{}, archive, store.Options{Owner: fmt.Sprintf("fluxwarden judge, process %d", os.Getpid())})
+	if err != nil {
+		return exitProblem, err
+	}
+	defer a.Close()
 	if err := a.KeepRules(s.Digest, text); err != nil {
 		return exitProblem, err
 	}
