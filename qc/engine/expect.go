@@ -35,7 +35,7 @@ func (p *Plan) Expect(unixMicros int64) Expectation {
 		ExtraterrestrialWm2: sun.ExtraterrestrialNormal(p.Station.Limits.SolarConstantWm2, at.DistanceAU), ClearLWDownWm2: math.NaN()}
 	cosine := exact.Cos(at.ZenithDeg * (math.Pi / 180))
 	apparent := exact.Cos(at.ApparentZenithDeg * (math.Pi / 180))
-	e.ExtraterrestrialHorizontalWm2 = e.ExtraterrestrialWm2 * math.Max(cosine, 0)
+	e.ExtraterrestrialHorizontalWm2 = e.ExtraterrestrialWm2 * max(cosine, 0)
 	hidden := p.horizon != nil && p.horizon.Hides(at.ApparentZenithDeg, at.AzimuthDeg)
 	e.Sun = limit.SunOf(at.ZenithDeg, cosine, at.ApparentZenithDeg, apparent, e.ExtraterrestrialWm2, hidden)
 	clear, ok := sky.IneichenPerez(sky.IneichenInput{CosZenith: apparent, AirMass: sun.AirMassAtPressure(sun.AirMassKastenYoung(at.ApparentZenithDeg), p.pressureHPa),

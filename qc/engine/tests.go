@@ -151,7 +151,7 @@ func (p *Plan) sunLimits(j *Judged, s *seriesPlan, out *Series, possible, rare *
 	l := &p.Station.Limits
 	possibleLow, rareLow := possible.Low, math.NaN()
 	if rare != nil {
-		possibleLow, rareLow = math.Min(possible.Low, -s.zeroAllowance), math.Min(rare.Low, -s.zeroAllowance)
+		possibleLow, rareLow = min(possible.Low, -s.zeroAllowance), min(rare.Low, -s.zeroAllowance)
 	}
 	suns := j.sun.rows[:to]
 	for r, v := range out.Measured[:to] {

@@ -100,7 +100,7 @@ func learn(s *Setup, day int64, facts []DayFacts) Baseline {
 			b.kDiffuse = m
 		}
 	}
-	b.model = sky.NewIneichenSite(math.Max(b.linke, 1), b.elevation)
+	b.model = sky.NewIneichenSite(max(b.linke, 1), b.elevation)
 	for k := range b.bodyAir {
 		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.BodyAir[k] }); n >= 60 {
 			b.bodyAir[k], b.bodyKnown[k] = m, true
@@ -145,8 +145,8 @@ func (b *Baseline) clearSky(m *Minute) {
 	if m.Mu > 0 && m.ZenithDeg < 90 {
 		g, n := b.ineichen(m)
 		m.Clear[rules.Direct] = n
-		m.Clear[rules.Diffuse] = math.Max(0, b.kDiffuse*(g-float64(n*m.Mu)))
-		m.Clear[rules.Global] = math.Max(0, b.kGlobal*g)
+		m.Clear[rules.Diffuse] = max(0, b.kDiffuse*(g-float64(n*m.Mu)))
+		m.Clear[rules.Global] = max(0, b.kGlobal*g)
 	} else {
 		m.Clear[rules.Global], m.Clear[rules.Direct], m.Clear[rules.Diffuse] = 0, 0, 0
 	}

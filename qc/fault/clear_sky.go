@@ -1,8 +1,6 @@
 package fault
 
 import (
-	"math"
-
 	"fluxwarden/qc/sky"
 	"fluxwarden/qc/sun"
 )
@@ -16,7 +14,7 @@ func (b *Baseline) ineichen(m *Minute) (global, direct float64) {
 
 // withLinke is the clear sky at another turbidity.
 func (b *Baseline) withLinke(linke float64, v *view) (global, direct float64) {
-	model := sky.NewIneichenSite(math.Max(linke, 1), b.elevation)
+	model := sky.NewIneichenSite(max(linke, 1), b.elevation)
 	out, _ := model.At(v.mu, sun.AirMassKastenYoung(v.zenithDeg)*b.pressure, v.sa)
 	return out.GlobalWm2, out.DirectWm2
 }

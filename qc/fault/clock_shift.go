@@ -111,7 +111,7 @@ func (w *Watcher) watchClock(v *view) {
 	sigma := 4 + float64(0.012*v.sum)
 	for i := range w.slow.Jumps {
 		j := &w.slow.Jumps[i]
-		then := math.Max(0, w.muMinutesAgo(v, j.Shift))
+		then := max(0, w.muMinutesAgo(v, j.Shift))
 		shifted := math.Abs(g - float64(c*(float64(b*then)+d)))
 		odds := jumpOdds(asStamped, shifted, sigma, w.clockOpen(*j))
 		if asStamped < 1.2*sigma {
@@ -123,7 +123,7 @@ func (w *Watcher) watchClock(v *view) {
 		if odds == 0 {
 			continue
 		}
-		j.Score = Number(math.Max(0, math.Min(jumpMost, j.Score.Float()+odds)))
+		j.Score = Number(max(0, min(jumpMost, j.Score.Float()+odds)))
 		if odds > 0 {
 			j.For++
 			j.Last = v.minute
@@ -150,9 +150,9 @@ func jumpOdds(asStamped, shifted, sigma float64, open bool) float64 {
 		}
 		return -0.1
 	case odds > 0:
-		return math.Min(0.2, odds)
+		return min(0.2, odds)
 	}
-	return math.Max(-0.2, odds)
+	return max(-0.2, odds)
 }
 
 func (w *Watcher) clockEpisode(v *view, j *jump) {
@@ -181,10 +181,10 @@ func (w *Watcher) clockEpisode(v *view, j *jump) {
 // of a degree a minute, the declination stays.
 func (w *Watcher) muMinutesAgo(v *view, minutes int64) float64 {
 	sinPhi, cosPhi := sinDeg(w.setup.LatitudeDeg), cosDeg(w.setup.LatitudeDeg)
-	sinZ := math.Sqrt(math.Max(0, 1-float64(v.mu*v.mu)))
+	sinZ := math.Sqrt(max(0, 1-float64(v.mu*v.mu)))
 	sinA, cosA := sinDeg(v.azimuthDeg), cosDeg(v.azimuthDeg)
 	sinDelta := float64(sinPhi*v.mu) + float64(cosPhi*sinZ*cosA)
-	cosDelta := math.Sqrt(math.Max(1e-12, 1-float64(sinDelta*sinDelta)))
+	cosDelta := math.Sqrt(max(1e-12, 1-float64(sinDelta*sinDelta)))
 	sinH := -sinZ * sinA / cosDelta
 	cosH := (v.mu - float64(sinPhi*sinDelta)) / (cosPhi * cosDelta)
 	h := exact.Atan2(sinH, cosH) - float64(float64(minutes)*(math.Pi/720))

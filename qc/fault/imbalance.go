@@ -145,7 +145,7 @@ func (w *Watcher) watchImbalance(v *view) {
 func (w *Watcher) closureRoomAt(v *view) float64 {
 	room := untaughtRoom
 	if w.base.known {
-		room = math.Max(closureRoom, math.Min(untaughtRoom, 0.012+float64(3*w.base.spread[sectorOf(v)])))
+		room = max(closureRoom, min(untaughtRoom, 0.012+float64(3*w.base.spread[sectorOf(v)])))
 	}
 	return room + (4+float64(0.4*w.moved(v)))/v.sum
 }
@@ -167,7 +167,7 @@ func (w *Watcher) dullStep(v *view, delta float64) {
 	odds := 0.0
 	switch {
 	case off:
-		odds = math.Min(0.2, 0.03*math.Abs(delta)/room)
+		odds = min(0.2, 0.03*math.Abs(delta)/room)
 		im.Last = v.minute
 	case im.Model.K == 0 && math.Abs(im.Model.A.Float()) > 2*room:
 		odds = -0.1 // a gain of global would show here
@@ -177,7 +177,7 @@ func (w *Watcher) dullStep(v *view, delta float64) {
 	im.Dull.add(delta)
 	im.Air.add(v.value[rules.AirTemperature])
 	im.N++
-	im.Recent += Number((delta - im.Recent.Float()) / math.Min(float64(im.N), 60))
+	im.Recent += Number((delta - im.Recent.Float()) / min(float64(im.N), 60))
 	w.imbalanceScore(v, odds)
 }
 
@@ -186,7 +186,7 @@ func (w *Watcher) moved(v *view) float64 {
 	most := 0.0
 	for i := range 2 {
 		if p := w.prev(i); p.minute >= v.minute-2 && !math.IsNaN(p.sum) {
-			most = math.Max(most, math.Abs(v.sum-p.sum))
+			most = max(most, math.Abs(v.sum-p.sum))
 		}
 	}
 	return most
@@ -199,13 +199,13 @@ func (im *imbalance) imbalanceOdds(open bool, x [regressors]float64, delta, room
 	if !open {
 		switch {
 		case off > room:
-			return math.Min(0.25, 0.04*off/room)
+			return min(0.25, 0.04*off/room)
 		case !good:
-			return -0.03 * (1 + math.Min(4, math.Abs(im.Recent.Float())/room))
+			return -0.03 * (1 + min(4, math.Abs(im.Recent.Float())/room))
 		case off > fineRoom:
 			return 0.012 * off / fineRoom
 		}
-		return -0.03 * (1 + math.Min(4, math.Abs(im.Recent.Float())/room))
+		return -0.03 * (1 + min(4, math.Abs(im.Recent.Float())/room))
 	}
 	want := im.Model.predict(x)
 	size := math.Abs(want)
@@ -217,9 +217,9 @@ func (im *imbalance) imbalanceOdds(open bool, x [regressors]float64, delta, room
 	case size < least:
 		return 0
 	case math.Abs(delta-want) < 0.5*size:
-		return math.Min(0.25, 0.04*size/room)
+		return min(0.25, 0.04*size/room)
 	case off < 0.4*size || delta*want < 0:
-		return -math.Min(0.4, 0.08*size/room)
+		return -min(0.4, 0.08*size/room)
 	}
 	return 0
 }
@@ -227,7 +227,7 @@ func (im *imbalance) imbalanceOdds(open bool, x [regressors]float64, delta, room
 func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 	im := &w.slow.Imbalance
 	share := beam * w.base.closureAt(v) / v.sum
-	sinZ := math.Sqrt(math.Max(0, 1-float64(v.mu*v.mu)))
+	sinZ := math.Sqrt(max(0, 1-float64(v.mu*v.mu)))
 	lever := v.b() * sinZ / v.sum
 	x := [regressors]float64{1, share, lever * sinDeg(v.azimuthDeg), lever * cosDeg(v.azimuthDeg)}
 	odds := im.imbalanceOdds(w.imbalanceEpisode() >= 0, x, delta, room, v.steady && v.mu > 0.25 && w.base.known)
@@ -251,7 +251,7 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 	if im.N <= 60 {
 		im.First.add(delta)
 	}
-	im.Recent += Number((delta - im.Recent.Float()) / math.Min(float64(im.N), 60))
+	im.Recent += Number((delta - im.Recent.Float()) / min(float64(im.N), 60))
 	im.Air.add(v.value[rules.AirTemperature])
 	if w.base.skyKnown && v.b() > 0.5*v.clear[rules.Direct] {
 		im.Sky[0].add(v.g()/v.clear[rules.Global] - 1)
@@ -264,7 +264,7 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 // imbalanceScore takes a minute's odds and raises, renames or ends the episode.
 func (w *Watcher) imbalanceScore(v *view, odds float64) {
 	im := &w.slow.Imbalance
-	im.Score = Number(math.Min(imbalanceMost, im.Score.Float()+odds))
+	im.Score = Number(min(imbalanceMost, im.Score.Float()+odds))
 	open := w.imbalanceEpisode()
 	switch {
 	case im.Score <= 0:

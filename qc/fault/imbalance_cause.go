@@ -120,7 +120,7 @@ func (im *imbalance) elsewhere(dull, global, beam float64) float64 {
 	add := func(m *mean, want, scatter float64, least int) {
 		if m.N >= least && !math.IsNaN(want) {
 			z := (m.of() - want) / scatter
-			chi += math.Min(float64(z*z), 25)
+			chi += min(float64(z*z), 25)
 		}
 	}
 	add(&im.Dull, dull, dullScatter, 20)
@@ -136,7 +136,7 @@ func (im *imbalance) chi(sse float64) float64 {
 	if n := im.Sums.XX[0][0].Float(); n > 0 {
 		variance += float64(wanders * wanders * im.Sums.YY.Float() / n)
 	}
-	return math.Max(0, sse) / float64(variance*closureTogether)
+	return max(0, sse) / float64(variance*closureTogether)
 }
 
 // fitOne fits the deviation with one regressor.

@@ -31,7 +31,7 @@ func noise(w *Watcher, c *faultCase, v *view) hint {
 	for k := 1; k <= 5; k++ {
 		for _, q := range threeShortwave {
 			if q != c.quantity {
-				others = math.Max(others, w.inGlobal(math.Abs(w.swing(k, q)), q, at.mu))
+				others = max(others, w.inGlobal(math.Abs(w.swing(k, q)), q, at.mu))
 			}
 		}
 	}

@@ -23,7 +23,7 @@ func pointingLost(w *Watcher, c *faultCase, v *view) hint {
 	case b > 150 && d < 0.9*g:
 		return hint{odds: -0.3} // it sees the sun, if through cloud
 	case b < 0.08*cb && math.Abs(d-g) < float64(0.06*g)+10 && k > 0.85 && k < 1.12 && w.followsClear(v):
-		return hint{0.3 + float64(2*math.Max(0, k-0.9)), k}
+		return hint{0.3 + float64(2*max(0, k-0.9)), k}
 	}
 	return nothing
 }

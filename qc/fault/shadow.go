@@ -85,7 +85,7 @@ func (w *Watcher) shadowAgain(v *view) {
 			continue
 		}
 		last, first, n = o.Day, o.At, n+1
-		lo, hi = math.Min(lo, begin), math.Max(hi, end)
+		lo, hi = min(lo, begin), max(hi, end)
 	}
 	if n == 0 {
 		return
@@ -109,7 +109,7 @@ func (w *Watcher) shadowGone(v *view, full bool) {
 	from, _ := w.open[i].number("bearing_from")
 	to, _ := w.open[i].number("bearing_to")
 	width := math.Mod(to-from+360, 360)
-	if inset := math.Min(1.2, width/4); !full || !withinArc(v.azimuthDeg, from+inset, to-inset) {
+	if inset := min(1.2, width/4); !full || !withinArc(v.azimuthDeg, from+inset, to-inset) {
 		return
 	}
 	w.slow.FullBeam++

@@ -52,7 +52,7 @@ func (w *Watcher) humid() float64 {
 	most := 0.0
 	for _, h := range w.slow.Humid {
 		if !math.IsNaN(h.Float()) {
-			most = math.Max(most, h.Float())
+			most = max(most, h.Float())
 		}
 	}
 	return most

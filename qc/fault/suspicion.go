@@ -79,12 +79,12 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 		if s.Score <= 0 && s.Since == noMinute {
 			*s = suspicion{Since: w.now.minute}
 		}
-		s.Score = math.Min(c.most, s.Score+h.odds)
+		s.Score = min(c.most, s.Score+h.odds)
 		s.Last = w.now.minute
 		s.For++
 		s.Sum += h.number
 	case h.odds < 0 && s.Since != noMinute:
-		s.Score = math.Max(0, s.Score+h.odds)
+		s.Score = max(0, s.Score+h.odds)
 	case c.quiet > 0 && s.Since != noMinute && w.now.minute-s.Last > c.quiet:
 		s.Score = 0
 	default:
@@ -171,7 +171,7 @@ func (w *Watcher) evidenceOf(c *faultCase, s *suspicion) []Evidence {
 // confidence turns log odds into a probability with even prior odds.
 func confidence(odds float64) float64 {
 	p := 1 - 1/(1+expOf(odds))
-	return roundTo(math.Min(p, 0.999), 1000)
+	return roundTo(min(p, 0.999), 1000)
 }
 
 func roundTo(v, per float64) float64 {

@@ -95,7 +95,7 @@ func (v *view) workScale(w *Watcher) float64 {
 	moved := 0.0
 	for i := range historyViews {
 		if p := w.prev(i); p.minute >= v.minute-2 && !math.IsNaN(p.sum) && !math.IsNaN(v.sum) {
-			moved = math.Max(moved, math.Abs(v.sum-p.sum))
+			moved = max(moved, math.Abs(v.sum-p.sum))
 		}
 	}
 	return 8 + float64(0.03*math.Abs(v.sum)) + float64(0.5*moved)

@@ -36,7 +36,7 @@ func zeroOffset(w *Watcher, c *faultCase, v *view) hint {
 	}
 	switch off := math.Abs(x); {
 	case off > room:
-		return hint{math.Min(0.15, 0.0125*(off-room+1)), x}
+		return hint{min(0.15, 0.0125*(off-room+1)), x}
 	case off < 0.6*room:
 		return hint{odds: -0.15}
 	}

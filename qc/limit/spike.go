@@ -17,21 +17,21 @@ func Spike(before, v, after, partnerBefore, partner, partnerAfter, mostWm2 float
 	if math.IsNaN(before) || math.IsNaN(after) {
 		return rules.NoHistory
 	}
-	up := math.Min(v-before, v-after)
-	down := math.Min(before-v, after-v)
-	off := math.Max(up, down)
-	if off <= mostWm2 {
+	if a, b := v-before, v-after; !(a > mostWm2 && b > mostWm2) && !(a < -mostWm2 && b < -mostWm2) {
 		return rules.Pass
 	}
+	up := min(v-before, v-after)
+	down := min(before-v, after-v)
+	off := max(up, down)
 	if math.IsNaN(partner) || math.IsNaN(partnerBefore) || math.IsNaN(partnerAfter) {
 		if needPartner {
 			return rules.NoPartner
 		}
 		return rules.Miss
 	}
-	follows := math.Min(partner-partnerBefore, partner-partnerAfter)
+	follows := min(partner-partnerBefore, partner-partnerAfter)
 	if down > up {
-		follows = math.Min(partnerBefore-partner, partnerAfter-partner)
+		follows = min(partnerBefore-partner, partnerAfter-partner)
 	}
 	if follows > off/2 {
 		return rules.Pass
