@@ -1,7 +1,5 @@
 package rules
 
-import "math"
-
 // A SunLimit is a limit that follows the sun: Factor * Sa * mu0^Power + Offset above, Low below; W/m2. Sa is the
 // solar constant over the squared distance, mu0 the cosine of the zenith angle, nothing once the sun is down.
 type SunLimit struct{ Low, Factor, Power, Offset float64 }
@@ -164,12 +162,4 @@ func ClassZeroWm2(class string, q Quantity) float64 {
 	default:
 		return 41
 	}
-}
-
-// Unbounded is what stands for a bound that is not there.
-func Unbounded(low bool) float64 {
-	if low {
-		return math.Inf(-1)
-	}
-	return math.Inf(1)
 }

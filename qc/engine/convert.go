@@ -207,7 +207,7 @@ func (s *seriesPlan) pyrgeometer(out *Series, col *minute.Column, cal *rules.Cal
 		}
 		out.net[r] = sensor.NetExchange(col.Mean[r]*uv, sens)
 		of := func(v float64) float64 {
-			return form.Flux(sensor.NetExchange(v*uv, sens), bodyC+limit.ZeroCelsiusK, domeC+limit.ZeroCelsiusK) - cal.ZeroWm2
+			return form.Flux(sensor.NetExchange(v*uv, sens), bodyC+sensor.ZeroCelsiusK, domeC+sensor.ZeroCelsiusK) - cal.ZeroWm2
 		}
 		v := of(col.Mean[r])
 		if math.IsNaN(v) { // no body temperature: the flux is not known
@@ -228,9 +228,9 @@ func temperatureC(v float64, unit string) float64 {
 	}
 	switch unit {
 	case "K":
-		return v - limit.ZeroCelsiusK
+		return v - sensor.ZeroCelsiusK
 	case "ohm_10k":
-		return sensor.Thermistor10k.TemperatureK(v) - limit.ZeroCelsiusK
+		return sensor.Thermistor10k.TemperatureK(v) - sensor.ZeroCelsiusK
 	case "ohm_pt100":
 		return sensor.PlatinumC(v, 100)
 	default:
@@ -242,7 +242,7 @@ func temperatureC(v float64, unit string) float64 {
 func weatherUnit(unit string) (factor, offset float64) {
 	switch unit {
 	case "K":
-		return 1, -limit.ZeroCelsiusK
+		return 1, -sensor.ZeroCelsiusK
 	case "1":
 		return 100, 0
 	case "Pa":

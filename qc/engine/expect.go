@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"fluxwarden/qc/exact"
+	"fluxwarden/qc/fault"
 	"fluxwarden/qc/limit"
 	"fluxwarden/qc/minute"
 	"fluxwarden/qc/sky"
@@ -23,9 +24,6 @@ type Expectation struct {
 	Sun                           limit.Sun
 }
 
-// DefaultLinkeTurbidity is the turbidity assumed before the site's own is known: a mean value of temperate lowland (from memory).
-const DefaultLinkeTurbidity = 3.5
-
 // Expect evaluates the full solar position algorithm at an instant, in microseconds since 1970, UTC, and the clear sky of Ineichen &
 // Perez 2002 at the default turbidity.
 func (p *Plan) Expect(unixMicros int64) Expectation {
@@ -39,7 +37,7 @@ func (p *Plan) Expect(unixMicros int64) Expectation {
 	hidden := p.horizon != nil && p.horizon.Hides(at.ApparentZenithDeg, at.AzimuthDeg)
 	e.Sun = limit.SunOf(at.ZenithDeg, cosine, at.ApparentZenithDeg, apparent, e.ExtraterrestrialWm2, hidden)
 	clear, ok := sky.IneichenPerez(sky.IneichenInput{CosZenith: apparent, AirMass: sun.AirMassAtPressure(sun.AirMassKastenYoung(at.ApparentZenithDeg), p.pressureHPa),
-		LinkeTurbidity: DefaultLinkeTurbidity, ElevationM: p.Station.ElevationM, ExtraterrestrialWm2: e.ExtraterrestrialWm2})
+		LinkeTurbidity: fault.DefaultLinke, ElevationM: p.Station.ElevationM, ExtraterrestrialWm2: e.ExtraterrestrialWm2})
 	if !ok {
 		nan := math.NaN()
 		clear = sky.Irradiance{GlobalWm2: nan, DirectWm2: nan, DiffuseWm2: nan}

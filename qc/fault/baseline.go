@@ -23,7 +23,6 @@ type Baseline struct {
 	linke     float64 // Linke turbidity of the site's clear minutes
 	kGlobal   float64 // measured over modelled clear-sky global
 	kDiffuse  float64
-	kBeam     float64
 	skyKnown  bool
 	bodyAir   [2]float64 // pyrgeometer body less air, by night and by day, K
 	bodyKnown [2]bool
@@ -59,13 +58,13 @@ const (
 	trustedMinutes = 20
 	// defaultSpread is the scatter assumed before the station's own is known.
 	defaultSpread = 0.01
-	// defaultLinke is the turbidity assumed before the site's own is known: a mean value of temperate lowland (from memory).
-	defaultLinke = 3.5
+	// DefaultLinke is the turbidity assumed before the site's own is known: a mean value of temperate lowland (from memory).
+	DefaultLinke = 3.5
 )
 
 // learn makes the baseline from the facts of the days before.
 func learn(s *Setup, day int64, facts []DayFacts) Baseline {
-	b := Baseline{linke: defaultLinke, kGlobal: 1, kDiffuse: 1, kBeam: 1, kLW: 1, overcast: 1, dull: defaultSpread, elevation: s.ElevationM}
+	b := Baseline{linke: DefaultLinke, kGlobal: 1, kDiffuse: 1, kLW: 1, overcast: 1, dull: defaultSpread, elevation: s.ElevationM}
 	b.pressure = exact.Pow(1-float64(2.25577e-5*s.ElevationM), 5.25588)
 	all, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Closure })
 	b.known = n >= 100

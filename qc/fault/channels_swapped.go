@@ -29,7 +29,7 @@ func channelsSwapped(w *Watcher, c *faultCase, v *view) hint {
 	closure := w.base.closureAt(v)
 	asIs := math.Abs(g - float64(closure*(beam+d)))
 	swapped := math.Abs(float64(d*toG) - float64(closure*(beam+float64(g*toD))))
-	room := v.scale(w)
+	room := v.room
 	switch {
 	case swapped < 1.5*room && asIs > 4*room && d-g > 40 && g > 0.06*d && g > 15:
 		return hint{0.3, d - g}

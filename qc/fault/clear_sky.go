@@ -1,6 +1,7 @@
 package fault
 
 import (
+	"fluxwarden/qc/sensor"
 	"fluxwarden/qc/sky"
 	"fluxwarden/qc/sun"
 )
@@ -27,7 +28,5 @@ func (b *Baseline) linkeOf(v *view) float64 {
 // clearLongwave is the flux from a cloudless sky, W/m2, from air temperature (degrees C) and humidity (%), after Prata 1996;
 // NaN without them.
 func clearLongwave(airC, humidityPercent float64) float64 {
-	return sky.LongwavePrata(airC+zeroCelsiusK, sky.VapourPressure(airC, humidityPercent))
+	return sky.LongwavePrata(airC+sensor.ZeroCelsiusK, sky.VapourPressure(airC, humidityPercent))
 }
-
-const zeroCelsiusK = 273.15

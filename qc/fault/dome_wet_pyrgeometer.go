@@ -50,4 +50,4 @@ func (w *Watcher) netLongwave(v *view) float64 {
 	return v.value[rules.LWDown] - blackBodyC(v.value[rules.AirTemperature])
 }
 
-func blackBodyC(tC float64) float64 { return sensor.BlackbodyFlux(tC + zeroCelsiusK) }
+func blackBodyC(tC float64) float64 { return sensor.BlackbodyFlux(tC + sensor.ZeroCelsiusK) }

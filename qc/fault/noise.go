@@ -37,7 +37,7 @@ func noise(w *Watcher, c *faultCase, v *view) hint {
 	}
 	mine = w.inGlobal(mine, c.quantity, at.mu)
 	for _, k := range [2]int{0, 2} { // its neighbours must close: else something else is wrong
-		if p := w.prev(k); !(math.Abs(p.g()-p.sum) < 3*p.scale(w)) {
+		if p := w.prev(k); !(math.Abs(p.g()-p.sum) < 3*p.room) {
 			return nothing
 		}
 	}

@@ -4,14 +4,14 @@ import "math"
 
 // polarityReversed: the value is what its partners ask for with the sign turned round.
 func polarityReversed(w *Watcher, c *faultCase, v *view) hint {
-	x, want := v.value[c.quantity], v.expectedWithout(c.quantity)
+	x, want := v.value[c.quantity], v.expected[c.quantity]
 	if x > 20 {
 		return hint{odds: -2}
 	}
 	if !v.sunUp || math.IsNaN(x) || math.IsNaN(want) {
 		return nothing
 	}
-	room := v.scale(w) + float64(0.05*want)
+	room := v.room + float64(0.05*want)
 	switch {
 	case want < 40:
 		return nothing

@@ -9,7 +9,7 @@ func rangeClipped(w *Watcher, c *faultCase, v *view) hint {
 	if !v.sunUp || math.IsNaN(x) || math.IsNaN(want) {
 		return nothing
 	}
-	room := v.scale(w)
+	room := v.room
 	rail := w.railOf(c)
 	s := &w.cases[c.index]
 	switch {

@@ -19,7 +19,7 @@ func shadeOff(w *Watcher, c *faultCase, v *view) hint {
 	}
 	want := v.expected[rules.Diffuse]
 	excess := d - want
-	room := v.scale(w)
+	room := v.room
 	share := excess / beam
 	plausible := want > 0.3*v.clear[rules.Diffuse] && want < float64(4*v.clear[rules.Diffuse])+40
 	switch {

@@ -33,9 +33,9 @@ func signalFrozen(w *Watcher, c *faultCase, v *view) hint {
 		return hint{1, x}
 	case math.IsNaN(want):
 		return hint{0.2, x}
-	case math.Abs(want-x) > 3*v.scale(w) && !(c.quantity == rules.Global && want > x):
+	case math.Abs(want-x) > 3*v.room && !(c.quantity == rules.Global && want > x):
 		return hint{0.5, x}
-	case c.quantity == rules.Global && want > x+v.scale(w):
+	case c.quantity == rules.Global && want > x+v.room:
 		return nothing // it may be clipped there
 	}
 	return hint{0.15, x}

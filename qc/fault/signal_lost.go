@@ -56,7 +56,7 @@ func (w *Watcher) missedMuch(q rules.Quantity, v *view) bool {
 			return false // no sky gives so little diffuse: it is diffuse that is lost
 		}
 		want *= v.mu
-		return want > 50 && want > 4*v.scale(w) && want > 0.3*v.g()
+		return want > 50 && want > 4*v.room && want > 0.3*v.g()
 	}
-	return want > 60 && want > 3*v.scale(w)
+	return want > 60 && want > 3*v.room
 }

@@ -58,9 +58,6 @@ func (w *Watcher) humid() float64 {
 	return most
 }
 
-// judgeDay looks at what only a whole day can show.
-func (w *Watcher) judgeDay(f *DayFacts) {}
-
 func (c SlowCarry) clone() SlowCarry {
 	c.Jumps, c.Dips = slices.Clone(c.Jumps), slices.Clone(c.Dips)
 	return c

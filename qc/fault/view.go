@@ -86,9 +86,6 @@ func (v *view) look(w *Watcher, m *Minute) {
 	v.steady = before.minute == v.minute-1 && math.Abs(v.sum-before.sum) < float64(0.03*v.sum)+3
 }
 
-// scale is workScale's result, worked out once.
-func (v *view) scale(*Watcher) float64 { return v.room }
-
 // workScale is how well one expected value can be held against one measured, W/m2: a share of it, the offset of a good instrument, and,
 // on the edge of a cloud, part of what changed within the minute, for instruments do not follow alike.
 func (v *view) workScale(w *Watcher) float64 {
@@ -102,7 +99,3 @@ func (v *view) workScale(w *Watcher) float64 {
 }
 
 func expOf(x float64) float64 { return exact.Exp(x) }
-
-// expectedWithout is expected for evidence that looks at values which may be grossly wrong: what the partners say, at the station's
-// own closure.
-func (v *view) expectedWithout(q rules.Quantity) float64 { return v.expected[q] }

@@ -147,7 +147,6 @@ func (w *Watcher) Tick(minuteUTC int64) {
 // EndDay closes the day and gives what later days may know of it.
 func (w *Watcher) EndDay() (DayFacts, Carry) {
 	facts := w.facts.close(w)
-	w.judgeDay(&facts)
 	c := Carry{LastRecord: w.last, Open: slices.Clone(w.open), Slow: w.slow.clone()}
 	for i := range w.cases {
 		if s := &w.cases[i]; s.Score > 0 || s.Since != noMinute {

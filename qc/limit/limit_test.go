@@ -5,6 +5,7 @@ import (
 	"testing"
 
 	"fluxwarden/qc/exact"
+	"fluxwarden/qc/sensor"
 	"fluxwarden/rules"
 )
 
@@ -89,7 +90,7 @@ func TestLongwaveBounds(t *testing.T) {
 	l := limits()
 	for _, row := range [][5]float64{{250, 88.60, 246.50, 172.94, 324.30}, {273.15, 126.26, 340.66, 251.83, 448.08},
 		{288.15, 156.37, 415.92, 315.66, 545.28}, {300, 183.72, 484.30, 374.10, 632.62}} {
-		airC := row[0] - ZeroCelsiusK
+		airC := row[0] - sensor.ZeroCelsiusK
 		downLo, downHi := LWDownAirBounds(airC, l)
 		upLo, upHi := LWUpAirBounds(airC, l)
 		for k, got := range []float64{downLo, downHi, upLo, upHi} {

@@ -3,18 +3,13 @@ package limit
 import (
 	"math"
 
+	"fluxwarden/qc/sensor"
 	"fluxwarden/rules"
 )
 
-// StefanBoltzmann is the constant in W m-2 K-4, exact in the SI of 2019 (CODATA 2018).
-const StefanBoltzmann = 5.670374419e-8
-
-// ZeroCelsiusK is 0 degrees C in kelvin.
-const ZeroCelsiusK = 273.15
-
 func blackBody(tK float64) float64 {
 	t2 := tK * tK
-	return float64(StefanBoltzmann * t2 * t2)
+	return float64(sensor.StefanBoltzmann * t2 * t2)
 }
 
 // AirUsable says whether an air temperature is plausible enough for other tests to lean on. Long & Dutton 2002 (from
@@ -45,7 +40,7 @@ func LWDownAir(ld, airC float64, l *rules.Limits) rules.Outcome {
 
 // LWDownAirBounds are the bounds of LWDownAir, W/m2.
 func LWDownAirBounds(airC float64, l *rules.Limits) (lo, hi float64) {
-	bb := blackBody(airC + ZeroCelsiusK)
+	bb := blackBody(airC + sensor.ZeroCelsiusK)
 	return l.LWAirDownFactor * bb, bb + l.LWAirDownAboveWm2
 }
 
@@ -70,7 +65,7 @@ func LWUpAir(lu, airC float64, l *rules.Limits) rules.Outcome {
 
 // LWUpAirBounds are the bounds of LWUpAir, W/m2.
 func LWUpAirBounds(airC float64, l *rules.Limits) (lo, hi float64) {
-	t := airC + ZeroCelsiusK
+	t := airC + sensor.ZeroCelsiusK
 	return blackBody(t - l.LWAirUpBelowK), blackBody(t + l.LWAirUpAboveK)
 }
 
