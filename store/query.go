@@ -21,9 +21,13 @@ func (a *Archive) partitionOf(station string) (int, bool) {
 	return i, ok
 }
 
-// refresh reads what another program has committed since. A writer's own books are always up to date.
+// refresh reads what another program has committed since. A writer's own books are up to date once the commit that is under way has ended: it
+// publishes before it notes, so a reader that met a file on the move waits for it.
 func (a *Archive) refresh(i int) error {
 	if a.lock != nil {
+		p := a.parts[i]
+		p.commit.Lock()
+		defer p.commit.Unlock()
 		return nil
 	}
 	fresh := newPartition()
