@@ -31,6 +31,7 @@ func (d *Daemon) Reload(site *rules.Site, text []byte, err error) error {
 	}
 	d.metrics.Reloaded(true, now)
 	d.metrics.Stations(d.stationIDs())
+	d.metrics.Calibrations(d.rules.newest())
 	if g := d.gate.Load(); g != nil {
 		g.SetKnown(d.known())
 	}

@@ -140,6 +140,7 @@ func (d *Daemon) openArchive(context.Context) error {
 	}
 	d.metrics.Reloaded(true, d.config.Clock.Now())
 	d.metrics.Stations(d.stationIDs())
+	d.metrics.Calibrations(d.rules.newest())
 	return nil
 }
 

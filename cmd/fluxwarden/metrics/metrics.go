@@ -20,7 +20,10 @@ const namespace = "fluxwarden"
 
 // Operations are all that can fail and is counted by its name.
 var Operations = []string{"commit", "lease", "lost_partition", "judge", "publish_findings", "purge_journal", "read_archive", "read_journal", "set_aside",
-	"broker", "reload", "disk", "http"}
+	"broker", "reload", "disk", "http", "clock", "notify"}
+
+// NotifyWays are the ways on which the daemon's own messages go out.
+var NotifyWays = []string{"webhook", "mail"}
 
 // Metrics is the registry and the handles into it. Its methods may be called by several goroutines.
 type Metrics struct {
@@ -42,6 +45,10 @@ type Metrics struct {
 	diskFree, diskFloor                     *prometheus.GaugeVec
 	reloadGood, reloadTime, ready           prometheus.Gauge
 	stations                                *stations
+
+	uncommittedSince, unsealedDays, oldestUnsealed prometheus.Gauge
+	notified, notifyFailed, notifyGivenUp          *prometheus.CounterVec
+	notifyWaiting                                  prometheus.Gauge
 }
 
 // New makes the registry. now is the daemon's clock.
@@ -50,6 +57,8 @@ func New(version string, now func() time.Time) *Metrics {
 	m.gate()
 	m.worker()
 	m.archive()
+	m.backlog()
+	m.notifier()
 	m.stations = newStations(now)
 	m.Registry.MustRegister(m.stations, collectors.NewGoCollector(), collectors.NewProcessCollector(collectors.ProcessCollectorOpts{}))
 	revision := ""
@@ -127,6 +136,24 @@ func (m *Metrics) archive() {
 	m.reloadGood = m.gauge("rules", "last_reload_successful", "1 if the last site file that was read is in force or will be from the next UTC day; 0 if it was refused.")
 	m.reloadTime = m.gauge("rules", "last_reload_success_timestamp_seconds", "When a site file was last taken.")
 	m.ready = m.gauge("", "ready", "1 while readings are consumed and can be stored.")
+}
+
+func (m *Metrics) backlog() {
+	m.uncommittedSince = m.gauge("commit", "waiting_since_timestamp_seconds", "Last commit of the partition whose readings have waited longest for the next one; 0 while none waits.")
+	m.unsealedDays = m.gauge("seal", "waiting", "Station-days that are not sealed yet.")
+	m.oldestUnsealed = m.gauge("seal", "oldest_waiting_timestamp_seconds", "Begin of the oldest station-day that is not sealed; 0 while there is none.")
+}
+
+func (m *Metrics) notifier() {
+	m.notified = m.counterVec("notify", "messages_total", "Messages delivered, by way.", "way")
+	m.notifyFailed = m.counterVec("notify", "failures_total", "Tries to deliver a message that did not come off, by way.", "way")
+	m.notifyGivenUp = m.counterVec("notify", "given_up_total", "Messages that were not delivered and are no longer tried, by way.", "way")
+	for _, way := range NotifyWays {
+		m.notified.WithLabelValues(way)
+		m.notifyFailed.WithLabelValues(way)
+		m.notifyGivenUp.WithLabelValues(way)
+	}
+	m.notifyWaiting = m.gauge("notify", "waiting_messages", "Messages due that are not delivered yet, those held over quiet hours included.")
 }
 
 func (m *Metrics) counter(subsystem, name, help string) prometheus.Counter {

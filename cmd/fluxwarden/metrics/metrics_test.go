@@ -2,6 +2,7 @@ package metrics
 
 import (
 	"fmt"
+	"strings"
 	"testing"
 	"time"
 
@@ -48,6 +49,16 @@ func TestSeriesAreBounded(t *testing.T) {
 		m.Episodes(id, all)
 		m.Worker().Failed("commit")
 	}
+	m.Maintenance(ids)
+	site := &rules.Site{}
+	for _, id := range ids {
+		in := rules.Instrument{ID: "G1", Calibrations: []rules.Calibration{{From: now.AddDate(-2, 0, 0)}}}
+		site.Stations = append(site.Stations, rules.Station{ID: id, Instruments: []rules.Instrument{in, in, in}})
+		for k := range site.Stations[len(site.Stations)-1].Instruments {
+			site.Stations[len(site.Stations)-1].Instruments[k].ID = fmt.Sprintf("G%d", k)
+		}
+	}
+	m.Calibrations(site)
 	n := seriesOf(t, m)
 	t.Logf("%d series", n)
 	if n >= 10_000 {
@@ -80,5 +91,39 @@ func TestNamesFollowConventions(t *testing.T) {
 	}
 	for _, p := range problems {
 		t.Errorf("%s: %s", p.Metric, p.Text)
+	}
+}
+
+// A calibration has a series from two months before its end on; one without an end in the site file holds two years.
+func TestCalibrationsThatEnd(t *testing.T) {
+	now := time.Date(2026, 6, 21, 12, 0, 0, 0, time.UTC)
+	m := New("test", func() time.Time { return now })
+	m.Stations([]string{"northmoor"})
+	m.Calibrations(&rules.Site{Stations: []rules.Station{{ID: "northmoor", Instruments: []rules.Instrument{
+		{ID: "fresh", Calibrations: []rules.Calibration{{From: now.AddDate(-1, 0, 0)}}},
+		{ID: "old", Calibrations: []rules.Calibration{{From: now.AddDate(-3, 0, 0)}}},
+		{ID: "renewed", Calibrations: []rules.Calibration{{From: now.AddDate(-3, 0, 0), To: now.AddDate(-1, 0, 0)}, {From: now.AddDate(-1, 0, 0)}}},
+		{ID: "ending", Calibrations: []rules.Calibration{{From: now.AddDate(-1, 0, 0), To: now.AddDate(0, 1, 0)}}},
+		{ID: "none"},
+	}}}})
+	want := fmt.Sprintf(`# HELP fluxwarden_calibration_due_timestamp_seconds When an instrument's calibration ends; only of those that end within two months or have ended.
+# TYPE fluxwarden_calibration_due_timestamp_seconds gauge
+fluxwarden_calibration_due_timestamp_seconds{instrument="old",station="northmoor"} %d
+fluxwarden_calibration_due_timestamp_seconds{instrument="ending",station="northmoor"} %d
+`, now.AddDate(-3, 0, 0).Add(calibrationHolds).Unix(), now.AddDate(0, 1, 0).Unix())
+	if err := testutil.GatherAndCompare(m.Registry, strings.NewReader(want), "fluxwarden_calibration_due_timestamp_seconds"); err != nil {
+		t.Error(err)
+	}
+}
+
+// A station that is declared and was never heard has a series all the same: otherwise its silence could not be seen.
+func TestASilentStationHasASeries(t *testing.T) {
+	m := New("test", time.Now)
+	m.Stations([]string{"northmoor"})
+	m.Maintenance([]string{"northmoor", "elsewhere"})
+	for name, want := range map[string]int{"fluxwarden_station_last_minute_timestamp_seconds": 1, "fluxwarden_station_maintenance": 1, "fluxwarden_station_lag_seconds": 0} {
+		if n, err := testutil.GatherAndCount(m.Registry, name); n != want || err != nil {
+			t.Errorf("%s: %d series, %v; want %d", name, n, err, want)
+		}
 	}
 }

@@ -53,6 +53,11 @@ func (w workerView) Owned(n int)             { w.m.owned.Set(float64(n)) }
 func (w workerView) Journal(_ worker.StreamState, pending uint64) {
 	w.m.pending.Set(float64(pending))
 }
+func (w workerView) Waiting(b worker.Backlog) {
+	w.m.uncommittedSince.Set(seconds(b.UncommittedSince))
+	w.m.unsealedDays.Set(float64(b.UnsealedDays))
+	w.m.oldestUnsealed.Set(seconds(b.OldestUnsealed))
+}
 func (w workerView) Committed(took time.Duration, rows int, err error) {
 	w.m.commitSeconds.Observe(took.Seconds())
 	if err != nil {
@@ -60,6 +65,14 @@ func (w workerView) Committed(took time.Duration, rows int, err error) {
 		return
 	}
 	w.m.commitRows.Add(float64(rows))
+}
+
+// seconds is a moment as metrics tell it; 0 for the zero time.
+func seconds(at time.Time) float64 {
+	if at.IsZero() {
+		return 0
+	}
+	return float64(at.Unix())
 }
 
 // Failed counts an operation that went wrong.
@@ -126,6 +139,23 @@ func (m *Metrics) Reloaded(ok bool, at time.Time) {
 	m.reloadGood.Set(1)
 	m.reloadTime.Set(float64(at.Unix()))
 }
+
+// Notified counts a message that was delivered.
+func (m *Metrics) Notified(way string) { m.notified.WithLabelValues(way).Inc() }
+
+// NotifyFailed counts a try that did not come off; for good where the message is given up.
+func (m *Metrics) NotifyFailed(way string, forGood bool) {
+	m.notifyFailed.WithLabelValues(way).Inc()
+	if forGood {
+		m.notifyGivenUp.WithLabelValues(way).Inc()
+	}
+}
+
+// NotifyWaiting notes how many messages wait.
+func (m *Metrics) NotifyWaiting(n int) { m.notifyWaiting.Set(float64(n)) }
+
+// Maintenance says at which stations noted maintenance is under way.
+func (m *Metrics) Maintenance(ids []string) { m.stations.setMaintenance(ids) }
 
 // Ready notes whether readings are consumed and can be stored.
 func (m *Metrics) Ready(ok bool) {

@@ -22,10 +22,14 @@ type stations struct {
 	lag  *prometheus.Desc
 	open *prometheus.Desc
 	more *prometheus.Desc
+	work *prometheus.Desc
+	due  *prometheus.Desc
 
 	mu     sync.Mutex
 	known  map[string]time.Time // the end of the last judged minute; zero before the first
 	faults map[string][]openFault
+	atWork []string // stations under noted maintenance
+	ends   []calibrationEnd
 }
 
 type openFault struct{ instrument, kind, severity string }
@@ -35,10 +39,12 @@ func newStations(now func() time.Time) *stations {
 		return prometheus.NewDesc(namespace+"_"+name, help, labels, nil)
 	}
 	return &stations{now: now, known: map[string]time.Time{}, faults: map[string][]openFault{},
-		last: desc("station_last_minute_timestamp_seconds", "End of the last judged minute.", "station"),
+		last: desc("station_last_minute_timestamp_seconds", "End of the last judged minute; 0 before the first.", "station"),
 		lag:  desc("station_lag_seconds", "Time since the end of the last judged minute, by the daemon's clock.", "station"),
 		open: desc("fault_open", "1 while an episode is open.", "station", "instrument", "fault", "severity"),
-		more: desc("faults_not_shown", "Open episodes beyond the bound of what has a series.")}
+		more: desc("faults_not_shown", "Open episodes beyond the bound of what has a series."),
+		work: desc("station_maintenance", "1 while noted maintenance is under way.", "station"),
+		due:  desc("calibration_due_timestamp_seconds", "When an instrument's calibration ends; only of those that end within two months or have ended.", "station", "instrument")}
 }
 
 func (s *stations) set(ids []string) {
@@ -82,7 +88,7 @@ func (s *stations) episodes(id string, all []fault.Episode) {
 
 // Describe implements prometheus.Collector.
 func (s *stations) Describe(c chan<- *prometheus.Desc) {
-	for _, d := range []*prometheus.Desc{s.last, s.lag, s.open, s.more} {
+	for _, d := range []*prometheus.Desc{s.last, s.lag, s.open, s.more, s.work, s.due} {
 		c <- d
 	}
 }
@@ -93,8 +99,8 @@ func (s *stations) Collect(c chan<- prometheus.Metric) {
 	defer s.mu.Unlock()
 	now := s.now()
 	for id, at := range s.known {
+		c <- prometheus.MustNewConstMetric(s.last, prometheus.GaugeValue, seconds(at), id)
 		if !at.IsZero() {
-			c <- prometheus.MustNewConstMetric(s.last, prometheus.GaugeValue, float64(at.Unix()), id)
 			c <- prometheus.MustNewConstMetric(s.lag, prometheus.GaugeValue, now.Sub(at).Seconds(), id)
 		}
 	}
@@ -108,6 +114,12 @@ func (s *stations) Collect(c chan<- prometheus.Metric) {
 			shown++
 			c <- prometheus.MustNewConstMetric(s.open, prometheus.GaugeValue, 1, id, f.instrument, f.kind, f.severity)
 		}
+	}
+	for _, id := range s.atWork {
+		c <- prometheus.MustNewConstMetric(s.work, prometheus.GaugeValue, 1, id)
+	}
+	for _, e := range dueSoon(s.ends, now) {
+		c <- prometheus.MustNewConstMetric(s.due, prometheus.GaugeValue, float64(e.at.Unix()), e.station, e.instrument)
 	}
 	c <- prometheus.MustNewConstMetric(s.more, prometheus.GaugeValue, float64(hidden))
 }

@@ -168,6 +168,14 @@ type Meter interface {
 	SetAside(reason string, n int)
 	Failed(operation string)
 	Owned(partitions int)
+	Waiting(b Backlog)
+}
+
+// A Backlog is what waits to be written or sealed.
+type Backlog struct {
+	UncommittedSince time.Time // the longest that a partition with readings has waited for a commit; zero if none waits
+	UnsealedDays     int       // station-days
+	OldestUnsealed   time.Time // begin of the oldest of them; zero if there is none
 }
 
 // Reasons under which a Meter counts a journal that is not the one that was read before.

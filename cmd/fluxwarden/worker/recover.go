@@ -56,7 +56,22 @@ func (w *Worker) recoverStation(ctx context.Context, partition int, id string) (
 			s.sealing[d] = true
 		}
 	}
-	return s, s.takeUncommittedDays(ctx)
+	if err := s.takeUncommittedDays(ctx); err != nil {
+		return nil, err
+	}
+	s.showRecovered()
+	return s, nil
+}
+
+// showRecovered tells those who watch what the archive knew: without it a fault that has not changed since a restart would be
+// open in the archive only.
+func (s *station) showRecovered() {
+	if s.w.cfg.Live != nil {
+		s.w.cfg.Live.Episodes(s.id, s.episodes())
+	}
+	if s.current == nil && s.lastEnded >= firstDay {
+		s.w.cfg.Meter.LastMinute(s.id, time.Unix((s.lastEnded+1)*86400, 0).UTC())
+	}
 }
 
 func (s *station) takeUncommittedDays(ctx context.Context) error {

@@ -124,9 +124,12 @@ func (w *Worker) Step(ctx context.Context, wait time.Duration) bool {
 	}
 	took := w.readNext(ctx, wait)
 	now = w.cfg.Clock.Now()
-	if passed(w.metered, now, tickEvery) && w.cursor != nil {
+	if passed(w.metered, now, tickEvery) {
 		w.metered = now
-		w.cfg.Meter.Journal(w.stream, w.cursor.Pending())
+		if w.cursor != nil {
+			w.cfg.Meter.Journal(w.stream, w.cursor.Pending())
+		}
+		w.cfg.Meter.Waiting(w.backlog())
 	}
 	if w.caughtUp && passed(w.ticked, now, tickEvery) {
 		w.ticked = now
@@ -134,6 +137,31 @@ func (w *Worker) Step(ctx context.Context, wait time.Duration) bool {
 	}
 	w.commitDue(ctx, now)
 	return took
+}
+
+// backlog is what waits to be written or sealed now.
+func (w *Worker) backlog() Backlog {
+	var b Backlog
+	oldest := int64(lastDay)
+	for _, p := range w.partitions {
+		if p.rows > 0 && (b.UncommittedSince.IsZero() || p.committed.Before(b.UncommittedSince)) {
+			b.UncommittedSince = p.committed
+		}
+		for _, s := range p.stations {
+			b.UnsealedDays += len(s.sealing)
+			for day := range s.sealing {
+				oldest = min(oldest, day)
+			}
+			if s.current != nil && !s.sealing[s.current.day] {
+				b.UnsealedDays++
+				oldest = min(oldest, s.current.day)
+			}
+		}
+	}
+	if b.UnsealedDays > 0 {
+		b.OldestUnsealed = time.Unix(oldest*86400, 0).UTC()
+	}
+	return b
 }
 
 // passed says whether so much time has gone by since, or the clock was set back.

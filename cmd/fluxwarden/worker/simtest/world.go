@@ -296,4 +296,5 @@ func (m meter) Journal(worker.StreamState, uint64)  {}
 func (m meter) SetAside(string, int)                {}
 func (m meter) Failed(operation string)             { m.w.counts["failed "+operation]++ }
 func (m meter) Owned(int)                           {}
+func (m meter) Waiting(worker.Backlog)              {}
 func (m meter) Committed(time.Duration, int, error) { m.w.counts["commits"]++ }
