@@ -93,5 +93,8 @@ func (st *Station) canonical() string {
 	for i := range limitTable {
 		c.line("limit", limitTable[i].Key, *limitTable[i].field(&st.Limits))
 	}
+	if st.Products.NightZero { // the default writes nothing: rule sets of before have the digest that they had
+		c.line("products", "night_negatives", "zero")
+	}
 	return c.String()
 }

@@ -53,6 +53,7 @@ func TestDigestIgnoresWhatCannotChangeARow(t *testing.T) {
 		{"time: {label: end, interval: 60s}", "time: {interval: 1m, label: end}"},
 		{"      supply: {channel: batt_v, low: 11.5}\n      tracker: trk_mode\n", "      tracker: trk_mode\n      supply: {channel: batt_v, low: 11.5}\n"},
 		{"{closure.floor: 15}", "{closure.floor: 15, closure.high_sun: 0.08}"}, // the default, written out
+		{"limits: {closure.floor: 15}", "limits: {closure.floor: 15}\n      products: {night_negatives: keep}"},
 		{"to: 2026-01-01, ", ""}, // it ends there anyhow
 	} {
 		if after := parsed(t, swap(t, text, c)); after.Digest != before.Digest {
@@ -78,6 +79,7 @@ func TestDigestFollowsWhatCanChangeARow(t *testing.T) {
 		{"k3: 2.9", "k3: 3.0"},
 		{"-0.0002", "-0.0003"},
 		{"range: [-5, 25]", "range: [-5, 30]"},
+		{"limits: {closure.floor: 15}", "limits: {closure.floor: 15}\n      products: {night_negatives: zero}"},
 		{"class: B", "class: C"},
 		{"dome: l1_dome_c", "dome: l1_dome_k, dome_unit: K"},
 		{"shaded: true", "shaded: false"},
@@ -130,7 +132,7 @@ func TestEveryFieldIsDecided(t *testing.T) {
 		of   any
 		want int
 	}{
-		"Station": {Station{}, 14}, "Timing": {Timing{}, 2}, "Instrument": {Instrument{}, 9}, "Input": {Input{}, 9}, "Calibration": {Calibration{}, 13},
+		"Station": {Station{}, 15}, "Products": {Products{}, 1}, "Timing": {Timing{}, 2}, "Instrument": {Instrument{}, 9}, "Input": {Input{}, 9}, "Calibration": {Calibration{}, 13},
 		"WeatherInput": {WeatherInput{}, 3}, "HousekeepingInput": {HousekeepingInput{}, 4}, "Sky": {Sky{}, 5},
 	} {
 		if got := reflect.TypeOf(c.of).NumField(); got != c.want {

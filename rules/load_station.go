@@ -17,6 +17,7 @@ func (r *reader) site(v *value) *Site {
 	}
 	limits := DefaultLimits()
 	r.limits(v.at("rules"), &limits, "rules")
+	products := productsOf(v.at("rules"), Products{})
 	stations := v.at("stations")
 	if stations == nil {
 		return site
@@ -24,6 +25,7 @@ func (r *reader) site(v *value) *Site {
 	seen := map[string]int{}
 	for _, s := range stations.items {
 		st := r.station(s, limits)
+		st.Products = productsOf(s.at("rules"), products)
 		if first := seen[st.ID]; first > 0 && st.ID != "" {
 			r.problem(s.at("id").node, "give each station its own id", "station id %s is there twice, first on line %d", short(st.ID), first)
 		}
@@ -217,6 +219,14 @@ func (r *reader) housekeeping(v *value, path string) []HousekeepingInput {
 func sky(v *value) Sky {
 	return Sky{Model: v.textAt("model", "bird"), OzoneCm: v.numberAt("ozone_cm", math.NaN()), WaterCm: v.numberAt("water_cm", math.NaN()),
 		AOD: v.numberAt("aod", math.NaN()), Albedo: v.numberAt("albedo", math.NaN())}
+}
+
+// productsOf applies what a rules section says of the clean products.
+func productsOf(rules *value, p Products) Products {
+	if v := rules.at("products"); v != nil && v.ok && v.given("night_negatives") {
+		p.NightZero = v.at("night_negatives").text == "zero"
+	}
+	return p
 }
 
 // limits applies the overrides of a rules section.

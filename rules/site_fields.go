@@ -83,6 +83,10 @@ var siteField = field{kind: objectKind, doc: "A network of radiation stations an
 
 var rulesFields = []field{
 	{key: "limits", kind: objectKind, doc: "Limits that differ from the published ones. A station's own go before the network's.", fields: limitFields()},
+	{key: "products", kind: objectKind, doc: "How the clean products are made. A station's own go before the network's.", fields: []field{
+		{key: "night_negatives", kind: choiceKind, choices: []string{"keep", "zero"}, fallback: "keep",
+			doc: "What becomes of shortwave values below zero while the sun is more than 3 degrees below the horizon: all are kept, or all are set to zero."},
+	}},
 }
 
 // limitFields are the keys of the limit table.

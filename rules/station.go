@@ -39,8 +39,16 @@ type Station struct {
 	Housekeeping []HousekeepingInput
 	Sky          Sky
 	Limits       Limits // the published ones with the network's and the station's overrides applied
+	Products     Products
 	Digest       string // sha256, hex, of the station's own part: a change elsewhere in the file leaves it alone
 	Line         int    // of the site file
+}
+
+// Products says how the clean products are made of judged minutes.
+type Products struct {
+	// NightZero sets every shortwave value below zero to zero while the sun's zenith angle is above 93 degrees, as the monthly means of
+	// Roesch et al. 2011 want it; otherwise all are kept. Some kept and some set to zero would leave a bias that nobody can undo.
+	NightZero bool
 }
 
 // Sky is the clear-sky model of a station and what it assumes where nothing is learnt; NaN where the file says nothing.
