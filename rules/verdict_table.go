@@ -146,3 +146,24 @@ func FaultEffect(kind FaultKind, severity Severity) Effect {
 
 // RestoredEffect is the effect of an episode on a value that was restored from it with known uncertainty.
 const RestoredEffect = Question
+
+// noteEffects is what a person's note does to the minutes that it is about.
+var noteEffects = [NoteKindCount]Effect{
+	Remark: NoEffect, // said for the record only; it does not stand in the reasons
+	// Somebody was at the instrument. The times of a note are generous and much of such a visit is sound, so nothing is thrown away; who
+	// knows that a minute is spoilt says so with an override.
+	Maintenance: Question,
+	// A hand and a cloth over the dome, for a minute or two of the time stated.
+	Cleaning: Question,
+	// The instrument was moved in its mount while it measured.
+	Levelling: Question,
+	// Between one instrument and the next the channel measures nothing, and whose calibration holds cannot be known.
+	Exchange: Reject,
+	// The person's own verdict stands in the note: see Note.Verdict.
+	Override:   Report,
+	Withdrawal: NoEffect,
+}
+
+// NoteEffect is what a note of this kind does to the verdict of the minutes that it is about. An override replaces the verdict whatever
+// else is said, and nothing makes a value that is not there.
+func NoteEffect(k NoteKind) Effect { return noteEffects[k] }

@@ -48,6 +48,7 @@ type Series struct {
 	Passed     []rules.TestSet
 	Faults     []rules.FaultSet                 // episodes that reach this minute
 	Restored   []bool                           // the value was restored from a fault
+	Notes      []rules.NoteSet                  // what people said of this minute; nil is nothing
 	Outcomes   [rules.TestCount][]rules.Outcome // of the tests that this series has; nil for the others
 
 	soundU95     []float64 // U95 of Measured; nil for weather
@@ -93,6 +94,7 @@ func (s *seriesPlan) columns(f *floats) Series {
 		Measured: f.cut(), Value: f.cut(), SD: f.cut(), Min: f.cut(), Max: f.cut(), U95: f.cut(),
 		N: make([]uint32, minute.PerDay), Verdict: make([]rules.Verdict, minute.PerDay), Missed: make([]rules.TestSet, minute.PerDay),
 		Passed: make([]rules.TestSet, minute.PerDay), Faults: make([]rules.FaultSet, minute.PerDay), Restored: make([]bool, minute.PerDay),
+		Notes:  make([]rules.NoteSet, minute.PerDay),
 		marked: make([]bool, minute.PerDay)}
 	if s.instrument != nil {
 		out.soundU95 = f.cut()

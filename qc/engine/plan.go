@@ -28,6 +28,8 @@ type Plan struct {
 	nothing     []float64                // a column without a value
 	passes      []rules.Outcome          // a column of passes
 	setup       *fault.Setup
+	notes       *rules.NoteBook
+	base        *Plan // without notes
 }
 
 // A seriesPlan is how one series is made from channels.
@@ -85,8 +87,24 @@ func NewPlan(st *rules.Station) (*Plan, error) {
 		p.column(st.Housekeeping[i].Channel)
 	}
 	p.setup = p.faultSetup()
+	p.base = p
 	return p, nil
 }
+
+// WithNotes is the plan with the station's notes, withdrawn ones and withdrawals among them, instead of those it had. It shares all else.
+func (p *Plan) WithNotes(all []rules.Note) *Plan {
+	book := rules.NewNoteBook(all)
+	if book == nil {
+		return p.base
+	}
+	q, setup := *p.base, *p.base.setup
+	setup.Notes = book
+	q.setup, q.notes = &setup, book
+	return &q
+}
+
+// Base is the plan without notes. Columns made by one of a plan and its forms with notes fit the others.
+func (p *Plan) Base() *Plan { return p.base }
 
 func (p *Plan) addInstruments() error {
 	counts := [rules.QuantityCount]int{}

@@ -8,8 +8,8 @@ import (
 	"fluxwarden/rules"
 )
 
-// Settle works out verdicts, reasons and restored values of the judged rows from their tests and from the episodes that
-// reach them. It may be called again when episodes have changed; what it writes depends on its arguments alone.
+// Settle works out verdicts, reasons and restored values of the judged rows from their tests, from the episodes that
+// reach them and from the plan's notes. It may be called again when episodes have changed; what it writes depends on its arguments alone.
 func Settle(plan *Plan, j *Judged, episodes []fault.Episode) {
 	for i := range plan.series {
 		settleTests(plan, j, i)
@@ -29,6 +29,7 @@ func Settle(plan *Plan, j *Judged, episodes []fault.Episode) {
 			}
 		}
 	}
+	settleNotes(plan, j)
 }
 
 // settleTests gives the verdict that the tests alone come to.
@@ -41,6 +42,7 @@ func settleTests(plan *Plan, j *Judged, i int) {
 	}
 	clear(s.Faults[:n])
 	clear(s.Restored[:n])
+	clear(s.Notes[:n])
 	for r, missed := range s.Missed[:n] {
 		switch {
 		case missed == 0:

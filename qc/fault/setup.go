@@ -14,6 +14,7 @@ type Setup struct {
 	ElevationM  float64
 	GapMinutes  int64 // no record for so long is a gap
 	Instruments [rules.RadiationCount]Instrument
+	Notes       *rules.NoteBook // of the station, in force; nil is none
 }
 
 // An Instrument is the primary one of a quantity.

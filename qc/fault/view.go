@@ -22,6 +22,7 @@ type view struct {
 	conflict   bool
 	value      [rules.QuantityCount]float64
 	marked     [rules.QuantityCount]bool
+	silent     [rules.RadiationCount]bool // somebody is at work on it: see silence
 	run        [rules.QuantityCount]int
 	bodyC, net float64
 	clear      [rules.RadiationCount]float64
@@ -67,6 +68,7 @@ func (v *view) look(w *Watcher, m *Minute) {
 	v.conflict = m.AnyConflict
 	v.value, v.marked, v.run = m.Value, m.Marked, m.Run
 	v.bodyC, v.net = m.BodyC, m.NetWm2
+	w.silence(v)
 	w.base.clearSky(m)
 	v.clear = m.Clear
 	c := w.base.closureAt(v)

@@ -25,6 +25,7 @@ type Watcher struct {
 	byDay, byNight caseList        // the cases that the station can have
 	slow           SlowCarry
 	sunrise        int64
+	noted          []int // notes of the setup's book that matter today
 }
 
 const noMinute = int64(-1) << 40
@@ -72,6 +73,7 @@ func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watche
 	}
 	w.now = &w.ring[0]
 	w.listCases()
+	w.takeNotes()
 	return w
 }
 
@@ -79,10 +81,10 @@ func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watche
 func (w *Watcher) Minute(m *Minute) {
 	w.Tick(m.Minute)
 	if m.Records > 0 {
-		if w.last != noMinute && m.Minute-w.last > w.setup.GapMinutes {
-			w.seeGap(m.Minute)
-		}
 		w.closeGap(m.Minute)
+		if w.last != noMinute && w.setup.Notes != nil {
+			w.endByNotes(m.Minute)
+		}
 		if hole := m.Minute - w.last - 1; w.last != noMinute && hole > 0 {
 			w.seeHole(hole, m.Minute-hole)
 		}
@@ -100,6 +102,9 @@ func (w *Watcher) Minute(m *Minute) {
 	}
 	for _, i := range list.cases[:list.n] {
 		c := &catalogueOfCases[i]
+		if w.now.isSilent(c) {
+			continue
+		}
 		w.step(int(i), c, c.evidence(w, c, w.now))
 	}
 	w.watchSlow(w.now)
@@ -139,8 +144,11 @@ func (w *Watcher) listCases() {
 
 // Tick says that nothing more will come before the minute.
 func (w *Watcher) Tick(minuteUTC int64) {
-	if w.last != noMinute && minuteUTC-w.last > w.setup.GapMinutes {
-		w.seeGap(minuteUTC)
+	if w.last == noMinute {
+		return
+	}
+	if heard := w.heard(); minuteUTC-heard > w.setup.GapMinutes {
+		w.seeGap(heard)
 	}
 }
 

@@ -129,7 +129,7 @@ func quantityColumns(q rules.Quantity) []Column {
 	value.StandardName = standardNames[q]
 	list := []Column{value,
 		{Name: name + "_verdict", Description: long + ": accepted, questioned, rejected or absent", StandardName: "quality_flag", Kind: Text},
-		{Name: name + "_reasons", Description: long + ": tests missed and open faults that reach the minute, ';' between", Kind: Text}}
+		{Name: name + "_reasons", Description: long + ": tests missed, open faults that reach the minute and notes about it, ';' between", Kind: Text}}
 	if int(q) >= rules.RadiationCount {
 		return list
 	}

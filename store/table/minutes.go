@@ -53,7 +53,11 @@ func (t *Table) series(q rules.Quantity, at, n int, s *engine.Series) {
 		verdicts[r] = int32(v)
 	}
 	t.Vectors[c+offVerdict].Dict = verdictDict
-	t.reasons(c+offReasons, at, s.Missed[:n], s.Faults[:n])
+	notes := s.Notes
+	if notes == nil {
+		notes = make([]rules.NoteSet, n)
+	}
+	t.reasons(c+offReasons, at, s.Missed[:n], s.Faults[:n], notes[:n])
 	if int(q) >= rules.RadiationCount {
 		return
 	}
@@ -110,18 +114,18 @@ func (t *Table) round(c, at int, values []float64) {
 	}
 }
 
-func (t *Table) reasons(c, at int, missed []rules.TestSet, faults []rules.FaultSet) {
+func (t *Table) reasons(c, at int, missed []rules.TestSet, faults []rules.FaultSet, notes []rules.NoteSet) {
 	codes := t.codes(c)[at : at+len(missed)]
 	v := &t.Vectors[c]
-	known := map[[2]uint32]int32{}
-	var last [2]uint32
+	known := map[[3]uint32]int32{}
+	var last [3]uint32
 	code := int32(-1)
 	for r := range missed {
-		key := [2]uint32{uint32(missed[r]), uint32(faults[r])}
+		key := [3]uint32{uint32(missed[r]), uint32(faults[r]), uint32(notes[r])}
 		if code < 0 || key != last {
 			var ok bool
 			if code, ok = known[key]; !ok {
-				code = v.code(Reasons(missed[r], faults[r]))
+				code = v.code(Reasons(missed[r], faults[r], notes[r]))
 				known[key] = code
 			}
 			last = key
@@ -140,11 +144,14 @@ func (v *Vector) code(s string) int32 {
 	return int32(len(v.Dict) - 1)
 }
 
-// Reasons joins the tests missed and the kinds of the faults that reach a minute, ';' between.
-func Reasons(missed rules.TestSet, faults rules.FaultSet) string {
-	a, b := missed.Join(";"), faults.Join(";")
-	if a != "" && b != "" {
-		return a + ";" + b
+// Reasons joins the tests missed, the kinds of the faults that reach a minute and the kinds of the notes about it, ';' between.
+func Reasons(missed rules.TestSet, faults rules.FaultSet, notes rules.NoteSet) string {
+	out := ""
+	for _, x := range [...]string{missed.Join(";"), faults.Join(";"), notes.Join(";")} {
+		if out != "" && x != "" {
+			out += ";"
+		}
+		out += x
 	}
-	return a + b
+	return out
 }
