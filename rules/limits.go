@@ -32,6 +32,7 @@ type Limits struct {
 	AirTemperatureMinC, AirTemperatureMaxC                  float64
 	BodyMinC, BodyMaxC, BodyFromAirK                        float64
 	GapMinutes                                              float64
+	PartnerFactor, PartnerFloorWm2, PartnerMoved            float64
 }
 
 // A Limit is one row of the table: its key in a site file, the published value, its unit, the range that an override
@@ -125,6 +126,9 @@ func buildLimitTable() []Limit {
 	one("body.high", 80, "degC", 0, 150, srcOwn, func(l *Limits) *float64 { return &l.BodyMaxC })
 	one("body.from_air", 20, "K", 1, 100, "Long & Shi 2008 (from memory): 10 to 20 K", func(l *Limits) *float64 { return &l.BodyFromAirK })
 	one("gap", 30, "min", 2, 1440, srcOwn, func(l *Limits) *float64 { return &l.GapMinutes })
+	one("partner.factor", 1, "1", 0, 10, srcOwn+": times the two instruments' own expanded uncertainty together", func(l *Limits) *float64 { return &l.PartnerFactor })
+	one("partner.floor", 5, "W/m2", 0, 200, srcOwn, func(l *Limits) *float64 { return &l.PartnerFloorWm2 })
+	one("partner.moved", 0.25, "1", 0, 2, srcOwn+": share of the change since the minute before that two instruments may differ by on the edge of a cloud", func(l *Limits) *float64 { return &l.PartnerMoved })
 	return t
 }
 

@@ -125,6 +125,9 @@ func (r *reader) primaries(st *Station, list *value, path string) {
 					st.Instruments[primary].ID, st.Instruments[i].ID)
 			}
 		}
+		if len(at) > 2 {
+			r.warn(list.items[at[2]].node, "leave it out, or give it a station of its own", "%s has %d instruments for %s: the minutes of the primary and of the first other are stored, the rest is judged and not stored", path, len(at), Quantity(q))
+		}
 		if len(at) > 1 && primary < 0 {
 			r.problem(list.items[at[1]].node, "add primary: true to one of them", "%s has %d instruments for %s and none is primary", path, len(at), Quantity(q))
 		}

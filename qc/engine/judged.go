@@ -8,7 +8,7 @@ import (
 )
 
 // JudgeVersion is raised only when a golden row digest changes.
-const JudgeVersion = 1
+const JudgeVersion = 2
 
 // A Judged is the judged minutes of one station on one UTC day, in columns of minute.PerDay rows of which the first Rows are
 // known; the others may hold anything. NaN stands for a value that is not there.
@@ -27,6 +27,7 @@ type Judged struct {
 	ClearGlobalWm2, ClearDirectWm2, ClearDiffuseWm2, ClearLWDownWm2 []float64 // what a cloudless sky would give
 
 	Series []Series // one an instrument, in the site file's order, then the weather
+	Best   []Best   // one a quantity that has more than one source; filled by Settle
 
 	sun  sunDay
 	beam []float64 // direct normal irradiance that uncertainties are worked out with, W/m2
@@ -37,6 +38,7 @@ type Series struct {
 	Instrument string // the site file's id; the channel's name for weather
 	Quantity   rules.Quantity
 	Primary    bool      // the one whose values stand in the quantity's columns
+	Secondary  bool      // the one whose values stand in the quantity's columns for a second instrument
 	Measured   []float64 // in the quantity's unit, before any correction
 	Value      []float64 // after corrections; NaN where absent
 	SD         []float64 // of the samples in the minute
@@ -67,6 +69,16 @@ func (j *Judged) Primary(q rules.Quantity) *Series {
 	return nil
 }
 
+// Secondary gives the series of the quantity's second instrument, nil if the station has none.
+func (j *Judged) Secondary(q rules.Quantity) *Series {
+	for i := range j.Series {
+		if j.Series[i].Quantity == q && j.Series[i].Secondary {
+			return &j.Series[i]
+		}
+	}
+	return nil
+}
+
 // newJudged makes the columns of a day; its sun is filled in, no row is known yet.
 func newJudged(p *Plan, day int64) *Judged {
 	j := &Judged{Station: p.Station.ID, Records: make([]uint16, minute.PerDay)}
@@ -79,6 +91,7 @@ func newJudged(p *Plan, day int64) *Judged {
 	for i := range p.series {
 		j.Series[i] = p.series[i].columns(&f)
 	}
+	j.Best = p.bestColumns(&f)
 	j.reset(p, day)
 	return j
 }
@@ -90,7 +103,7 @@ func (j *Judged) reset(p *Plan, day int64) {
 }
 
 func (s *seriesPlan) columns(f *floats) Series {
-	out := Series{Instrument: s.id, Quantity: s.quantity, Primary: s.primary,
+	out := Series{Instrument: s.id, Quantity: s.quantity, Primary: s.primary, Secondary: s.secondary,
 		Measured: f.cut(), Value: f.cut(), SD: f.cut(), Min: f.cut(), Max: f.cut(), U95: f.cut(),
 		N: make([]uint32, minute.PerDay), Verdict: make([]rules.Verdict, minute.PerDay), Missed: make([]rules.TestSet, minute.PerDay),
 		Passed: make([]rules.TestSet, minute.PerDay), Faults: make([]rules.FaultSet, minute.PerDay), Restored: make([]bool, minute.PerDay),

@@ -25,8 +25,10 @@ type Plan struct {
 	pressureHPa float64      // of the standard atmosphere at the station
 	series      []seriesPlan
 	primary     [rules.QuantityCount]int // where the primary series of each quantity stands, -1 if there is none
-	nothing     []float64                // a column without a value
-	passes      []rules.Outcome          // a column of passes
+	secondary   [rules.QuantityCount]int // where the first series beside the primary stands, -1 if there is none
+	best        []bestPlan
+	nothing     []float64       // a column without a value
+	passes      []rules.Outcome // a column of passes
 	setup       *fault.Setup
 	notes       *rules.NoteBook
 	base        *Plan // without notes
@@ -37,6 +39,7 @@ type seriesPlan struct {
 	id            string
 	quantity      rules.Quantity
 	primary       bool
+	secondary     bool              // the first beside the primary of its quantity
 	instrument    *rules.Instrument // nil for weather
 	weather       *rules.WeatherInput
 	signal        int // block columns; -1 where there is none
@@ -71,7 +74,7 @@ func NewPlan(st *rules.Station) (*Plan, error) {
 		p.horizon = &h
 	}
 	for i := range p.primary {
-		p.primary[i] = -1
+		p.primary[i], p.secondary[i] = -1, -1
 	}
 	if err := p.addInstruments(); err != nil {
 		return nil, err
@@ -86,6 +89,7 @@ func NewPlan(st *rules.Station) (*Plan, error) {
 	for i := range st.Housekeeping {
 		p.column(st.Housekeeping[i].Channel)
 	}
+	p.pairUp()
 	p.setup = p.faultSetup()
 	p.base = p
 	return p, nil

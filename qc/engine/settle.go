@@ -30,6 +30,7 @@ func Settle(plan *Plan, j *Judged, episodes []fault.Episode) {
 		}
 	}
 	settleNotes(plan, j)
+	plan.chooseBest(j)
 }
 
 // settleTests gives the verdict that the tests alone come to.

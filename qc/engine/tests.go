@@ -47,6 +47,7 @@ func (p *Plan) Prepare(j *Judged, block *minute.Block, from, to int) {
 	}
 	p.pairTests(j, from, to)
 	p.uncertainty(j, from, to)
+	p.partnerTests(j, from, to)
 }
 
 // singleTests runs what needs one series alone. It begins the rows' sets of tests.

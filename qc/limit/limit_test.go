@@ -311,3 +311,29 @@ func TestFifthRoot(t *testing.T) {
 		}
 	}
 }
+
+// Two class A pyranometers of 20 W/m2 each at 800: together 28.3, with the floor of 5 28.7 (recomputed from the formula).
+func TestPartner(t *testing.T) {
+	l := rules.DefaultLimits()
+	nan := math.NaN()
+	for _, c := range []struct {
+		q    rules.Quantity
+		a, b Reading2
+		want rules.Outcome
+	}{
+		{rules.Global, Reading2{800, 20, 800}, Reading2{828, 20, 828}, rules.Pass},
+		{rules.Global, Reading2{800, 20, 800}, Reading2{829, 20, 829}, rules.Miss},
+		{rules.Global, Reading2{800, 20, 400}, Reading2{920, 20, 500}, rules.Pass}, // on a cloud's edge
+		{rules.Global, Reading2{800, 20, nan}, Reading2{920, 20, nan}, rules.Miss},
+		{rules.Global, Reading2{nan, nan, 1}, Reading2{920, 20, 1}, rules.NoValue},
+		{rules.Global, Reading2{800, 20, 1}, Reading2{nan, nan, 1}, rules.NoPartner},
+		{rules.Global, Reading2{800, 20, 1}, Reading2{800, nan, 1}, rules.NoPartner},
+		{rules.UV, Reading2{30, 0, 30}, Reading2{30.2, 0, 30.2}, rules.Pass},
+		{rules.UV, Reading2{30, 0, 30}, Reading2{30.3, 0, 30.3}, rules.Miss},
+		{rules.PAR, Reading2{500, 0, 500}, Reading2{509, 0, 509}, rules.Pass},
+	} {
+		if got := Partner(c.q, &c.a, &c.b, &l); got != c.want {
+			t.Errorf("%s %v %v: %v, want %v", c.q, c.a, c.b, got, c.want)
+		}
+	}
+}

@@ -23,14 +23,23 @@ type Request struct {
 }
 
 // CSV writes minutes as CSV: `time` (RFC 3339, the minute's start), then for each quantity q of the station q, q_verdict, q_reasons, q_measured and
-// q_u95, then further columns. A value that is not there is empty. Weather is not corrected, so its q_measured is q. It gives the number of
+// q_u95, then further columns, among them those
+// of a second instrument and of a best value where the minutes have them. A value that is not there is empty. Weather is not corrected, so its q_measured is q. It gives the number of
 // minutes written.
 func CSV(w io.Writer, a *store.Archive, r Request) (rows int, err error) {
 	quantities, err := quantitiesOf(a, r)
 	if err != nil {
 		return 0, err
 	}
-	columns := csvColumns(quantities)
+	second, err := withVerdict(a, r, quantities, "_secondary")
+	if err != nil {
+		return 0, err
+	}
+	best, err := withVerdict(a, r, quantities, "_best")
+	if err != nil {
+		return 0, err
+	}
+	columns := csvColumns(quantities, second, best)
 	var names []string
 	for _, c := range columns {
 		names = append(names, c.source)
@@ -61,9 +70,21 @@ func quantitiesOf(a *store.Archive, r Request) ([]rules.Quantity, error) {
 			asked = append(asked, q)
 		}
 	}
+	has, err := withVerdict(a, r, asked, "")
+	var list []rules.Quantity
+	for i, q := range asked {
+		if has[i] {
+			list = append(list, q)
+		}
+	}
+	return list, err
+}
+
+// withVerdict says for which of the quantities the minutes asked for have a verdict in the columns of a suffix.
+func withVerdict(a *store.Archive, r Request, asked []rules.Quantity, suffix string) ([]bool, error) {
 	var names []string
 	for _, q := range asked {
-		names = append(names, q.String()+"_verdict")
+		names = append(names, q.String()+suffix+"_verdict")
 	}
 	has := make([]bool, len(asked))
 	err := a.ReadMinutes(r.Station, r.From, r.To, names, func(rs *store.Rows) error {
@@ -76,13 +97,7 @@ func quantitiesOf(a *store.Archive, r Request) ([]rules.Quantity, error) {
 		}
 		return nil
 	})
-	var list []rules.Quantity
-	for i, q := range asked {
-		if has[i] {
-			list = append(list, q)
-		}
-	}
-	return list, err
+	return has, err
 }
 
 type csvColumn struct {
@@ -91,7 +106,8 @@ type csvColumn struct {
 	kind           table.Kind
 }
 
-func csvColumns(quantities []rules.Quantity) []csvColumn {
+// csvColumns lists the columns of the quantities; second and best say which of them have a second instrument and a best value.
+func csvColumns(quantities []rules.Quantity, second, best []bool) []csvColumn {
 	var first, more []csvColumn
 	all := table.MinuteColumns()
 	find := func(name string) (csvColumn, bool) {
@@ -118,6 +134,17 @@ func csvColumns(quantities []rules.Quantity) []csvColumn {
 				more = append(more, c)
 			}
 		}
+	}
+	group := func(q rules.Quantity, has bool, suffixes ...string) {
+		for _, suffix := range suffixes {
+			if c, ok := find(q.String() + suffix); ok && has {
+				more = append(more, c)
+			}
+		}
+	}
+	for i, q := range quantities {
+		group(q, best[i], "_best", "_best_verdict", "_best_u95", "_best_source")
+		group(q, second[i], "_secondary", "_secondary_verdict", "_secondary_reasons", "_secondary_measured", "_secondary_u95")
 	}
 	for _, name := range []string{"records", "zenith_deg", "apparent_zenith_deg", "azimuth_deg", "extraterrestrial", "clear_global", "clear_direct",
 		"clear_diffuse", "clear_lw_down"} {

@@ -114,7 +114,8 @@ func listMinuteColumns() []Column {
 	for q := rules.Quantity(0); int(q) < rules.QuantityCount; q++ {
 		list = append(list, quantityColumns(q)...)
 	}
-	return list
+	list = appendSecondary(list)
+	return appendBest(list)
 }
 
 // udunits are the quantities' units in UDUNITS form.

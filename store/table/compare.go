@@ -192,6 +192,14 @@ func (c *comparison) quantity(q rules.Quantity) Change {
 	for i := first + offReasons; i < first+width; i++ {
 		c.mark(details, i)
 	}
+	if int(q) < rules.RadiationCount {
+		for i := range secondWidth {
+			c.mark(details, SecondaryColumn(q)+i)
+		}
+		for i := range bestWidth {
+			c.mark(details, BestColumn(q)+i)
+		}
+	}
 	for k, xb := range valueB {
 		xa := valueA[k]
 		vb, va := verdicts[codeB[k]+1], verdicts[codeA[k]+1]

@@ -6,7 +6,8 @@ import (
 	"fluxwarden/rules"
 )
 
-// FromJudged gives the rows that the archive stores of a judged day, rounded. Series that are not primary are not stored.
+// FromJudged gives the rows that the archive stores of a judged day, rounded. Of a quantity with
+// more than two instruments the primary and the first other are stored.
 func FromJudged(j *engine.Judged) *Table {
 	t := NewMinutes(j.Rows)
 	Append(t, j, 0)
@@ -43,21 +44,14 @@ func Append(t *Table, j *engine.Judged, at int) {
 			t.series(q, at, n, s)
 		}
 	}
+	t.secondAndBest(at, j)
 }
 
 func (t *Table) series(q rules.Quantity, at, n int, s *engine.Series) {
 	c := QuantityColumn(q)
 	t.round(c+offValue, at, s.Value[:n])
-	verdicts := t.codes(c + offVerdict)[at : at+n]
-	for r, v := range s.Verdict[:n] {
-		verdicts[r] = int32(v)
-	}
-	t.Vectors[c+offVerdict].Dict = verdictDict
-	notes := s.Notes
-	if notes == nil {
-		notes = make([]rules.NoteSet, n)
-	}
-	t.reasons(c+offReasons, at, s.Missed[:n], s.Faults[:n], notes[:n])
+	t.verdicts(c+offVerdict, at, s.Verdict[:n])
+	t.reasons(c+offReasons, at, s.Missed[:n], s.Faults[:n], notesOf(s)[:n])
 	if int(q) >= rules.RadiationCount {
 		return
 	}
@@ -70,6 +64,14 @@ func (t *Table) series(q rules.Quantity, at, n int, s *engine.Series) {
 	for r := range n {
 		counts[r], missed[r], passed[r] = int32(s.N[r]), int32(s.Missed[r]), int32(s.Passed[r])
 	}
+}
+
+// notesOf is what people have noted of the series' minutes.
+func notesOf(s *engine.Series) []rules.NoteSet {
+	if s.Notes == nil {
+		return make([]rules.NoteSet, len(s.Missed))
+	}
+	return s.Notes
 }
 
 var verdictDict = func() (d []string) {
