@@ -75,6 +75,9 @@ func (st *Station) canonical() string {
 		c.line("instrument", in.ID, in.Measures.String(), in.Class, in.Primary, in.Shaded)
 		p := &in.Input
 		c.line("input", p.Signal, p.SignalUnit, p.Irradiance, p.Case, p.CaseUnit, p.Dome, p.DomeUnit, p.SignalMin, p.SignalMax)
+		for _, b := range in.StatusBits {
+			c.line("status", in.Status, float64(b.Bit), b.Test.String(), b.Clear)
+		}
 		for k := range in.Calibrations {
 			cal := &in.Calibrations[k]
 			c.line("calibration", cal.From, cal.To, cal.Serial, cal.SensitivityUVPerW, cal.UncertaintyPercent, cal.Scale, cal.K1, cal.K2, cal.K3, cal.ZeroWm2)
@@ -88,6 +91,15 @@ func (st *Station) canonical() string {
 	}
 	for _, h := range st.Housekeeping {
 		c.line("housekeeping", h.Name, h.Channel, h.Low, h.High)
+		if h.Kind != houseKindOf(h.Name) {
+			c.line("house_kind", h.Kind.String())
+		}
+		for _, x := range h.Values {
+			c.line("house_value", x)
+		}
+		if h.OfGiven {
+			c.line("house_of", strings.Join(h.Of, " "))
+		}
 	}
 	c.line("sky", st.Sky.Model, st.Sky.OzoneCm, st.Sky.WaterCm, st.Sky.AOD, st.Sky.Albedo)
 	for i := range limitTable {

@@ -30,9 +30,9 @@ func parsed(t testing.TB, text string) *Site {
 // When it is meant, raise digestVersion and put the new ones here.
 func TestGoldenDigests(t *testing.T) {
 	for file, want := range map[string]string{
-		"northmoor.yaml": "9b1f3d5fa00247b6f37800be674b93f71bd7f6519a7e1457af7783e25ec3fd21",
-		"saltpan.yaml":   "c35f3b88a1a5341b649d30d91143df8dcc6b75da427b419ef90194f8b25fa55c",
-		"coralkey.yaml":  "22222460c0c277f2f0444df409d6c345c719cdbac90779d54f097d10a413c5c4",
+		"northmoor.yaml": "5ba28230fdee696e0abead6fa3cc9acb15f44944bfe183423beb1ce7a5a88a75",
+		"saltpan.yaml":   "40b140792a0b5bd00a5923c203853830570fd3249391540096266803cfd89c69",
+		"coralkey.yaml":  "0985148b5fb1d1260293314f9c8efe6d31fa835022ea9cf4fc0be0c55e0d6b06",
 	} {
 		if got := parsed(t, read(t, file)).Digest; got != want {
 			t.Errorf("%s has the digest %s, want %s", file, got, want)
@@ -132,8 +132,8 @@ func TestEveryFieldIsDecided(t *testing.T) {
 		of   any
 		want int
 	}{
-		"Station": {Station{}, 15}, "Products": {Products{}, 1}, "Timing": {Timing{}, 2}, "Instrument": {Instrument{}, 9}, "Input": {Input{}, 9}, "Calibration": {Calibration{}, 13},
-		"WeatherInput": {WeatherInput{}, 3}, "HousekeepingInput": {HousekeepingInput{}, 4}, "Sky": {Sky{}, 5},
+		"Station": {Station{}, 15}, "Products": {Products{}, 1}, "Timing": {Timing{}, 2}, "Instrument": {Instrument{}, 11}, "Input": {Input{}, 9}, "Calibration": {Calibration{}, 13},
+		"WeatherInput": {WeatherInput{}, 3}, "HousekeepingInput": {HousekeepingInput{}, 8}, "Sky": {Sky{}, 5},
 	} {
 		if got := reflect.TypeOf(c.of).NumField(); got != c.want {
 			t.Errorf("%s has %d fields, the digest knows %d: add the new one to canonical in digest.go if it can change a row, then put the count right here", name, got, c.want)

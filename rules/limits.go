@@ -32,6 +32,8 @@ type Limits struct {
 	AirTemperatureMinC, AirTemperatureMaxC                  float64
 	BodyMinC, BodyMaxC, BodyFromAirK                        float64
 	GapMinutes                                              float64
+	FanLowRPM, FanHighRPM, TrackerLow                       float64
+	SupplyLowV, SupplyHighV, PrecipitationHighMM            float64
 	PartnerFactor, PartnerFloorWm2, PartnerMoved            float64
 }
 
@@ -129,6 +131,12 @@ func buildLimitTable() []Limit {
 	one("partner.factor", 1, "1", 0, 10, srcOwn+": times the two instruments' own expanded uncertainty together", func(l *Limits) *float64 { return &l.PartnerFactor })
 	one("partner.floor", 5, "W/m2", 0, 200, srcOwn, func(l *Limits) *float64 { return &l.PartnerFloorWm2 })
 	one("partner.moved", 0.25, "1", 0, 2, srcOwn+": share of the change since the minute before that two instruments may differ by on the edge of a cloud", func(l *Limits) *float64 { return &l.PartnerMoved })
+	one("fan.low", 500, "rpm", 0, 1e6, srcPractice+": the fans of domes turn at 1000 to 8000 rpm; half of the least", func(l *Limits) *float64 { return &l.FanLowRPM })
+	one("fan.high", 10000, "rpm", 0, 1e6, srcPractice+": above any of them", func(l *Limits) *float64 { return &l.FanHighRPM })
+	one("tracker.low", 1, "1", -1e6, 1e6, srcPractice+": a mode of nothing is a tracker that stands; give the entry its sound values where that differs", func(l *Limits) *float64 { return &l.TrackerLow })
+	one("supply.low", 10.8, "V", 0, 1000, srcPractice+": a lead battery of 12 V is empty", func(l *Limits) *float64 { return &l.SupplyLowV })
+	one("supply.high", 16, "V", 0, 1000, srcPractice+": charging a lead battery of 12 V ends below", func(l *Limits) *float64 { return &l.SupplyHighV })
+	one("precipitation.high", 32, "mm", 0, 1000, "the most measured in a minute is about 31 mm (from memory)", func(l *Limits) *float64 { return &l.PrecipitationHighMM })
 	return t
 }
 

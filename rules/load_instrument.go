@@ -28,6 +28,7 @@ func (r *reader) instrument(v *value, station string, use channelUse) Instrument
 		r.take(use, v.at("input").at(key), station, "instrument "+in.ID+" "+key)
 	}
 	in.Input = r.input(v.at("input"), in.Measures, path)
+	r.status(v.at("status"), station, path, use, &in)
 	in.Calibrations = r.calibrations(v.at("calibrations"), &in, v, path)
 	return in
 }

@@ -59,7 +59,7 @@ func (r *reader) station(v *value, limits Limits) Station {
 		r.primaries(&st, list, path)
 	}
 	st.Weather = r.weather(v.at("weather"), path, use)
-	st.Housekeeping = r.housekeeping(v.at("housekeeping"), path)
+	st.Housekeeping = r.housekeeping(v.at("housekeeping"), path, &st)
 	st.Sky = sky(v.at("sky"))
 	return st
 }
@@ -189,7 +189,7 @@ func (r *reader) weather(v *value, path string, use channelUse) []WeatherInput {
 	return inputs
 }
 
-func (r *reader) housekeeping(v *value, path string) []HousekeepingInput {
+func (r *reader) housekeeping(v *value, path string, st *Station) []HousekeepingInput {
 	if v == nil {
 		return nil
 	}
@@ -204,7 +204,9 @@ func (r *reader) housekeeping(v *value, path string) []HousekeepingInput {
 			continue
 		}
 		r.reserved(channel.node, channel.text, path)
-		in := HousekeepingInput{Name: name, Channel: channel.text, Low: more.numberAt("low", math.NaN()), High: more.numberAt("high", math.NaN())}
+		in := HousekeepingInput{Name: name, Channel: channel.text, Low: more.numberAt("low", math.NaN()), High: more.numberAt("high", math.NaN()),
+			Kind: houseKindOf(name)}
+		r.houseMore(more, path+" housekeeping "+name, st, &in)
 		if in.Low > in.High {
 			r.problem(more.at("low").node, "write the smaller one as low", "%s housekeeping %s: low %g is above high %g", path, name, in.Low, in.High)
 		}
@@ -244,7 +246,8 @@ func (r *reader) limits(rules *value, to *Limits, path string) {
 		}
 	}
 	for _, pair := range [][2]string{{"possible.lw_down.low", "possible.lw_down.high"}, {"possible.lw_up.low", "possible.lw_up.high"},
-		{"rare.lw_down.low", "rare.lw_down.high"}, {"rare.lw_up.low", "rare.lw_up.high"}, {"air_temperature.low", "air_temperature.high"}, {"body.low", "body.high"}} {
+		{"rare.lw_down.low", "rare.lw_down.high"}, {"rare.lw_up.low", "rare.lw_up.high"}, {"air_temperature.low", "air_temperature.high"}, {"body.low", "body.high"},
+		{"fan.low", "fan.high"}, {"supply.low", "supply.high"}} {
 		low, _ := FindLimit(pair[0])
 		high, _ := FindLimit(pair[1])
 		if a, b := *low.field(to), *high.field(to); (v.given(pair[0]) || v.given(pair[1])) && a >= b {

@@ -123,7 +123,7 @@ func TestNorthmoor(t *testing.T) {
 	if l := st.Instruments[4]; !l.Shaded || l.Input.CaseUnit != "degC" || l.Input.Dome != "l1_dome_c" || l.Calibrations[0].K3 != 2.9 {
 		t.Errorf("L1: %+v", l)
 	}
-	if h := st.Housekeeping; len(h) != 3 || h[0] != (HousekeepingInput{"fan", "g1_fan_rpm", 500, 4000}) || !math.IsNaN(h[1].High) || h[2].Channel != "trk_mode" {
+	if h := st.Housekeeping; len(h) != 3 || h[0].Name != "fan" || h[0].Channel != "g1_fan_rpm" || h[0].Low != 500 || h[0].High != 4000 || h[0].Kind != FanHouse || !math.IsNaN(h[1].High) || h[2].Channel != "trk_mode" {
 		t.Errorf("housekeeping: %+v", h)
 	}
 	if w := st.Weather; len(w) != 4 || w[0] != (WeatherInput{AirTemperature, "ta_c", "degC"}) {

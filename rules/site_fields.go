@@ -123,6 +123,10 @@ var stationField = field{kind: objectKind, doc: "A place with a position and ins
 			{key: "channel", kind: nameKind, required: true, form: channelForm, doc: "Channel that is read."},
 			{key: "low", kind: numberKind, low: -1e9, high: 1e9, doc: "Least sound value, in the channel's own unit."},
 			{key: "high", kind: numberKind, low: -1e9, high: 1e9, doc: "Largest sound value, in the channel's own unit."},
+			{key: "values", kind: numbersKind, least: 1, most: 16, low: -1e9, high: 1e9, doc: "The only sound values, such as the modes in which a tracker follows the sun."},
+			{key: "of", kind: listKind, most: 64, doc: "Instruments that a value out of the range is held against; without it those that the kind concerns.",
+				item: &field{kind: nameKind, form: instrumentForm}},
+			{key: "kind", kind: choiceKind, choices: houseNames[:], doc: "What the channel tells of; without it what the entry's name says: fan, tracker, supply, precipitation, or one of them with _ and more."},
 		}}},
 	{key: "sky", kind: objectKind, doc: "The clear-sky model and what it assumes where nothing is learnt yet.", fields: []field{
 		{key: "model", kind: choiceKind, choices: []string{"bird", "ineichen", "solis"}, fallback: "bird", doc: "Bird & Hulstrom 1981, Ineichen & Perez 2002 or the simplified Solis (Ineichen 2008)."},
@@ -159,6 +163,14 @@ var instrumentField = field{kind: objectKind, doc: "One instrument, or the place
 		{key: "dome", kind: nameKind, form: channelForm, doc: "Channel of a pyrgeometer's dome temperature."},
 		{key: "dome_unit", kind: choiceKind, choices: temperatureUnits, fallback: "degC", doc: "Unit of it."},
 		{key: "range", kind: numbersKind, least: 2, most: 2, low: -1e7, high: 1e7, doc: "Least and largest value the logger can give, in the unit of the signal."},
+	}},
+	{key: "status", kind: objectKind, doc: "The status word of a digital instrument.", fields: []field{
+		{key: "channel", kind: nameKind, required: true, form: channelForm, doc: "Channel of the word, a whole number of at most 32 bits."},
+		{key: "bits", kind: listKind, required: true, least: 1, most: 32, doc: "What the bits mean.", item: &field{kind: objectKind, fields: []field{
+			{key: "bit", kind: numberKind, required: true, low: 0, high: 31, doc: "Number of the bit; 0 is the lowest."},
+			{key: "test", kind: choiceKind, required: true, choices: statusTests, doc: "The test that misses: signal rejects the value, the others question or report."},
+			{key: "when", kind: choiceKind, choices: []string{"set", "clear"}, fallback: "set", doc: "Which state of the bit makes it miss."},
+		}}},
 	}},
 	{key: "calibrations", kind: listKind, least: 1, most: 200, doc: "The calibration history.", item: &calibrationField},
 }}

@@ -79,6 +79,8 @@ type Instrument struct {
 	Input        Input
 	Calibrations []Calibration // sorted by From; no overlap
 	Shaded       bool          // a pyrgeometer kept out of the beam
+	Status       string        // channel of the status word of a digital instrument; empty if there is none
+	StatusBits   []StatusBit   // in the file's order
 	Line         int
 }
 
@@ -116,8 +118,12 @@ type WeatherInput struct {
 	Unit     string // "degC", "K", "%", "1", "hPa", "Pa", "m/s"
 }
 
-// A HousekeepingInput is one housekeeping channel with its sound range; NaN is unbounded.
+// A HousekeepingInput is one housekeeping channel with its sound range; NaN is what the station's limits say for its kind.
 type HousekeepingInput struct {
 	Name, Channel string
 	Low, High     float64
+	Kind          HouseKind
+	Values        []float64 // the only sound values; empty where the range decides
+	Of            []string  // ids of the instruments that a value out of the range is held against
+	OfGiven       bool      // Of is from the site file, and may be empty there
 }

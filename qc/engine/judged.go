@@ -29,8 +29,12 @@ type Judged struct {
 	Series []Series // one an instrument, in the site file's order, then the weather
 	Best   []Best   // one a quantity that has more than one source; filled by Settle
 
-	sun  sunDay
-	beam []float64 // direct normal irradiance that uncertainties are worked out with, W/m2
+	HouseNames []string // of the housekeeping channels that are tested; nil where there are none
+	HouseOut   []uint32 // those out of their sound range, a bit each in the order of HouseNames
+
+	house []houseRow // what the diagnosis is told of it; nil where there is none
+	sun   sunDay
+	beam  []float64 // direct normal irradiance that uncertainties are worked out with, W/m2
 }
 
 // A Series is one instrument's judged minutes, or one weather quantity's.
@@ -92,6 +96,7 @@ func newJudged(p *Plan, day int64) *Judged {
 		j.Series[i] = p.series[i].columns(&f)
 	}
 	j.Best = p.bestColumns(&f)
+	p.house.columns(j)
 	j.reset(p, day)
 	return j
 }

@@ -46,7 +46,7 @@ func (j *Judger) Begin(day int64) *Judged {
 func (j *Judger) BeginWith(judged *Judged) *Judged {
 	j.judged, j.block = judged, nil
 	j.global, j.direct, j.diffuse = j.measured(rules.Global), j.measured(rules.Direct), j.measured(rules.Diffuse)
-	j.minute = fault.Minute{BodyC: math.NaN(), NetWm2: math.NaN()}
+	j.minute = fault.Minute{BodyC: math.NaN(), NetWm2: math.NaN(), PrecipitationMM: math.NaN()}
 	for q := range j.minute.Value {
 		j.minute.Value[q] = math.NaN()
 	}
@@ -168,6 +168,9 @@ func (j *Judger) watch(r int) {
 		if s.Quantity == rules.LWDown {
 			m.BodyC, m.NetWm2 = s.bodyC[r], s.net[r]
 		}
+	}
+	if d.house != nil {
+		d.house[r].tell(m)
 	}
 	j.watcher.Minute(m)
 	d.ClearGlobalWm2[r], d.ClearDirectWm2[r] = RoundIrradiance(m.Clear[rules.Global]), RoundIrradiance(m.Clear[rules.Direct])

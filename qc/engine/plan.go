@@ -27,6 +27,7 @@ type Plan struct {
 	primary     [rules.QuantityCount]int // where the primary series of each quantity stands, -1 if there is none
 	secondary   [rules.QuantityCount]int // where the first series beside the primary stands, -1 if there is none
 	best        []bestPlan
+	house       housePlan
 	nothing     []float64       // a column without a value
 	passes      []rules.Outcome // a column of passes
 	setup       *fault.Setup
@@ -45,6 +46,7 @@ type seriesPlan struct {
 	signal        int // block columns; -1 where there is none
 	bodyCol       int
 	domeCol       int
+	statusCol     int
 	microvolts    float64 // in one unit of the signal
 	periods       []calibrationPeriod
 	unstated      *uncertainty.Budget // where no calibration is stated; nil where the value is absent then
@@ -81,15 +83,13 @@ func NewPlan(st *rules.Station) (*Plan, error) {
 	}
 	for i := range st.Weather {
 		w := &st.Weather[i]
-		s := seriesPlan{id: w.Channel, quantity: w.Quantity, weather: w, primary: true, signal: p.column(w.Channel), bodyCol: -1, domeCol: -1}
+		s := seriesPlan{id: w.Channel, quantity: w.Quantity, weather: w, primary: true, signal: p.column(w.Channel), bodyCol: -1, domeCol: -1, statusCol: -1}
 		if err := p.add(s); err != nil {
 			return nil, err
 		}
 	}
-	for i := range st.Housekeeping {
-		p.column(st.Housekeeping[i].Channel)
-	}
 	p.pairUp()
+	p.planHouse()
 	p.setup = p.faultSetup()
 	p.base = p
 	return p, nil
@@ -122,7 +122,7 @@ func (p *Plan) addInstruments() error {
 			signal = in.Input.Signal
 		}
 		err := p.add(seriesPlan{id: in.ID, quantity: in.Measures, instrument: in, primary: in.Primary || counts[in.Measures] == 1,
-			signal: p.column(signal), bodyCol: p.column(in.Input.Case), domeCol: p.column(in.Input.Dome),
+			signal: p.column(signal), bodyCol: p.column(in.Input.Case), domeCol: p.column(in.Input.Dome), statusCol: p.column(in.Status),
 			microvolts: signalMicrovolts(in.Input.SignalUnit), periods: periodsOf(in), unstated: unstatedBudget(in),
 			zeroAllowance: limit.NightZeroAllowance(in.Class, in.Measures, &p.Station.Limits)})
 		if err != nil {
@@ -178,6 +178,7 @@ func (p *Plan) faultSetup() *fault.Setup {
 		}
 		u.Instruments[q] = in
 	}
+	p.house.tell(p, u)
 	return u
 }
 

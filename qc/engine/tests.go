@@ -45,6 +45,8 @@ func (p *Plan) Prepare(j *Judged, block *minute.Block, from, to int) {
 	for i := range p.series {
 		p.singleTests(j, &p.series[i], &j.Series[i], block, from, to)
 	}
+	p.houseTests(j, block, from, to)
+	p.statusTests(j, block, from, to)
 	p.pairTests(j, from, to)
 	p.uncertainty(j, from, to)
 	p.partnerTests(j, from, to)

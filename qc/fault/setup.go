@@ -14,8 +14,20 @@ type Setup struct {
 	ElevationM  float64
 	GapMinutes  int64 // no record for so long is a gap
 	Instruments [rules.RadiationCount]Instrument
-	Notes       *rules.NoteBook // of the station, in force; nil is none
+
+	HasTrackerMode, HasSupply, HasPrecipitation bool // the station sends them
+
+	Notes *rules.NoteBook // of the station, in force; nil is none
 }
+
+// A House is what a housekeeping channel says: whether it is in its sound range.
+type House uint8
+
+const (
+	HouseUnknown House = iota // there is no such channel, or it said nothing this minute
+	HouseSound
+	HouseOut
+)
 
 // An Instrument is the primary one of a quantity.
 type Instrument struct {
@@ -25,6 +37,7 @@ type Instrument struct {
 	Volts             bool    // it sends a voltage; SensitivityUVPerW turns it into irradiance
 	SensitivityUVPerW float64 // 1 where the logger converts
 	HasBody           bool    // its body temperature is sent
+	HasFan            bool    // the speed of its fan is sent
 }
 
 // A Minute is what the diagnosis is told of one minute. Values are as measured, before any correction, NaN where absent.
@@ -42,6 +55,10 @@ type Minute struct {
 	Run         [rules.QuantityCount]int  // minutes on end with the very same value
 	BodyC       float64                   // of the primary lw_down
 	NetWm2      float64                   // its thermopile signal over its sensitivity
+
+	Fan             [rules.RadiationCount]House // of the primary instruments' fans; HouseOut where one of several is
+	Tracker, Supply House
+	PrecipitationMM float64 // in the minute; NaN where not sent
 
 	Clear [rules.RadiationCount]float64 // set by Watcher.Minute: what a cloudless sky would give, NaN where not known
 }

@@ -25,6 +25,10 @@ type view struct {
 	silent     [rules.RadiationCount]bool // somebody is at work on it: see silence
 	run        [rules.QuantityCount]int
 	bodyC, net float64
+	fan        [rules.RadiationCount]House
+	tracker    House
+	supply     House
+	rainMM     float64 // in the minute; NaN where not sent
 	clear      [rules.RadiationCount]float64
 	// what the other two of global, direct and diffuse say that this one should be, at the station's own closure
 	expected [3]float64
@@ -44,7 +48,7 @@ const (
 
 func (v *view) forget() {
 	nan := math.NaN()
-	*v = view{minute: noMinute, sum: nan, bodyC: nan, net: nan}
+	*v = view{minute: noMinute, sum: nan, bodyC: nan, net: nan, rainMM: nan}
 	for i := range v.value {
 		v.value[i] = nan
 	}
@@ -68,6 +72,7 @@ func (v *view) look(w *Watcher, m *Minute) {
 	v.conflict = m.AnyConflict
 	v.value, v.marked, v.run = m.Value, m.Marked, m.Run
 	v.bodyC, v.net = m.BodyC, m.NetWm2
+	v.fan, v.tracker, v.supply, v.rainMM = m.Fan, m.Tracker, m.Supply, m.PrecipitationMM
 	w.silence(v)
 	w.base.clearSky(m)
 	v.clear = m.Clear

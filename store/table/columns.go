@@ -115,7 +115,8 @@ func listMinuteColumns() []Column {
 		list = append(list, quantityColumns(q)...)
 	}
 	list = appendSecondary(list)
-	return appendBest(list)
+	list = appendBest(list)
+	return appendHouse(list)
 }
 
 // udunits are the quantities' units in UDUNITS form.

@@ -45,6 +45,7 @@ func Append(t *Table, j *engine.Judged, at int) {
 		}
 	}
 	t.secondAndBest(at, j)
+	t.houseOut(at, j)
 }
 
 func (t *Table) series(q rules.Quantity, at, n int, s *engine.Series) {
