@@ -41,6 +41,7 @@ func commands() []command {
 		{"budget", "what an instrument's uncertainty is made of, in one minute", cmdBudget},
 		{"lint", "check site files", cmdLint},
 		{"refused", "list, show and requeue what was refused", cmdRefused},
+		{"credentials", "who may send: make, list and revoke credentials", cmdCredentials},
 		{"simulate", "write a synthetic station's readings with labelled faults", cmdSimulate},
 		{"version", "print the version", func([]string) int { fmt.Println("fluxwarden", version); return exitOK }},
 	}
@@ -68,7 +69,7 @@ func usage() {
 	var b strings.Builder
 	b.WriteString("example: fluxwarden judge --site site.yaml --archive ./archive readings.csv\n\n")
 	for _, c := range commands() {
-		fmt.Fprintf(&b, "  %-9s %s\n", c.name, c.about)
+		fmt.Fprintf(&b, "  %-11s %s\n", c.name, c.about)
 	}
 	b.WriteString("\nfluxwarden COMMAND --help lists a command's flags.\n")
 	fmt.Fprint(os.Stderr, b.String())

@@ -1,14 +1,17 @@
 package broker
 
 import (
+	"bytes"
 	"context"
 	"crypto/tls"
 	"fmt"
 	"math/rand/v2"
+	"os"
 	"time"
 
 	"github.com/nats-io/nats.go"
 	"github.com/nats-io/nats.go/jetstream"
+	"github.com/nats-io/nkeys"
 )
 
 const (
@@ -31,7 +34,7 @@ type State struct {
 type ConnectSettings struct {
 	URL         string      // nats://host:port, several with commas; not used with Embedded
 	Embedded    *Embedded   // connect inside the process
-	Credentials string      // file with a JWT and its key; optional
+	Credentials string      // file of a secret (Secret), or with a JWT and its key; optional
 	TLS         *tls.Config // optional
 	Name        string      // of this connection, for the broker's own lists
 	OnState     func(State) // called from the client's goroutines; optional
@@ -68,7 +71,11 @@ func Connect(s ConnectSettings) (*Broker, error) {
 		options = append(options, nats.Secure(s.TLS))
 	}
 	if s.Credentials != "" {
-		options = append(options, nats.UserCredentials(s.Credentials))
+		who, err := credentialsOption(s.Credentials)
+		if err != nil {
+			return nil, err
+		}
+		options = append(options, who...)
 	}
 	url := s.URL
 	if s.Embedded != nil {
@@ -85,6 +92,42 @@ func Connect(s ConnectSettings) (*Broker, error) {
 		return nil, fmt.Errorf("broker: jetstream: %w", err)
 	}
 	return &Broker{conn, js}, nil
+}
+
+// credentialsOption reads either kind of file: ours, or that of a broker with accounts of its own.
+func credentialsOption(path string) ([]nats.Option, error) {
+	text, err := os.ReadFile(path)
+	if err != nil {
+		return nil, fmt.Errorf("credentials: %w", err)
+	}
+	if bytes.Contains(text, []byte("-----BEGIN NATS USER JWT-----")) {
+		return []nats.Option{nats.UserCredentials(path)}, nil
+	}
+	secret, err := parseSecret(path, text)
+	if err != nil {
+		return nil, err
+	}
+	return secret.options()
+}
+
+// options are those of a connection that shows the secret, and has its inboxes where a station may hear answers.
+func (s Secret) options() ([]nats.Option, error) {
+	var options []nats.Option
+	if s.Station != "" {
+		options = append(options, nats.CustomInboxPrefix(AnswerPrefix+s.Station))
+	}
+	if s.Password != "" {
+		return append(options, nats.UserInfo(s.Name, s.Password)), nil
+	}
+	pair, err := nkeys.FromSeed([]byte(s.Seed))
+	if err != nil {
+		return nil, fmt.Errorf("credentials: %s: the seed is not one of an nkey", s.Name)
+	}
+	public, err := pair.PublicKey()
+	if err != nil {
+		return nil, fmt.Errorf("credentials: %s: the seed is not one of an nkey", s.Name)
+	}
+	return append(options, nats.Nkey(public, pair.Sign)), nil
 }
 
 // Connected says whether the broker answers now.

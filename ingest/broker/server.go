@@ -1,7 +1,9 @@
 package broker
 
 import (
+	"cmp"
 	"context"
+	"crypto/tls"
 	"errors"
 	"fmt"
 	"log/slog"
@@ -23,22 +25,31 @@ const (
 	connectionsMax   = 8192
 	pingInterval     = 10 * time.Second
 	clientPendingMax = 64 << 20
+
+	// How long a client may take to say who it is, and for TLS. A slow radio link needs some seconds.
+	authTimeoutSeconds = 10
+	tlsTimeoutSeconds  = 10
 )
 
 // EmbeddedSettings are what the embedded server is given. StoreDir and StoreBytes are needed.
 type EmbeddedSettings struct {
-	Name       string // of the server; empty is "fluxwarden"
-	StoreDir   string // made where it is absent
-	Listen     bool   // take TCP connections; without it there are only those of this process
-	Host       string // to listen on; empty is 127.0.0.1
-	Port       int    // to listen on; 0 is any free one
-	StoreBytes int64  // all streams together; the streams' own bounds must fit in
+	Name       string      // of the server; empty is "fluxwarden"
+	StoreDir   string      // made where it is absent
+	Listen     bool        // take TCP connections; without it there are only those of this process
+	Host       string      // to listen on; empty is 127.0.0.1
+	Port       int         // to listen on; 0 is any free one
+	StoreBytes int64       // all streams together; the streams' own bounds must fit in
+	Access     *Access     // who may speak; nil: whoever comes from loopback
+	TLS        *tls.Config // nil: none
 	Log        *slog.Logger
+
+	authSeconds float64 // for a client to say who it is; 0 is authTimeoutSeconds
 }
 
 // Embedded is a NATS server in this process, with JetStream on disk and every write synced.
 type Embedded struct {
 	server *server.Server
+	access *Access
 	unlock func()
 }
 
@@ -55,15 +66,21 @@ func StartEmbedded(ctx context.Context, s EmbeddedSettings) (*Embedded, error) {
 	if err != nil {
 		return nil, fmt.Errorf("broker: store directory %s: %w", s.StoreDir, err)
 	}
+	if s.Access == nil {
+		s.Access, _ = OpenAccess(AccessSettings{Anonymous: true}) // without a book it cannot fail
+	}
 	srv, err := server.NewServer(embeddedOptions(s))
 	if err != nil {
 		unlock()
 		return nil, fmt.Errorf("broker: embedded server: %w", err)
 	}
-	log := &serverLog{log: s.Log, gone: make(chan struct{})}
-	srv.SetLogger(log, false, false)
+	log := &serverLog{log: s.Log, access: s.Access, gone: make(chan struct{})}
+	srv.SetLogger(log, true, false)
 	srv.Start()
-	e := &Embedded{srv, unlock}
+	e := &Embedded{srv, s.Access, unlock}
+	s.Access.mu.Lock()
+	s.Access.cut = e.disconnect
+	s.Access.mu.Unlock()
 	if err := waitReady(ctx, srv, log.gone); err != nil {
 		e.Stop()
 		if last := log.lastError(); last != "" {
@@ -99,6 +116,21 @@ func embeddedOptions(s EmbeddedSettings) *server.Options {
 		JetStreamMaxStore: s.StoreBytes, JetStreamMaxMemory: memoryBytesMax,
 		MaxPayload: MessageBytesMax, MaxPending: clientPendingMax, MaxConn: connectionsMax,
 		PingInterval: pingInterval, NoSigs: true, NoLog: false,
+		CustomClientAuthentication: s.Access, AlwaysEnableNonce: true, AuthTimeout: cmp.Or(s.authSeconds, authTimeoutSeconds),
+		TLSConfig: s.TLS, TLSTimeout: tlsTimeoutSeconds,
+	}
+}
+
+// disconnect ends the connections of credentials that hold no more, by name or nkey.
+func (e *Embedded) disconnect(gone map[string]bool) {
+	list, err := e.server.Connz(&server.ConnzOptions{Username: true, Limit: 2 * connectionsMax, State: server.ConnOpen})
+	if err != nil {
+		return
+	}
+	for _, c := range list.Conns {
+		if gone[c.AuthorizedUser] {
+			_ = e.server.DisconnectClientByID(c.Cid) // an error says that it has gone already
+		}
 	}
 }
 
@@ -127,7 +159,12 @@ func (e *Embedded) URL() string {
 }
 
 // InProcess is the option that connects to the server without a socket.
-func (e *Embedded) InProcess() nats.Option { return nats.InProcessServer(e.server) }
+func (e *Embedded) InProcess() nats.Option {
+	return func(o *nats.Options) error {
+		o.User, o.Password = houseName, e.access.house
+		return nats.InProcessServer(e.server)(o)
+	}
+}
 
 // Stop ends the server, waits for it, and gives its directory free.
 func (e *Embedded) Stop() {

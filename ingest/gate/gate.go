@@ -77,7 +77,7 @@ func (g *Gate) Start() error {
 func (g *Gate) message(m *nats.Msg) {
 	name := strings.TrimPrefix(m.Subject, SubjectPrefix)
 	var answer func(Reply)
-	if m.Reply != "" {
+	if m.Reply != "" && answerable(name, m.Reply) {
 		answer = func(r Reply) {
 			if b, err := json.Marshal(r); err == nil {
 				_ = m.Respond(b) // a sender that hears nothing asks again
@@ -87,6 +87,13 @@ func (g *Gate) message(m *nats.Msg) {
 		g.s.Meter.Unanswered(1)
 	}
 	g.admit(name, m.Data, answer)
+}
+
+// answerable says whether an answer may go to a subject. The gate may publish anywhere and a sender may not, so it must not be
+// made to write into a stream, or an answer of its making into another station's hands.
+func answerable(station, reply string) bool {
+	return strings.HasPrefix(reply, nats.InboxPrefix) || reply == strings.TrimSuffix(broker.AnswerPrefix, ".") ||
+		strings.HasPrefix(reply, broker.AnswerPrefix+station+".")
 }
 
 // Take is the front door for senders in this process, such as one that reads MQTT or HTTP. It returns when the payload is

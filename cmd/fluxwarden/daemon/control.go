@@ -56,6 +56,7 @@ const closeGateWait = 2 * time.Second
 func (d *Daemon) Stop() error {
 	d.stopOnce.Do(func() {
 		Notify("STOPPING=1")
+		d.ways.stop()
 		if g := d.gate.Load(); g != nil {
 			ctx, cancel := context.WithTimeout(context.Background(), closeGateWait)
 			d.stopErr = g.Close(ctx)

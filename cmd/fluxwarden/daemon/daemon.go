@@ -53,6 +53,8 @@ type Daemon struct {
 	hub      *hub
 	embedded *broker.Embedded
 	broker   *broker.Broker
+	access   *broker.Access
+	ways     ways
 	gate     atomic.Pointer[gate.Gate]
 	server   *http.Server
 	address  string
@@ -93,13 +95,14 @@ func Start(ctx context.Context, c Config) (*Daemon, error) {
 	d.hub = &hub{metrics: d.metrics, onMinutes: c.OnMinutes, onEpisodes: c.OnEpisodes, stations: map[string]*stationState{}}
 	run, cancel := context.WithCancel(context.WithoutCancel(ctx))
 	d.cancel = cancel
-	for _, step := range []func(context.Context) error{d.openArchive, d.openPages, d.openBroker} {
+	for _, step := range []func(context.Context) error{d.openArchive, d.openPages, d.openAccess, d.openBroker, d.openWays} {
 		if err := step(ctx); err != nil {
 			_ = d.Stop()
 			return nil, err
 		}
 	}
 	d.done.Go(func() { d.watchDisk(run) })
+	d.done.Go(func() { d.watchAccess(run) })
 	if d.embedded != nil { // nothing can keep it waiting: what is wrong is said at once
 		if err := d.bringUp(run); err != nil {
 			_ = d.Stop()
@@ -186,7 +189,7 @@ func (d *Daemon) openBroker(ctx context.Context) error {
 	b := d.config.Settings.Broker
 	connect := broker.ConnectSettings{URL: b.URL, Credentials: b.Credentials, Name: "fluxwarden", OnState: d.brokerState}
 	if b.URL == "" {
-		s := broker.EmbeddedSettings{StoreDir: b.Store, StoreBytes: d.streams().Bytes(), Log: d.log}
+		s := broker.EmbeddedSettings{StoreDir: b.Store, StoreBytes: d.streams().Bytes(), Log: d.log, Access: d.access, TLS: d.ways.tls}
 		if b.Listen != "none" && b.Listen != "" {
 			host, port, err := splitAddress(b.Listen)
 			if err != nil {

@@ -25,6 +25,9 @@ type Settings struct {
 	CommitEvery Duration       `yaml:"commit_every"` // how often what was judged is written
 	DiskFloor   Size           `yaml:"disk_floor"`   // with less free than this, no reading is taken
 	Broker      BrokerSettings `yaml:"broker"`
+	Access      AccessSettings `yaml:"access"`
+	TLS         TLSSettings    `yaml:"tls"`
+	Ways        WaySettings    `yaml:"ways"`
 }
 
 // BrokerSettings say which broker is used. With a URL it is an external one; without, it runs in this process.
@@ -48,7 +51,8 @@ func DefaultSettings() Settings {
 	return Settings{Archive: filepath.Join(state, "archive"), Listen: "127.0.0.1:9470", Grace: Duration(worker.GraceDefault),
 		CommitEvery: Duration(worker.CommitEveryDefault), DiskFloor: 256 << 20,
 		Broker: BrokerSettings{Store: filepath.Join(state, "journal"), Listen: "127.0.0.1:4222", Journal: Size(streams.JournalBytes),
-			Refused: Size(streams.RefusedBytes), Findings: Size(streams.FindingsBytes)}}
+			Refused: Size(streams.RefusedBytes), Findings: Size(streams.FindingsBytes)},
+		Access: AccessSettings{Anonymous: "auto"}, Ways: WaySettings{HTTP: "none"}}
 }
 
 // Example is a settings file with every key and its default.
@@ -79,6 +83,9 @@ func yamlCause(err error) string {
 	text := strings.ReplaceAll(err.Error(), "yaml: unmarshal errors:\n  ", "")
 	text = strings.ReplaceAll(text, " not found in type daemon.Settings", " is not a setting")
 	text = strings.ReplaceAll(text, " not found in type daemon.BrokerSettings", " is not a setting of broker")
+	for kind, of := range map[string]string{"Access": "access", "TLS": "tls", "Way": "ways", "Edge": "edge", "Hub": "hub"} {
+		text = strings.ReplaceAll(text, " not found in type daemon."+kind+"Settings", " is not a setting of "+of)
+	}
 	return strings.ReplaceAll(strings.ReplaceAll(text, "field ", ""), "\n  ", "; ")
 }
 
@@ -96,7 +103,7 @@ func (s *Settings) Check() error {
 	case s.Broker.Journal < 1<<20:
 		return fmt.Errorf("settings: broker: journal: %v: give at least 1MiB", s.Broker.Journal)
 	}
-	return nil
+	return s.checkWays()
 }
 
 // A Duration is written with its unit: 90s, 10m.
