@@ -4,6 +4,7 @@ import (
 	"crypto/sha256"
 	"crypto/subtle"
 	"encoding/base64"
+	"fmt"
 	"log/slog"
 	"maps"
 	"net"
@@ -84,7 +85,7 @@ func (a *Access) Reload() (changed bool, err error) {
 	}
 	info, err := os.Stat(a.s.Book)
 	if err != nil {
-		return false, err
+		return false, fmt.Errorf("credentials: %w; fluxwarden credentials new makes the file", err)
 	}
 	stamp := fileStamp{info.ModTime(), info.Size()}
 	a.mu.Lock()
