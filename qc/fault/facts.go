@@ -17,6 +17,7 @@ type DayFacts struct {
 	ClearDiffuse Fact          `json:"clear_diffuse"`
 	ClearLW      Fact          `json:"clear_lw"`
 	BodyAir      [2]Fact       `json:"body_air"`
+	Kinds        KindFacts     `json:"kinds"`
 }
 
 // A gatherFacts collects a day's facts minute by minute.
@@ -30,9 +31,10 @@ type gatherFacts struct {
 	clearDiffuse histogram
 	clearLW      histogram
 	bodyAir      [2]histogram
+	kinds        gatherKinds
 }
 
-func (f *gatherFacts) reset() {
+func (f *gatherFacts) reset(w *Watcher) {
 	f.closure = newHistogram(0.5, 1.5, 0.0025)
 	for k := range f.sector {
 		f.sector[k] = newHistogram(0.5, 1.5, 0.0025)
@@ -48,10 +50,12 @@ func (f *gatherFacts) reset() {
 	for k := range f.bodyAir {
 		f.bodyAir[k] = newHistogram(-15, 15, 0.1)
 	}
+	f.kinds.reset(w)
 }
 
 // minute takes one minute's facts.
 func (f *gatherFacts) minute(w *Watcher, v *view) {
+	f.kinds.minute(w, v)
 	for k, q := range [3]rules.Quantity{rules.Global, rules.Direct, rules.Diffuse} {
 		if v.night && !w.tainted(q) {
 			f.zero[k].add(v.value[q])
@@ -111,7 +115,7 @@ func (w *Watcher) tainted(q rules.Quantity) bool {
 	id := w.setup.Instruments[q].ID
 	for i := range w.open {
 		e := &w.open[i]
-		if e.Severity != rules.Act || e.Kind == rules.DataGap {
+		if e.Severity != rules.Act || accountsForNothing.Has(e.Kind) {
 			continue
 		}
 		if e.Instrument == id || e.Instrument == Logger || e.Instrument == Tracker && (q == rules.Direct || q == rules.Diffuse) {
@@ -133,5 +137,6 @@ func (f *gatherFacts) close(w *Watcher) DayFacts {
 	for k := range f.bodyAir {
 		out.BodyAir[k] = f.bodyAir[k].fact()
 	}
+	out.Kinds = f.kinds.close(w, &out)
 	return out
 }

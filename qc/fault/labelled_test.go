@@ -2,6 +2,7 @@ package fault_test
 
 import (
 	"cmp"
+	"flag"
 	"fmt"
 	"math"
 	"slices"
@@ -22,6 +23,7 @@ type trial struct {
 	towards    float64
 	sunHour    float64 // solar hour of the first day at which it begins
 	hours      int
+	minutes    int  // besides the hours
 	jumps      bool // the stamps show the clock's jump: a hole, or stamps that come twice
 	only       synth.Climate
 }
@@ -74,7 +76,9 @@ var trials = []trial{
 	{kind: rules.ThermistorBad, instrument: "L1", sunHour: 13, hours: day},
 	{kind: rules.ThermistorBad, instrument: "L1", amount: -30, sunHour: 1, hours: day},
 	{kind: rules.Shadow, instrument: "P1", amount: 3, sunHour: 9, hours: 8 * day},
-	{kind: rules.InstrumentTouched, instrument: "G1", sunHour: 11, hours: 1},
+	{kind: rules.InstrumentTouched, instrument: "G1", sunHour: 11, minutes: 12},
+	{kind: rules.InstrumentTouched, instrument: "D1", sunHour: 13, minutes: 7},
+	{kind: rules.InstrumentTouched, instrument: "P1", sunHour: 10, minutes: 9},
 
 	// Instruments and amounts that few tests reach, at one stand.
 	{kind: rules.SignalLost, instrument: "R1", amount: 2, sunHour: 9, hours: 20, only: synth.Desert},
@@ -159,7 +163,7 @@ func (b *bed) spell(t testing.TB, f trial) spell {
 	if s.from < historyDays*minute.PerDay {
 		s.from += minute.PerDay
 	}
-	s.to = s.from + 60*f.hours
+	s.to = s.from + 60*f.hours + f.minutes
 	made := b.synth()
 	partner := ""
 	if f.kind == rules.ChannelsSwapped {
@@ -237,8 +241,9 @@ func (c *score) take(b *bed, s *spell, sound, got *run) string {
 	first := b.first * minute.PerDay
 	var hit *fault.Episode
 	var others []string
-	for _, e := range acts(got.episodes) {
+	for _, e := range got.episodes {
 		switch {
+		case e.Severity != rules.Act && (s.kind.Entry().Severity == rules.Act || e.Kind != s.kind):
 		case known[e.ID]:
 		case hit == nil && e.From >= first+int64(s.from)-grace && e.Raised >= first+int64(s.from) && e.Raised < first+int64(s.to)+60:
 			hit = &e
@@ -319,11 +324,14 @@ var floors = [rules.FaultKindCount]floor{
 	rules.SensitivityWrong:  {12, 11, 8, 2, 0},
 	rules.SensitivityDrift:  {4, 4, 4, 1, 1},
 	rules.ZeroOffset:        {8, 8, 8, 0, 0},
-	rules.VentilationLost:   {1, 1, 0, 0, 0},
+	rules.VentilationLost:   {4, 4, 4, 0, 0},
 	rules.ThermistorBad:     {8, 8, 8, 0, 0},
 	rules.Shadow:            {4, 4, 4, 0, 3},
-	rules.InstrumentTouched: {2, 2, 0, 0, 0},
+	rules.InstrumentTouched: {4, 4, 4, 0, 0},
 }
+
+// onlyTrials picks some kinds; then no floor is asked for.
+var onlyTrials = flag.String("trials", "", "kinds of the labelled trials to run; all of them otherwise")
 
 // TestSyntheticFaults puts every kind of fault into synthetic stations of four climates, after two weeks in which they were sound, and prints
 // what the diagnosis makes of it:
@@ -350,7 +358,7 @@ func TestSyntheticFaults(t *testing.T) {
 		}
 		all.join(&c)
 		table += fmt.Sprintf("%-18s %6d %6d %6d %6.1f %9d %8d %s\n", k, c.of, c.found, c.where, c.named, c.invented, c.lingers, c.delay())
-		if f := floors[k]; c.found < f.found || c.where < f.where || c.named < f.named || c.invented > f.invented || c.lingers > f.lingers {
+		if f := floors[k]; *onlyTrials == "" && (c.found < f.found || c.where < f.where || c.named < f.named || c.invented > f.invented || c.lingers > f.lingers) {
 			t.Errorf("%s: found %d, placed %d, named %v, invented %d, lingers %d; it was %+v", k, c.found, c.where, c.named, c.invented, c.lingers, f)
 		}
 	}
@@ -376,7 +384,7 @@ func labelledAt(t *testing.T, s *stand, scores *[rules.FaultKindCount]score) []s
 	sound := b.judge(history, historyDays, historyDays+trialDays, true, b.soundReading)
 	var lines []string
 	for _, f := range trials {
-		if f.only.Name != "" && f.only.Name != s.climate.Name {
+		if f.only.Name != "" && f.only.Name != s.climate.Name || *onlyTrials != "" && !strings.Contains(*onlyTrials, f.kind.String()) {
 			continue
 		}
 		p := b.spell(t, f)

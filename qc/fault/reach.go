@@ -76,7 +76,7 @@ func Restore(e *Episode, q rules.Quantity, s *Setup, measured func(rules.Quantit
 // explains says whether the open episode accounts for what the new one would say. One cause that upsets global, direct or diffuse
 // upsets how the three close, so while it is open nothing that rests on their closing is raised.
 func explains(open, e *Episode) bool {
-	if open.Severity != rules.Act || open.Kind == rules.DataGap || e.Kind == rules.DataGap {
+	if open.Severity != rules.Act || accountsForNothing.Has(open.Kind) || e.Kind == rules.DataGap {
 		return false
 	}
 	if open.Instrument == e.Instrument {
@@ -86,8 +86,11 @@ func explains(open, e *Episode) bool {
 }
 
 const (
+	// accountsForNothing are the kinds that leave an instrument nearly as it was: beside them it can have any other.
+	accountsForNothing = rules.FaultSet(1<<rules.DataGap | 1<<rules.SensitivityDrift | 1<<rules.VentilationLost | 1<<rules.InstrumentTouched)
+
 	restsOnClosing = rules.FaultSet(1<<rules.SignalLost | 1<<rules.UnitSlip | 1<<rules.PolarityReversed | 1<<rules.ChannelsSwapped |
 		1<<rules.ShadeOff | 1<<rules.PointingLost | 1<<rules.SensitivityWrong | 1<<rules.SensitivityDrift | 1<<rules.SensorTilted |
 		1<<rules.DomeWet | 1<<rules.DomeSnow | 1<<rules.DomeSoiled | 1<<rules.RangeClipped | 1<<rules.Shadow | 1<<rules.Noise)
-	upsetsClosing = restsOnClosing | rules.FaultSet(1<<rules.SignalFrozen|1<<rules.ClockShift|1<<rules.ZeroOffset)
+	upsetsClosing = restsOnClosing&^accountsForNothing | rules.FaultSet(1<<rules.SignalFrozen|1<<rules.ClockShift|1<<rules.ZeroOffset)
 )

@@ -107,6 +107,9 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 		return
 	}
 	if open < 0 && s.Score >= c.raise {
+		if c.kind == rules.Noise && (w.now.minute-s.Since <= touchLongest || h.odds <= 0) {
+			return // it may be somebody at the dome
+		}
 		if w.imbalanceEpisode() >= 0 && c.kind == rules.ZeroOffset {
 			w.becomeZeroOffset(c, s)
 			return
@@ -127,7 +130,7 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 func (w *Watcher) explainedBy(c *faultCase) bool {
 	for i := range w.open {
 		e := &w.open[i]
-		if e.Severity != rules.Act || e.Instrument != c.of(w.setup) || e.Kind == c.kind || e.Kind == rules.DataGap {
+		if e.Severity != rules.Act || e.Instrument != c.of(w.setup) || e.Kind == c.kind || accountsForNothing.Has(e.Kind) {
 			continue
 		}
 		if e.Kind == rules.RangeClipped && c.kind == rules.SignalFrozen || e.ID == w.slow.Episode {

@@ -25,7 +25,10 @@ type Watcher struct {
 	byDay, byNight caseList        // the cases that the station can have
 	slow           SlowCarry
 	sunrise        int64
-	noted          []int // notes of the setup's book that matter today
+	noted          []int       // notes of the setup's book that matter today
+	taught         []KindFacts // by the days before, ascending
+	kinds          KindCarry
+	touch          touch
 }
 
 const noMinute = int64(-1) << 40
@@ -37,6 +40,7 @@ type Carry struct {
 	Open       []Episode     `json:"open,omitempty"`
 	Runs       []RunState    `json:"runs,omitempty"`
 	Slow       SlowCarry     `json:"slow"`
+	Kinds      KindCarry     `json:"kinds"`
 }
 
 // A CarriedCase is one suspicion that is not at rest.
@@ -54,7 +58,10 @@ type CarriedCase struct {
 func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watcher {
 	w := &Watcher{setup: setup, day: day, last: noMinute}
 	w.base = learn(setup, day, facts)
-	w.facts.reset()
+	for i := range facts {
+		w.taught = append(w.taught, facts[i].Kinds)
+	}
+	w.facts.reset(w)
 	for i := range w.cases {
 		w.cases[i].Since = noMinute
 	}
@@ -67,6 +74,7 @@ func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watche
 			}
 		}
 		w.slow = carry.Slow.clone()
+		w.kinds = carry.Kinds
 	}
 	for i := range w.ring {
 		w.ring[i].forget()
@@ -108,6 +116,7 @@ func (w *Watcher) Minute(m *Minute) {
 		w.step(int(i), c, c.evidence(w, c, w.now))
 	}
 	w.watchSlow(w.now)
+	w.watchTouch(w.now)
 	w.facts.minute(w, w.now)
 }
 
@@ -155,7 +164,8 @@ func (w *Watcher) Tick(minuteUTC int64) {
 // EndDay closes the day and gives what later days may know of it.
 func (w *Watcher) EndDay() (DayFacts, Carry) {
 	facts := w.facts.close(w)
-	c := Carry{LastRecord: w.last, Open: slices.Clone(w.open), Slow: w.slow.clone()}
+	w.endKinds(&facts)
+	c := Carry{LastRecord: w.last, Open: slices.Clone(w.open), Slow: w.slow.clone(), Kinds: w.kinds}
 	for i := range w.cases {
 		if s := &w.cases[i]; s.Score > 0 || s.Since != noMinute {
 			c.Cases = append(c.Cases, CarriedCase{Case: i, Score: quantise(s.Score), Since: s.Since, Last: s.Last, For: s.For, Sum: quantise(s.Sum)})

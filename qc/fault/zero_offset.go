@@ -34,6 +34,9 @@ func zeroOffset(w *Watcher, c *faultCase, v *view) hint {
 		x -= w.base.zero[c.quantity]
 		room = 5
 	}
+	if w.ventilationDoubted(c.quantity) {
+		room = 12 // by less the still air about the dome takes it down
+	}
 	switch off := math.Abs(x); {
 	case off > room:
 		return hint{min(0.15, 0.0125*(off-room+1)), x}
