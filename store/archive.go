@@ -4,6 +4,9 @@
 //	raw/station=S/month=YYYY-MM/…parquet       readings as received
 //	minutes/station=S/month=YYYY-MM/…parquet   judged minutes; the columns are listed in store/table
 //	faults/station=S/…parquet                  episodes
+//	clean/minute/station=S/month=YYYY-MM/…     what was accepted, with the radiation budget; store/product says by which rules
+//	clean/hour/station=S/month=YYYY-MM/…       its means
+//	clean/day/station=S/year=YYYY/…  clean/month/station=S/…
 //	state/station=S/month=YYYY-MM/…jsonl       day summaries
 //	staging/ commit/ manifest/ superseded/ damaged/ rules/ archive.json   the archive's own books
 //
@@ -28,8 +31,9 @@ import (
 	"fluxwarden/store/vfs"
 )
 
-// FormatVersion is the version of the archive's books and tables. A program refuses an archive of a newer one.
-const FormatVersion = 1
+// FormatVersion is the version of the archive's books and tables. A program refuses an archive of a newer one, and raises that of an older one
+// when it opens it to write: since version 2 there are clean products, which a program that does not know them would leave behind the rows.
+const FormatVersion = 2
 
 // ErrLostPartition says that another owner has made the record that this commit wanted to make. Nothing was changed; read the last record and
 // begin anew from its positions, if the partition is still yours.
@@ -37,14 +41,17 @@ var ErrLostPartition = errors.New("the partition has another owner")
 
 // An Archive is an open archive. Its methods may be called by several goroutines; commits of one partition go one after the other.
 type Archive struct {
-	fs    vfs.FS
-	dir   string
-	lock  io.Closer // nil if read only
-	o     Options
-	parts [Partitions]*partition
+	fs     vfs.FS
+	dir    string
+	lock   io.Closer // nil if read only
+	o      Options
+	format int // of archive.json
+	parts  [Partitions]*partition
 
 	mu       sync.RWMutex
 	stations map[string]int // to partition
+
+	sites sites // rule sets that were read
 
 	treeOnce sync.Once // the tree is walked once, and only if books are missing
 	tree     []treeFile
@@ -65,8 +72,13 @@ type formatFile struct {
 	About  string `json:"about"`
 }
 
-func formatText() []byte {
-	b, _ := json.Marshal(formatFile{FormatVersion, "archive of fluxwarden; the tree under raw/, minutes/ and faults/ is plain Parquet"})
+// formatText is archive.json as the programs of a format version write it.
+func formatText(version int) []byte {
+	about := "archive of fluxwarden; the tree under raw/, minutes/, faults/ and clean/ is plain Parquet"
+	if version < 2 {
+		about = "archive of fluxwarden; the tree under raw/, minutes/ and faults/ is plain Parquet"
+	}
+	b, _ := json.Marshal(formatFile{version, about})
 	return append(b, '\n')
 }
 
@@ -105,8 +117,8 @@ func OpenForWriting(f vfs.FS, dir string, o Options) (*Archive, error) {
 
 func (a *Archive) begin() error {
 	err := a.checkFormat()
-	if errors.Is(err, fs.ErrNotExist) {
-		err = a.writeAtomic("archive.json", formatText())
+	if errors.Is(err, fs.ErrNotExist) || err == nil && a.format < FormatVersion {
+		err = a.writeAtomic("archive.json", formatText(FormatVersion))
 	}
 	if err != nil {
 		return err
@@ -161,6 +173,7 @@ func (a *Archive) checkFormat() error {
 	if ff.Format > FormatVersion {
 		return fmt.Errorf("archive %s: format %d: this program knows up to %d; use a newer program", a.dir, ff.Format, FormatVersion)
 	}
+	a.format = ff.Format
 	return nil
 }
 

@@ -7,9 +7,11 @@ import (
 	"path"
 	"runtime"
 	"slices"
+	"strings"
 	"sync"
 	"time"
 
+	"fluxwarden/qc/engine"
 	"fluxwarden/store/vfs"
 )
 
@@ -22,6 +24,7 @@ type draft struct {
 	jobs    []*job
 	removes []Removed
 	fresh   map[rawDay]bool // days that gain readings
+	made    *harvest        // what comes of the minutes beside their own files
 }
 
 type rawDay struct {
@@ -32,7 +35,8 @@ type rawDay struct {
 // A job makes one file.
 type job struct {
 	file File
-	make func() (data []byte, f File, err error)
+	make func() (data []byte, f File, err error) // no data is no file of its own: what it makes is in the harvest
+	none bool
 }
 
 // Commit writes everything the commit holds, all or nothing, and gives its record. When it returns without an error, all of it survives a
@@ -77,7 +81,7 @@ func (a *Archive) draft(c *Commit) (*draft, error) {
 		p.commit.Unlock()
 		return nil, err
 	}
-	return &draft{c: c, a: a, p: p, number: c.Base + 1}, nil
+	return &draft{c: c, a: a, p: p, number: c.Base + 1, made: &harvest{}}, nil
 }
 
 // plan lists the files to make.
@@ -131,6 +135,18 @@ func (d *draft) encodeOne(j *job) error {
 	if err != nil {
 		return fmt.Errorf("%s of %s %s: %w", j.file.Table, j.file.Station, j.file.Period, err)
 	}
+	if j.none = data == nil; j.none {
+		return nil
+	}
+	if err := d.write(&f, data); err != nil {
+		return err
+	}
+	j.file = f
+	return nil
+}
+
+// write stages a file under the name that its bytes give it.
+func (d *draft) write(f *File, data []byte) error {
 	f.SHA256, f.Bytes = sha(data), int64(len(data))
 	suffix := ".parquet"
 	if f.Table == TableState {
@@ -142,25 +158,35 @@ func (d *draft) encodeOne(j *job) error {
 	}
 	base := fmt.Sprintf("%s_e%d_c%d_%s%s", name, d.c.Epoch, d.number, f.SHA256[:12], suffix)
 	f.Path = path.Join(treeDir(f.Table, f.Station, f.Period), base)
-	f.Staged = path.Join("staging", partName(d.c.Partition), f.Table+"_"+base)
-	j.file = f
+	f.Staged = stagedPath(d.c.Partition, f.Table, base)
 	if err := d.a.mkdir(path.Dir(f.Staged)); err != nil {
 		return err
 	}
 	return d.a.writeSynced(f.Staged, data)
 }
 
+// stagedPath is where a file waits until its commit counts.
+func stagedPath(partition int, tableName, base string) string {
+	return path.Join("staging", partName(partition), strings.ReplaceAll(tableName, "/", "-")+"_"+base)
+}
+
 // finish makes the record, which is the moment of truth, and publishes.
 func (d *draft) finish() (Record, error) {
 	c, p, a := d.c, d.p, d.a
-	r := Record{Partition: c.Partition, Number: d.number, Epoch: c.Epoch, Positions: c.Positions, RulesDigest: c.RulesDigest, Program: c.Program,
-		Reason: c.Reason, Previous: p.hash, Removes: d.removes}
+	if err := d.finishProducts(); err != nil {
+		return Record{}, err
+	}
+	r := Record{Partition: c.Partition, Number: d.number, Epoch: c.Epoch, Positions: c.Positions, RulesDigest: c.RulesDigest, Program: c.Program, Judge: engine.JudgeVersion,
+		Reason: c.Reason, Previous: p.hash, Removes: slices.Concat(d.removes, d.made.removes)}
 	if !c.Time.IsZero() {
 		r.Time = c.Time.UTC().Format(time.RFC3339)
 	}
 	for _, j := range d.jobs {
-		r.Files = append(r.Files, j.file)
+		if !j.none {
+			r.Files = append(r.Files, j.file)
+		}
 	}
+	r.Files = append(r.Files, d.made.files...)
 	if len(r.Files) > 0 {
 		if err := a.fs.SyncDir(a.path(path.Join("staging", partName(c.Partition)))); err != nil {
 			return Record{}, err
@@ -210,7 +236,12 @@ func (a *Archive) know(station string, partition int) {
 // drop removes what a lost commit has staged. What cannot be removed is swept when the archive is opened.
 func (d *draft) drop() {
 	for _, j := range d.jobs {
-		_ = d.a.fs.Remove(d.a.path(j.file.Staged))
+		if !j.none {
+			_ = d.a.fs.Remove(d.a.path(j.file.Staged))
+		}
+	}
+	for _, f := range d.made.files {
+		_ = d.a.fs.Remove(d.a.path(f.Staged))
 	}
 }
 

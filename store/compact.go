@@ -25,7 +25,7 @@ func (a *Archive) Compact(partition int, station, month string) error {
 	}
 	last := p.last
 	c := &Commit{Partition: partition, Base: last.Number, Epoch: last.Epoch, Positions: last.Positions, RulesDigest: last.RulesDigest, Program: last.Program}
-	d := &draft{c: c, a: a, p: p, number: last.Number + 1}
+	d := &draft{c: c, a: a, p: p, number: last.Number + 1, made: &harvest{}}
 	d.compactMinutes(station, month)
 	d.compactRaw(station, month)
 	if len(d.jobs) == 0 {
@@ -72,7 +72,10 @@ func (d *draft) compactMinutes(station, month string) {
 
 // inheritMeta keeps what the day files said beyond the archive's own books: calibrations, licence, citation. The newest file's word holds.
 func (d *draft) inheritMeta(old []File) error {
-	own := d.meta(&File{Table: TableMinutes}, nil)
+	own, err := d.meta(&File{Table: TableMinutes, Station: old[0].Station, Period: old[0].Period}, map[string]string{})
+	if err != nil {
+		return err
+	}
 	kept := map[string]string{}
 	for _, f := range old {
 		meta, err := d.a.metaOf(f)

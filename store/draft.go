@@ -48,7 +48,7 @@ func (t *Draft) Add(c *Commit) error {
 		content.Reason = c.Reason
 	}
 	// The jobs of this Add see the content as it is now; what earlier ones see does not change under them.
-	part := &draft{c: &content, a: d.a, p: d.p, number: d.number, fresh: d.fresh}
+	part := &draft{c: &content, a: d.a, p: d.p, number: d.number, fresh: d.fresh, made: d.made}
 	if err := part.plan(); err != nil {
 		return t.fail(fmt.Errorf("commit: partition %02d: %w", content.Partition, err))
 	}

@@ -16,21 +16,33 @@ import (
 // rawPartsMax is how many part files of one station-day are kept before a commit writes them as one.
 const rawPartsMax = 16
 
-func (d *draft) meta(f *File, digests map[string]string) map[string]string {
-	m := map[string]string{"station": f.Station, "table": f.Table, "period": f.Period, "sealed": strconv.FormatBool(f.Sealed),
+func (d *draft) meta(f *File, digests map[string]string) (map[string]string, error) {
+	site, err := d.site()
+	if err != nil {
+		return nil, err
+	}
+	m := provenance(site, f.Station, f.Period)
+	for k, v := range map[string]string{"station": f.Station, "table": f.Table, "period": f.Period, "sealed": strconv.FormatBool(f.Sealed),
 		"format": strconv.Itoa(FormatVersion), "partition": strconv.Itoa(d.c.Partition), "commit": strconv.FormatUint(d.number, 10),
-		"program": d.c.Program, "rules_digest": d.c.RulesDigest}
+		"program": d.c.Program, "rules_digest": d.c.RulesDigest} {
+		m[k] = v
+	}
 	// When a file was written stands in the commit record: the same rows give the same bytes.
+	if f.Table == TableRaw {
+		return m, nil
+	}
+	m["judge_version"] = strconv.Itoa(engine.JudgeVersion)
+	if digests != nil {
+		b, _ := json.Marshal(digests)
+		m["row_digests"] = string(b)
+	}
 	if f.Table == TableMinutes {
 		for k, v := range d.c.Meta {
 			m[k] = v
 		}
-		b, _ := json.Marshal(digests)
-		m["row_digests"] = string(b)
-		m["judge_version"] = strconv.Itoa(engine.JudgeVersion)
 		m["test_bits"] = table.TestBits()
 	}
-	return m
+	return m, nil
 }
 
 func (d *draft) add(f File, makeFile func(f File) ([]byte, File, error)) {
@@ -101,7 +113,11 @@ func (d *draft) makeRaw(f File, old []File, fresh []*table.Table) ([]byte, File,
 }
 
 func (d *draft) encodeRaw(f File, t *table.Table) ([]byte, File, error) {
-	f.Rows, t.Meta = t.Rows, d.meta(&f, nil)
+	f.Rows = t.Rows
+	var err error
+	if t.Meta, err = d.meta(&f, nil); err != nil {
+		return nil, f, err
+	}
 	data, err := table.Encode(t)
 	return data, f, err
 }
@@ -185,8 +201,15 @@ func (d *draft) makeMinutes(f File, t *table.Table, days []monthDay, old []File)
 	for i := range days {
 		f.Digests[dayName(days[i].day)] = days[i].digestOf(t)
 	}
-	f.Rows, t.Meta = t.Rows, d.meta(&f, f.Digests)
+	f.Rows = t.Rows
+	var err error
+	if t.Meta, err = d.meta(&f, f.Digests); err != nil {
+		return nil, f, err
+	}
 	if err := d.dateDays(&f, t.Meta, old); err != nil {
+		return nil, f, err
+	}
+	if err := d.makeProducts(&f, t); err != nil {
 		return nil, f, err
 	}
 	w := minuteWriters.Get().(*table.Writer)
@@ -305,7 +328,10 @@ func (d *draft) planFaults() error {
 		}
 		t := table.FromEpisodes(s.Episodes)
 		d.add(File{Table: TableFaults, Station: s.Station, Rows: t.Rows}, func(f File) ([]byte, File, error) {
-			t.Meta = d.meta(&f, nil)
+			var err error
+			if t.Meta, err = d.meta(&f, nil); err != nil {
+				return nil, f, err
+			}
 			data, err := table.Encode(t)
 			return data, f, err
 		})

@@ -47,8 +47,7 @@ func (a *Archive) open(f File) (vfs.ReadFile, error) {
 	r, err := a.fs.Open(a.path(f.Path))
 	if errors.Is(err, fs.ErrNotExist) {
 		for i := range a.parts {
-			staged := path.Join("staging", partName(i), f.Table+"_"+path.Base(f.Path))
-			if r, e := a.fs.Open(a.path(staged)); e == nil {
+			if r, e := a.fs.Open(a.path(stagedPath(i, f.Table, path.Base(f.Path)))); e == nil {
 				return r, nil
 			}
 		}
@@ -200,42 +199,7 @@ func (r *Rows) Minute(i int) int64 { return minute.Stamp(r.Vectors[0].Times[i]).
 // ReadMinutes gives the minutes from one to another, the second not included, in order and a file at a time. Only the columns named are read,
 // and always `time`, which comes first; nil is all.
 func (a *Archive) ReadMinutes(station string, fromMinute, toMinute int64, columns []string, each func(*Rows) error) error {
-	if columns != nil && !slices.Contains(columns, "time") {
-		columns = append([]string{"time"}, columns...)
-	}
-	const farthest = int64(1) << 36 // in microseconds it still fits
-	next := max(fromMinute, -farthest)
-	toMinute = min(toMinute, farthest)
-	return a.retry(station, func(p *partition) error {
-		for _, f := range p.current(station, TableMinutes) {
-			from, to, err := span(f.Period)
-			if err != nil {
-				return err
-			}
-			if to*minute.PerDay <= next || from*minute.PerDay >= toMinute {
-				continue
-			}
-			t, err := a.readFile(f, columns)
-			if err != nil {
-				return err
-			}
-			times := t.Find("time")
-			if times == nil || times.Times == nil {
-				continue
-			}
-			lo, _ := slices.BinarySearch(times.Times, next*minute.MicrosPerMinute)
-			hi, _ := slices.BinarySearch(times.Times, toMinute*minute.MicrosPerMinute)
-			if lo >= hi {
-				continue
-			}
-			last := minute.Stamp(times.Times[hi-1]).Minute()
-			if err := each(&Rows{station, t.Cut(lo, hi)}); err != nil {
-				return err
-			}
-			next = last + 1
-		}
-		return nil
-	})
+	return a.ReadProduct(station, TableMinutes, fromMinute, toMinute, columns, each)
 }
 
 // Faults gives all episodes of a station.

@@ -120,12 +120,12 @@ func (a *Archive) adoptFile(name, tableName, station string) (treeFile, bool) {
 
 // eachFile calls f for each file under the published tree.
 func (a *Archive) eachFile(f func(name, tableName, station string) error) error {
-	for _, t := range []string{TableRaw, TableMinutes, TableFaults, TableState} {
+	for _, t := range tables {
 		if err := a.walkDir(t, func(name string) error {
-			parts := strings.Split(name, "/")
+			first, _, inside := strings.Cut(strings.TrimPrefix(name, t+"/"), "/")
 			station := ""
-			if len(parts) > 2 {
-				station, _ = strings.CutPrefix(parts[1], "station=")
+			if inside {
+				station, _ = strings.CutPrefix(first, "station=")
 			}
 			return f(name, t, station)
 		}); err != nil {

@@ -12,6 +12,7 @@ import (
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
 	"fluxwarden/store/table"
 )
 
@@ -36,6 +37,7 @@ type Commit struct {
 	Meta        map[string]string // goes into the metadata of the files of minutes: calibrations, licence, citation
 	Reason      string            // why rows change, as history shows it; where it is empty the store says what it can see
 	Time        time.Time         // when it is made, by the caller's clock; zero is not said
+	Site        *rules.Site       // the rules in force, whose words go into the files; nil takes those that the archive keeps by RulesDigest
 
 	Raw       []RawPart
 	Days      []Day
@@ -84,6 +86,15 @@ type monthDay struct {
 	day      int64
 	from, to int
 	digest   string // empty until it is asked for
+	label    string // of a span that is not a day
+}
+
+// name is what the digests call the span.
+func (x *monthDay) name() string {
+	if x.label != "" {
+		return x.label
+	}
+	return dayName(x.day)
 }
 
 // digestOf gives the row digest of a day of the table.
@@ -119,7 +130,15 @@ const (
 	TableMinutes = "minutes"
 	TableFaults  = "faults"
 	TableState   = "state"
+	// Clean products, by the folder that they are in.
+	TableCleanMinute = "clean/minute"
+	TableCleanHour   = "clean/hour"
+	TableCleanDay    = "clean/day"
+	TableCleanMonth  = "clean/month"
 )
+
+// tables are all of them.
+var tables = []string{TableRaw, TableMinutes, TableFaults, TableState, TableCleanMinute, TableCleanHour, TableCleanDay, TableCleanMonth}
 
 // A File is one file of the published tree.
 type File struct {
@@ -130,7 +149,7 @@ type File struct {
 	Rows    int               `json:"rows"`
 	Table   string            `json:"table"`
 	Station string            `json:"station"`
-	Period  string            `json:"period,omitempty"` // YYYY-MM-DD or YYYY-MM; empty for faults
+	Period  string            `json:"period,omitempty"` // YYYY-MM-DD, YYYY-MM or YYYY; empty for faults and clean/month
 	Sealed  bool              `json:"sealed,omitempty"`
 	Digests map[string]string `json:"digests,omitempty"` // row digest by day; only in the record, the file's metadata has them too
 }
@@ -149,6 +168,7 @@ type Record struct {
 	Positions   []Position `json:"positions"`
 	RulesDigest string     `json:"rules"`
 	Program     string     `json:"program"`
+	Judge       int        `json:"judge,omitempty"`    // the judge's version
 	Reason      string     `json:"reason,omitempty"`   // why rows change, where the writer said so
 	Time        string     `json:"time,omitempty"`     // when it was made, RFC 3339, where the writer said so
 	Previous    string     `json:"previous,omitempty"` // sha256 of the record before
@@ -173,11 +193,17 @@ func sha(b []byte) string {
 func dayTime(day int64) time.Time   { return time.Unix(day*86400, 0).UTC() }
 func dayName(day int64) string      { return dayTime(day).Format("2006-01-02") }
 func monthOf(day int64) string      { return dayTime(day).Format("2006-01") }
+func yearOf(day int64) string       { return dayTime(day).Format("2006") }
+func isYear(period string) bool     { return len(period) == len("2006") }
 func isMonth(period string) bool    { return len(period) == len("2006-01") }
 func partName(partition int) string { return fmt.Sprintf("%02d", partition) }
 
 // span gives the days that a period covers, the second not included.
 func span(period string) (from, to int64, err error) {
+	if isYear(period) {
+		t, err := time.Parse("2006", period)
+		return t.Unix() / 86400, t.AddDate(1, 0, 0).Unix() / 86400, err
+	}
 	if isMonth(period) {
 		t, err := time.Parse("2006-01", period)
 		return t.Unix() / 86400, t.AddDate(0, 1, 0).Unix() / 86400, err
@@ -195,6 +221,9 @@ func recordPath(partition int, number uint64) string {
 func treeDir(tableName, station, period string) string {
 	if period == "" {
 		return path.Join(tableName, "station="+station)
+	}
+	if isYear(period) {
+		return path.Join(tableName, "station="+station, "year="+period)
 	}
 	return path.Join(tableName, "station="+station, "month="+period[:7])
 }

@@ -11,6 +11,7 @@ import (
 	"strconv"
 	"strings"
 
+	"fluxwarden/rules"
 	"fluxwarden/store/table"
 )
 
@@ -157,8 +158,16 @@ func (d *draft) planRevisions() error {
 			return err
 		}
 		files := ofMonth(d.current(m.Station, TableMinutes), m.Month)
-		if len(files) == 0 || d.monthFile(m.Station, m.Month) != nil {
-			d.addMonth(m)
+		if whole := d.monthFile(m.Station, m.Month); whole != nil || len(files) == 0 {
+			same, err := d.sameRows(m, whole)
+			switch {
+			case err != nil:
+				return err
+			case same:
+				d.productsOnly(*whole)
+			default:
+				d.addMonth(m)
+			}
 			continue
 		}
 		for i := range m.days {
@@ -168,6 +177,20 @@ func (d *draft) planRevisions() error {
 		}
 	}
 	return nil
+}
+
+// sameRows says whether a file has the rows of all days of a month as they are.
+func (d *draft) sameRows(m *Month, f *File) (bool, error) {
+	if f == nil {
+		return false, nil
+	}
+	digests, err := d.a.digests(*f)
+	for i := range m.days {
+		if digests[dayName(m.days[i].day)] != m.days[i].digestOf(m.rows) {
+			return false, err
+		}
+	}
+	return true, err
 }
 
 // reviseDay writes one day that has a file of its own, or none yet, if its rows are others.
@@ -184,6 +207,10 @@ func (d *draft) reviseDay(m *Month, x *monthDay, files []File) error {
 			return err
 		}
 		if digests[day] == x.digestOf(m.rows) {
+			if stale, err := d.stale(o); err != nil || !stale {
+				return err
+			}
+			d.productsOnly(o)
 			return nil
 		}
 		f.Sealed = o.Sealed
@@ -197,6 +224,15 @@ func (d *draft) reviseDay(m *Month, x *monthDay, files []File) error {
 		return d.makeMinutes(f, t, []monthDay{{day: x.day, to: t.Rows, digest: x.digest}}, old)
 	})
 	return nil
+}
+
+// stale is productsStale by the settings of the commit's rules.
+func (d *draft) stale(f File) (bool, error) {
+	site, err := d.site()
+	if err != nil {
+		return false, err
+	}
+	return d.a.productsStale(d.p, f, madeBy(settingsOf(site, f.Station)))
 }
 
 // Revisions gives the revisions of a station-day that the archive still has, the oldest first. Rows that changed before the day was
@@ -303,11 +339,13 @@ type MonthChange struct {
 	Days       []int64 // whose rows differ, or that are new
 	Quantities []table.Change
 	Model      int      // minutes where what belongs to no quantity differs: sun, clear sky, records
+	Products   bool     // clean products are to be made anew though no row differs: there are none, or they were made by other settings
 	Rules      []string // digests of the rules by which the days that differ had been judged, sorted
 }
 
-// Compare holds the days of a month against the archive's. Where all digests are the same no row is read.
-func (a *Archive) Compare(m *Month) (*MonthChange, error) {
+// Compare holds the days of a month against the archive's, and the settings of its clean products against the site's. Where all digests are the
+// same no row is read.
+func (a *Archive) Compare(m *Month, site *rules.Site) (*MonthChange, error) {
 	out := &MonthChange{}
 	if _, ok := a.partitionOf(m.Station); !ok {
 		for _, x := range m.days {
@@ -329,6 +367,11 @@ func (a *Archive) Compare(m *Month) (*MonthChange, error) {
 					where[day] = f
 				} else if ok {
 					where[day] = File{}
+				}
+			}
+			if !out.Products {
+				if out.Products, err = a.productsStale(p, f, madeBy(settingsOf(site, m.Station))); err != nil {
+					return err
 				}
 			}
 		}

@@ -144,8 +144,7 @@ func (v *verification) listOthers() error {
 }
 
 func isTree(name string) bool {
-	top, _, _ := strings.Cut(name, "/")
-	return slices.Contains([]string{TableRaw, TableMinutes, TableFaults, TableState}, top)
+	return slices.ContainsFunc(tables, func(t string) bool { return strings.HasPrefix(name, t+"/") })
 }
 
 // foreign says what a file is that is in no book. One that a writer has published or taken away meanwhile is none.
@@ -267,23 +266,27 @@ func verifyRows(tableName string, rows int, b []byte) string {
 	case rows >= 0 && t.Rows != rows:
 		return fmt.Sprintf("%d rows, %d were written", t.Rows, rows)
 	case tableName == TableMinutes:
-		return verifyDigests(t)
+		return verifyDigests(t, daysOf(t), minutesDigest)
+	case isProduct(tableName):
+		return verifyDigests(t, productSpans(tableName, t), productDigest(tableName))
 	}
 	return ""
 }
 
-func verifyDigests(t *table.Table) string {
+func minutesDigest(t *table.Table, from, to int) string { return table.Digest(t, from, to) }
+
+// verifyDigests works out the digests of a file's rows anew, span by span.
+func verifyDigests(t *table.Table, spans []monthDay, digest func(t *table.Table, from, to int) string) string {
 	want := map[string]string{}
 	if err := json.Unmarshal([]byte(t.Meta["row_digests"]), &want); err != nil {
 		return fmt.Sprintf("metadata row_digests: %v", err)
 	}
-	days := daysOf(t)
-	if len(days) != len(want) {
-		return fmt.Sprintf("rows of %d days, digests of %d", len(days), len(want))
+	if len(spans) != len(want) {
+		return fmt.Sprintf("rows of %d days or months, digests of %d", len(spans), len(want))
 	}
-	for _, x := range days {
-		if got := table.Digest(t, x.from, x.to); got != want[dayName(x.day)] {
-			return fmt.Sprintf("rows of %s have the digest %s, committed was %s", dayName(x.day), got, want[dayName(x.day)])
+	for _, x := range spans {
+		if got := digest(t, x.from, x.to); got != want[x.name()] {
+			return fmt.Sprintf("rows of %s have the digest %s, committed was %s", x.name(), got, want[x.name()])
 		}
 	}
 	return ""

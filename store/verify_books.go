@@ -54,8 +54,10 @@ func (a *Archive) verifyRecords(i int) []Finding {
 // verifyFormat looks at archive.json, whose every byte is known.
 func (a *Archive) verifyFormat() []Finding {
 	b, err := vfs.ReadFileBytes(a.fs, a.path("archive.json"))
-	if err == nil && bytes.Equal(b, formatText()) {
-		return nil
+	for version := 1; err == nil && version <= FormatVersion; version++ {
+		if bytes.Equal(b, formatText(version)) {
+			return nil
+		}
 	}
 	if err == nil {
 		err = errors.New("bytes changed since it was written")

@@ -127,6 +127,7 @@ func judgeBatch(a *store.Archive, s *rules.Site, st *rules.Station, all *minute.
 		return nil, err
 	}
 	p.out = newMonths(a, draft, st.ID)
+	p.out.site = s
 	p.out.raw(parts)
 	if err := p.run(); err != nil {
 		_ = p.out.stop()
@@ -152,7 +153,7 @@ func firstUnended(a *store.Archive, station string, day int64) (int64, error) {
 
 // beginDraft starts a commit of a partition that stands on its last record.
 func beginDraft(a *store.Archive, partition int, s *rules.Site) (*store.Draft, error) {
-	c := store.Commit{Partition: partition, RulesDigest: s.Digest, Program: "fluxwarden " + version, Time: time.Now()}
+	c := store.Commit{Partition: partition, RulesDigest: s.Digest, Program: "fluxwarden " + version, Time: time.Now(), Site: s}
 	last, ok, err := a.Last(partition)
 	if err != nil {
 		return nil, err

@@ -8,6 +8,7 @@ import (
 
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
+	"fluxwarden/rules"
 	"fluxwarden/store"
 	"fluxwarden/store/table"
 )
@@ -18,6 +19,7 @@ type months struct {
 	archive *store.Archive
 	draft   *store.Draft // nil to compare only
 	station string
+	site    *rules.Site // whose settings the clean products follow
 	known   bool
 	reason  func(oldRules []string) string // why rows of days judged by these rules change; nil leaves it to the store
 
@@ -39,6 +41,7 @@ type difference struct {
 	Come, Gone []fault.Episode
 	Changed    []episodeChange
 	Summaries  int // days of which the judge has learnt something else
+	Products   int // months without another row whose clean products are made anew
 	Reasons    []string
 }
 
@@ -46,7 +49,7 @@ type difference struct {
 type episodeChange struct{ Before, After fault.Episode }
 
 func (d *difference) empty() bool {
-	return d.Days == 0 && d.Summaries == 0 && len(d.Come)+len(d.Gone)+len(d.Changed) == 0
+	return d.Days == 0 && d.Summaries == 0 && d.Products == 0 && len(d.Come)+len(d.Gone)+len(d.Changed) == 0
 }
 
 func newMonths(a *store.Archive, draft *store.Draft, station string) *months {
@@ -110,11 +113,15 @@ func (m *months) flush() {
 }
 
 func (m *months) compare(month *store.Month) error {
-	c, err := m.archive.Compare(month)
-	if err != nil || len(c.Days) == 0 {
+	c, err := m.archive.Compare(month, m.site)
+	if err != nil || len(c.Days) == 0 && !c.Products {
 		return err
 	}
 	d := &m.diff
+	if len(c.Days) == 0 {
+		d.Products++
+		return m.put(&store.Commit{Revisions: []*store.Month{month}})
+	}
 	if d.Days == 0 {
 		d.FirstDay = c.Days[0]
 	}

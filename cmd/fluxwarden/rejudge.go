@@ -277,6 +277,7 @@ func (r *rejudging) judgeStation(st *rules.Station, draft *store.Draft, helpers 
 	}
 	p := &pass{archive: r.archive, station: st, plan: plan, from: r.from, to: r.to, helpers: helpers, step: r.tally.station(st.ID)}
 	p.out = newMonths(r.archive, draft, st.ID)
+	p.out.site = r.site
 	p.out.reason = func(old []string) string { return r.reasons.why(st, old) }
 	err = p.run()
 	if errors.Is(err, errNoReadings) {

@@ -43,6 +43,9 @@ func showDifferences(w io.Writer, list []difference) error {
 		if d.Summaries > 0 {
 			fmt.Fprintf(w, "  what the judge has learnt changes on %d days\n", d.Summaries)
 		}
+		if d.Products > 0 {
+			fmt.Fprintf(w, "  clean products of %d months are made anew: there were none, or by other settings\n", d.Products)
+		}
 		for k := range d.Come {
 			fmt.Fprintf(w, "  + %s\n", episodeText(&d.Come[k]))
 		}
@@ -124,6 +127,7 @@ type differenceLine struct {
 	Come       []daemon.FindingLine `json:"episodes_come"`
 	Gone       []daemon.FindingLine `json:"episodes_gone"`
 	Changed    []faultPairLine      `json:"episodes_changed"`
+	Products   int                  `json:"product_months"`
 }
 
 type faultPairLine struct {
@@ -183,7 +187,7 @@ func writeDifferences(w io.Writer, list []difference) error {
 	for i := range list {
 		d := &list[i]
 		l := differenceLine{Station: d.Station, Days: d.Days, Reasons: append([]string{}, d.Reasons...), Quantities: changeLines(d.Quantities), Model: d.Model,
-			Learnt: d.Summaries, Come: lines(d.Come), Gone: lines(d.Gone), Changed: []faultPairLine{}}
+			Learnt: d.Summaries, Come: lines(d.Come), Gone: lines(d.Gone), Changed: []faultPairLine{}, Products: d.Products}
 		if d.Days > 0 {
 			l.FirstDay, l.LastDay = dayText(d.FirstDay), dayText(d.LastDay)
 		}

@@ -157,3 +157,6 @@ func TestBits() string {
 	}
 	return s
 }
+
+// LongName says in words what a quantity is.
+func LongName(q rules.Quantity) string { return longNames[q] }

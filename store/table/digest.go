@@ -20,7 +20,10 @@ func roundFast(x, step, inverse float64) float64 {
 // the times, then for each column in MinuteColumns' order that has a value the name, a bit a row for what is not null, and the values:
 // numbers as multiples of the column's step in 4 bytes if all fit, else as doubles; texts with their length before. A column that is
 // added to the list later and is null in old rows changes no digest. All numbers are little-endian.
-func Digest(t *Table, from, to int) string {
+func Digest(t *Table, from, to int) string { return DigestOf(minuteColumns, t, from, to) }
+
+// DigestOf is the same over other columns, of which the first is the time.
+func DigestOf(columns []Column, t *Table, from, to int) string {
 	h := sha256.New()
 	b := make([]byte, 0, 8*(to-from)+256)
 	b = append(b, "fluxwarden rows 1\n"...)
@@ -29,8 +32,8 @@ func Digest(t *Table, from, to int) string {
 		b = binary.LittleEndian.AppendUint64(b, uint64(x))
 	}
 	h.Write(b)
-	for i := range minuteColumns {
-		c := &minuteColumns[i]
+	for i := range columns {
+		c := &columns[i]
 		if c.Kind == Time {
 			continue
 		}
