@@ -6,6 +6,7 @@ import (
 	"errors"
 	"flag"
 	"fmt"
+	"io"
 	"os"
 	"slices"
 	"strings"
@@ -14,6 +15,7 @@ import (
 
 	"fluxwarden/cmd/fluxwarden/daemon"
 	"fluxwarden/qc/fault"
+	"fluxwarden/rules"
 	"fluxwarden/store"
 	"fluxwarden/store/vfs"
 )
@@ -24,11 +26,15 @@ func cmdFaults(args []string) int {
 	archive := fs.String("archive", "", "folder of the archive")
 	station := fs.String("station", "", "one station; all of them otherwise")
 	format := fs.String("format", "table", "table or jsonl")
+	explain := fs.String("explain", "", "instead of a list, the page of a kind, or of all: what it looks like, how it is told, what to do")
 	if err := fs.Parse(args); err != nil {
 		return parseCode(err)
 	}
+	if *explain != "" && fs.NArg() == 0 && *archive == "" {
+		return explainKind(os.Stdout, *explain)
+	}
 	if *archive == "" || fs.NArg() > 0 || *format != "table" && *format != "jsonl" {
-		return complain(exitUsage, errors.New("faults: want --archive DIR [--station S] [--format table|jsonl]"))
+		return complain(exitUsage, errors.New("faults: want --archive DIR [--station S] [--format table|jsonl], or --explain KIND"))
 	}
 	a, err := store.Open(vfs.OS{}, *archive)
 	if err != nil {
@@ -56,6 +62,26 @@ func cmdFaults(args []string) int {
 	if err = errors.Join(err, w.Flush()); err != nil {
 		return complain(exitProblem, fmt.Errorf("faults: %w", err))
 	}
+	return exitOK
+}
+
+// explainKind prints the page of a kind, or of all.
+func explainKind(w io.Writer, name string) int {
+	names := make([]string, 0, rules.FaultKindCount)
+	for k := range rules.FaultKind(rules.FaultKindCount) {
+		names = append(names, k.String())
+		if name == "all" {
+			fmt.Fprintf(w, "%s\n", k.Explain())
+		}
+	}
+	if name == "all" {
+		return exitOK
+	}
+	k, ok := rules.ParseFaultKind(name)
+	if !ok {
+		return complain(exitUsage, fmt.Errorf("faults: kind %q: want all or one of %s", name, strings.Join(names, ", ")))
+	}
+	fmt.Fprint(w, k.Explain())
 	return exitOK
 }
 

@@ -3,7 +3,7 @@ package fault
 import "fluxwarden/rules"
 
 // caseCount is how many cases catalogueOfCases has. The order is fixed: a carry names them by number.
-const caseCount = 30
+const caseCount = 35
 
 // quietDays is how long an episode that only sunlit minutes can bear out may go without a word for it.
 const quietDays = 36 * 60
@@ -45,6 +45,11 @@ func init() {
 		{kind: rules.ZeroOffset, quantity: rules.Global, raise: 6, most: 9, evidence: zeroOffset, number: "offset", unit: "W/m2"},
 		{kind: rules.ZeroOffset, quantity: rules.Diffuse, raise: 6, most: 9, evidence: zeroOffset, number: "offset", unit: "W/m2"},
 		{kind: rules.DomeWet, quantity: rules.LWDown, raise: 6, most: 9, quiet: 720, evidence: wetPyrgeometer, number: "net", unit: "W/m2"},
+		{kind: rules.VentilationLost, quantity: rules.Global, fan: true, raise: 6, most: 9, evidence: fanStopped},
+		{kind: rules.VentilationLost, quantity: rules.Diffuse, fan: true, raise: 6, most: 9, evidence: fanStopped},
+		{kind: rules.VentilationLost, quantity: rules.Reflected, fan: true, raise: 6, most: 9, evidence: fanStopped},
+		{kind: rules.VentilationLost, quantity: rules.LWDown, fan: true, raise: 6, most: 9, evidence: fanStopped},
+		{kind: rules.VentilationLost, quantity: rules.LWUp, fan: true, raise: 6, most: 9, evidence: fanStopped},
 	}
 	for i := range catalogueOfCases {
 		catalogueOfCases[i].index = i

@@ -22,6 +22,8 @@ func pointingLost(w *Watcher, c *faultCase, v *view) hint {
 		return hint{odds: -0.6}
 	case b > 150 && d < 0.9*g:
 		return hint{odds: -0.3} // it sees the sun, if through cloud
+	case v.tracker == HouseOut: // it says so itself
+		return hint{0.4, k}
 	case b < 0.08*cb && math.Abs(d-g) < float64(0.06*g)+10 && k > 0.85 && k < 1.12 && w.followsClear(v):
 		return hint{0.3 + float64(2*max(0, k-0.9)), k}
 	}

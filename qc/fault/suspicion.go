@@ -37,6 +37,7 @@ type faultCase struct {
 	quantity   rules.Quantity // whose primary instrument is suspected
 	instrument string         // Tracker or Logger instead of the instrument; empty otherwise
 	needs      []rules.Quantity
+	fan        bool    // the speed of the instrument's fan is needed
 	raise      float64 // odds at which it is raised
 	most       float64 // where the score stops growing: how much it takes to end the episode
 	quiet      int64   // minutes without a word for it after which an open episode is let go; 0 is never
@@ -48,6 +49,9 @@ type faultCase struct {
 // applies says whether the station has what the case needs.
 func (w *Watcher) applies(c *faultCase) bool {
 	if !w.setup.Instruments[c.quantity].Present {
+		return false
+	}
+	if c.fan && !w.setup.Instruments[c.quantity].HasFan {
 		return false
 	}
 	for _, q := range c.needs {

@@ -25,7 +25,7 @@ func (w *Watcher) watchVentilation(days []KindFacts) {
 	today := &days[len(days)-1]
 	for k, q := range zeroed {
 		in := &w.setup.Instruments[q]
-		if !in.Present || today.ClearZero[k].N < ventilationMinutes {
+		if !in.Present || in.HasFan || today.ClearZero[k].N < ventilationMinutes {
 			continue
 		}
 		usual, scatter, nights := usualOf(days[:len(days)-1], ventilationMinutes, func(f *KindFacts) Fact { return f.ClearZero[k] })
@@ -122,4 +122,21 @@ func (c *KindCarry) since(k int, day int64) int64 {
 		return day * 1440
 	}
 	return c.Since[k]
+}
+
+// fanStopped: the fan's speed is out of its range. Fans that stop together, or one that blows on several domes, are one fault: it is told of
+// the first of the instruments.
+func fanStopped(w *Watcher, c *faultCase, v *view) hint {
+	switch v.fan[c.quantity] {
+	case HouseSound:
+		return hint{odds: -1}
+	case HouseUnknown:
+		return nothing
+	}
+	for q := range c.quantity {
+		if v.fan[q] == HouseOut {
+			return nothing
+		}
+	}
+	return hint{odds: 0.4}
 }
