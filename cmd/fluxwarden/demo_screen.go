@@ -58,7 +58,7 @@ func (s *demoScreen) begin() {
 	fmt.Fprintf(s.out, "%s: %d invented stations, seed %d, %g seconds of station time in a second, from %s on.\n", d.site.Network.Name, len(d.site.Stations),
 		d.options.seed, d.options.speed, demoBegins.Format("2006-01-02 15:04Z"))
 	if address := d.daemon.Address(); address != "" {
-		fmt.Fprintf(s.out, "  status page   http://%s/\n  metrics       http://%s/metrics\n", address, address)
+		fmt.Fprintf(s.out, "  console       http://%s/\n  metrics       http://%s/metrics\n", address, address)
 	}
 	fmt.Fprintf(s.out, "  front door    %s, subject %s<station>\n  archive       %s\n  site file     %s\nCtrl-C stops it.\n\n", d.daemon.BrokerURL(), gate.SubjectPrefix, d.places.archive, d.places.site)
 }

@@ -43,6 +43,8 @@ func commands() []command {
 		{"refused", "list, show and requeue what was refused", cmdRefused},
 		{"credentials", "who may send: make, list and revoke credentials", cmdCredentials},
 		{"simulate", "write a synthetic station's readings with labelled faults", cmdSimulate},
+		{"look", "pages over an archive in a browser: network, days, faults, residuals", cmdLook},
+		{"report", "a station's month as one page to print or send", cmdReport},
 		{"version", "print the version", func([]string) int { fmt.Println("fluxwarden", version); return exitOK }},
 	}
 }

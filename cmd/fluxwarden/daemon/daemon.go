@@ -92,10 +92,11 @@ func Start(ctx context.Context, c Config) (*Daemon, error) {
 		c.Log = slog.New(slog.DiscardHandler)
 	}
 	d := &Daemon{config: c, log: c.Log, metrics: metrics.New(c.Program, c.Clock.Now)}
-	d.hub = &hub{metrics: d.metrics, onMinutes: c.OnMinutes, onEpisodes: c.OnEpisodes, stations: map[string]*stationState{}}
+	d.hub = &hub{metrics: d.metrics, onMinutes: c.OnMinutes, onEpisodes: c.OnEpisodes, heard: map[string]bool{}}
 	run, cancel := context.WithCancel(context.WithoutCancel(ctx))
 	d.cancel = cancel
-	for _, step := range []func(context.Context) error{d.openArchive, d.openPages, d.openAccess, d.openBroker, d.openWays} {
+	openConsole := func(context.Context) error { d.openConsole(run); return nil }
+	for _, step := range []func(context.Context) error{d.openArchive, openConsole, d.openPages, d.openAccess, d.openBroker, d.openWays} {
 		if err := step(ctx); err != nil {
 			_ = d.Stop()
 			return nil, err

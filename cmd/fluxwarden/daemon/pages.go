@@ -3,17 +3,16 @@ package daemon
 import (
 	"context"
 	"fmt"
-	"html/template"
 	"net/http"
 	"time"
 
 	"github.com/prometheus/client_golang/prometheus/promhttp"
 
+	"fluxwarden/cmd/fluxwarden/console"
 	"fluxwarden/qc/fault"
-	"fluxwarden/rules"
 )
 
-// handler serves metrics, health and the status page.
+// handler serves metrics, health and the console.
 func (d *Daemon) handler() http.Handler {
 	mux := http.NewServeMux()
 	mux.Handle("GET /metrics", promhttp.HandlerFor(d.metrics.Registry, promhttp.HandlerOpts{}))
@@ -25,57 +24,23 @@ func (d *Daemon) handler() http.Handler {
 		}
 		fmt.Fprintln(w, "ready")
 	})
-	mux.HandleFunc("GET /{$}", d.status)
+	mux.Handle("/", d.hub.console.Handler())
 	return mux
 }
 
-func (d *Daemon) status(w http.ResponseWriter, _ *http.Request) {
-	w.Header().Set("Content-Type", "text/html; charset=utf-8")
-	w.Header().Set("Content-Security-Policy", "default-src 'none'; style-src 'unsafe-inline'")
-	if err := statusPage.Execute(w, d.statusData()); err != nil {
-		d.metrics.Failed("http")
+// openConsole makes the pages; what the archive holds of the last day is read beside, so that they are there at once.
+func (d *Daemon) openConsole(run context.Context) {
+	d.hub.console = console.New(console.Config{Archive: d.archive.Read, Site: d.rules.newest, Now: d.config.Clock.Now, Trouble: d.NotReady,
+		Failed: func() { d.metrics.Failed("http") }, Program: d.config.Program})
+	if d.config.Settings.Listen == "none" || d.config.Settings.Listen == "" {
+		return
 	}
-}
-
-type statusData struct {
-	Network, Archive, Program, Now, NotReady string
-	Stations                                 []statusStation
-}
-
-type statusStation struct {
-	ID, Name, Last string
-	Shares         []string
-	Faults         []string
-}
-
-func (d *Daemon) statusData() statusData {
-	site := d.rules.newest()
-	data := statusData{Network: site.Network.Name, Archive: d.config.Settings.Archive, Program: d.config.Program,
-		Now: d.config.Clock.Now().UTC().Format(time.RFC3339), NotReady: d.NotReady()}
-	_, states := d.hub.view()
-	for i := range site.Stations {
-		st := states[site.Stations[i].ID]
-		row := statusStation{ID: site.Stations[i].ID, Name: site.Stations[i].Name, Last: "none yet"}
-		if !st.Last.IsZero() {
-			row.Last = st.Last.Add(-time.Minute).Format("2006-01-02 15:04") + "Z"
+	d.done.Go(func() {
+		if err := d.hub.console.Warm(run); err != nil {
+			d.metrics.Failed("http")
+			d.log.Warn("the network page begins empty", "cause", err)
 		}
-		total := int64(0)
-		for _, n := range st.Verdicts {
-			total += n
-		}
-		for _, v := range []rules.Verdict{rules.Accepted, rules.Questioned, rules.Rejected, rules.Absent} {
-			share := "–"
-			if total > 0 {
-				share = fmt.Sprintf("%.1f %%", 100*float64(st.Verdicts[v])/float64(total))
-			}
-			row.Shares = append(row.Shares, share)
-		}
-		for k := range st.Open {
-			row.Faults = append(row.Faults, InWords(&st.Open[k]))
-		}
-		data.Stations = append(data.Stations, row)
-	}
-	return data
+	})
 }
 
 // InWords says what an episode means for a person.
@@ -89,18 +54,6 @@ func InWords(e *fault.Episode) string {
 	}
 	return s
 }
-
-var statusPage = template.Must(template.New("status").Parse(`<!doctype html>
-<html lang="en"><head><meta charset="utf-8"><meta http-equiv="refresh" content="30"><title>{{.Network}}: fluxwarden</title>
-<style>body{font:16px/1.5 sans-serif;margin:2em;max-width:70em}table{border-collapse:collapse}th,td{text-align:left;padding:.3em 1em .3em 0;border-bottom:1px solid #ccc;vertical-align:top}td.n,th.n{text-align:right}</style></head>
-<body><h1>{{.Network}}</h1>
-<p>{{.Now}}. {{if .NotReady}}<strong>Not ready: {{.NotReady}}</strong>{{else}}Readings are taken, judged and stored.{{end}}</p>
-<table><tr><th>Station</th><th>Last minute</th><th class="n">accepted</th><th class="n">questioned</th><th class="n">rejected</th><th class="n">absent</th><th>What is wrong</th></tr>
-{{range .Stations}}<tr><td>{{.Name}} ({{.ID}})</td><td>{{.Last}}</td>{{range .Shares}}<td class="n">{{.}}</td>{{end}}<td>{{range .Faults}}<div>{{.}}</div>{{else}}nothing known{{end}}</td></tr>
-{{end}}</table>
-<p>Verdict shares are of the radiation minutes judged since the program started. The archive is in <code>{{.Archive}}</code>: Parquet, readable by any engine.
-<a href="/metrics">Metrics</a>. {{.Program}}.</p></body></html>
-`))
 
 const (
 	readHeaderTimeout = 5 * time.Second
