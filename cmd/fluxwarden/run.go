@@ -21,7 +21,7 @@ func cmdRun(args []string) int {
 	site := fs.String("site", "", "the site `file`: stations, instruments, rules")
 	settings := fs.String("settings", "", "a settings `file`; flags go before it")
 	archive := fs.String("archive", "", "`directory` of the archive")
-	listen := fs.String("listen", "", "`address` of the status page and /metrics; none for none")
+	listen := fs.String("listen", "", "`address` of the console and /metrics; none for none")
 	brokerURL := fs.String("broker", "", "`url` of an external broker, nats://host:port; without it the broker runs in this process")
 	credentials := fs.String("credentials", "", "credentials `file` for an external broker")
 	stations := fs.String("stations-listen", "", "`address` at which the broker in this process takes readings; none for none")

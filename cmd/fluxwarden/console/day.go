@@ -2,22 +2,17 @@ package console
 
 import (
 	"cmp"
-	"encoding/json"
 	"fmt"
 	"html/template"
-	"math"
 	"net/http"
 	"net/url"
 	"slices"
 	"strings"
 	"time"
 
-	"fluxwarden/qc/exact"
 	"fluxwarden/qc/fault"
-	"fluxwarden/qc/limit"
 	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
-	"fluxwarden/store/export"
 )
 
 // A window is what a day page shows: a day, or a part of it.
@@ -189,142 +184,6 @@ func faultLink(e *fault.Episode) string {
 	return "/station/" + url.PathEscape(e.Station) + "/fault/" + url.PathEscape(e.ID)
 }
 
-// clearColumn names the column of what a cloudless sky would have given.
-func clearColumn(q rules.Quantity) string {
-	switch q {
-	case rules.Global, rules.Direct, rules.Diffuse, rules.LWDown:
-		return "clear_" + q.String()
-	}
-	return ""
-}
-
-// panels draws the overview of the shortwave, then every quantity by itself against its limits, then the weather.
-func panels(st *rules.Station, s *span, episodes []fault.Episode, sky solarDay) []panel {
-	xs := make([]float64, len(s.have))
-	for i := range xs {
-		xs[i] = float64(s.from) + float64(i)
-	}
-	draw := func(title, unit string, height float64, lines []dayLine, envelope *[2][]float64) panel {
-		low, high := 0.0, 1.0
-		for _, l := range lines {
-			low, high = spread(low, high, l.ys)
-		}
-		room := (high - low) * 0.04
-		f := newFigure(title, unit, height, float64(s.from), float64(s.to), low-room, high+room)
-		for i := range episodes {
-			if e := &episodes[i]; slices.ContainsFunc(lines, func(l dayLine) bool { return concerns(st, e, l.quantity) }) {
-				f.stretch("episode "+e.Severity.String(), e.Instrument+": "+e.Kind.Entry().Title, float64(e.From), float64(endOf(e, s.to)))
-			}
-		}
-		if envelope != nil {
-			f.band("envelope", xs, envelope[0], envelope[1])
-		}
-		if sky.risesAndSets {
-			f.mark("sun", "rise", sky.rise)
-			f.mark("sun", "set", sky.set)
-		}
-		f.mark("sun", "transit", sky.transit)
-		p := panel{Title: title}
-		for _, l := range lines {
-			f.line(l.class, xs, l.ys)
-			p.Key = append(p.Key, keyEntry{l.class, l.name})
-		}
-		if envelope != nil {
-			p.Key = append(p.Key, keyEntry{"envelope", "physically possible"})
-		}
-		p.Figure = f.svg(utcTicks(f.x0, f.x1), solarTicks(sky.transit, f.x0, f.x1), "UTC", "solar")
-		return p
-	}
-	var list []panel
-	group := func(title string, of []rules.Quantity, height float64) {
-		var lines []dayLine
-		unit := ""
-		for _, q := range s.quantities(of) {
-			lines = append(lines, dayLine{q, inWords(q), "q " + q.String(), s.number(q.String())})
-			unit = q.Unit()
-			if name := clearColumn(q); name != "" && s.has(name) {
-				lines = append(lines, dayLine{q, inWords(q) + ", clear sky", "clear " + q.String(), s.number(name)})
-			}
-		}
-		if len(lines) > 0 {
-			list = append(list, draw(title, prettyUnit(unit), height, lines, nil))
-		}
-	}
-	group("Shortwave", []rules.Quantity{rules.Global, rules.Direct, rules.Diffuse, rules.Reflected}, 300)
-	group("Longwave", []rules.Quantity{rules.LWDown, rules.LWUp}, 200)
-	group("Ultraviolet", []rules.Quantity{rules.UV}, 150)
-	group("Photosynthetically active", []rules.Quantity{rules.PAR}, 150)
-	for _, q := range s.quantities(weather()) {
-		p := draw(strings.ToUpper(inWords(q)[:1])+inWords(q)[1:], prettyUnit(q.Unit()), 110, []dayLine{{q, inWords(q), "q weather", s.number(q.String())}}, nil)
-		p.Slim = true
-		list = append(list, p)
-	}
-	for _, q := range s.quantities(radiation()) {
-		lines := []dayLine{{q, inWords(q), "q " + q.String(), s.number(q.String())}}
-		if name := clearColumn(q); name != "" && s.has(name) {
-			lines = append(lines, dayLine{q, "clear sky", "clear " + q.String(), s.number(name)})
-		}
-		p := draw("Limits of "+inWords(q), prettyUnit(q.Unit()), 130, lines, envelopeOf(st, s, q))
-		p.Slim = true
-		list = append(list, p)
-	}
-	return list
-}
-
-type dayLine struct {
-	quantity    rules.Quantity
-	name, class string
-	ys          []float64
-}
-
-// concerns says whether an episode is of what measures the quantity: its instrument, or the tracker that points and shades.
-func concerns(st *rules.Station, e *fault.Episode, q rules.Quantity) bool {
-	if e.Instrument == fault.Tracker {
-		return q == rules.Direct || q == rules.Diffuse
-	}
-	x := instrument(st, e.Instrument)
-	return x != nil && x.Measures == q
-}
-
-func endOf(e *fault.Episode, atMost int64) int64 {
-	if openEnded(e) {
-		return atMost
-	}
-	return e.To
-}
-
-func prettyUnit(u string) string {
-	return strings.NewReplacer("W/m2", "W/m²", "umol/(m2 s)", "µmol/(m² s)", "degC", "°C").Replace(u)
-}
-
-// envelopeOf works out the physically possible limits along the span; nil for a quantity that has none of them.
-func envelopeOf(st *rules.Station, s *span, q rules.Quantity) *[2][]float64 {
-	low, high := blank(len(s.have)), blank(len(s.have))
-	if q.Longwave() {
-		b := st.Limits.PossibleLW[q-rules.LWDown]
-		for i, ok := range s.have {
-			if ok {
-				low[i], high[i] = b.Low, b.High
-			}
-		}
-		return &[2][]float64{low, high}
-	}
-	if int(q) >= len(st.Limits.Possible) {
-		return nil
-	}
-	l := &st.Limits.Possible[q]
-	zenith, apparent, beyond := s.number("zenith_deg"), s.number("apparent_zenith_deg"), s.number("extraterrestrial")
-	for i, ok := range s.have {
-		if ok && zenith[i] == zenith[i] {
-			sun := limit.SunOf(zenith[i], cosDeg(zenith[i]), apparent[i], cosDeg(apparent[i]), beyond[i], false)
-			low[i], high[i] = l.Low, limit.SunMax(l, &sun)
-		}
-	}
-	return &[2][]float64{low, high}
-}
-
-func cosDeg(d float64) float64 { return exact.Cos(d * math.Pi / 180) }
-
 // ribbons draws each quantity's verdicts under one time axis, and below them the episodes as spans with their names.
 func ribbons(s *span, episodes []fault.Episode) template.HTML {
 	list := s.quantities(append(radiation(), weather()...))
@@ -415,88 +274,4 @@ func zoomLinks(station string, w window, sky solarDay) []link {
 		list = append(list, at(sky.rise-60, sky.rise+120, "around sunrise"), at(sky.transit-90, sky.transit+90, "around transit"), at(sky.set-120, sky.set+60, "around sunset"))
 	}
 	return list
-}
-
-// dayJSON gives the day's minutes in columns: what the read-out under the pointer shows.
-func (c *Console) dayJSON(w http.ResponseWriter, r *http.Request) error {
-	st, err := c.station(r)
-	if err != nil {
-		return err
-	}
-	day, err := parseDay(r.PathValue("day"))
-	if err != nil {
-		return err
-	}
-	s, err := readSpan(c.archive, st.ID, day*minute.PerDay, (day+1)*minute.PerDay, dayColumns())
-	if err != nil {
-		return err
-	}
-	if s.rows == 0 {
-		return c.noSuchDay(st, day)
-	}
-	type column struct {
-		Name     string     `json:"name"`
-		Unit     string     `json:"unit"`
-		Values   []*float64 `json:"values"`
-		Verdicts []string   `json:"verdicts"`
-		Reasons  []string   `json:"reasons,omitempty"`
-	}
-	out := struct {
-		Station string   `json:"station"`
-		Day     string   `json:"day"`
-		From    int64    `json:"from"` // minutes since 1970
-		Columns []column `json:"columns"`
-	}{Station: st.ID, Day: dayName(day), From: s.from}
-	for _, q := range s.quantities(append(radiation(), weather()...)) {
-		out.Columns = append(out.Columns, column{q.String(), q.Unit(), nullable(s.number(q.String())), s.words[q.String()+"_verdict"], s.words[q.String()+"_reasons"]})
-	}
-	for _, q := range []rules.Quantity{rules.Global, rules.Direct, rules.Diffuse, rules.LWDown} {
-		if name := clearColumn(q); s.has(name) {
-			out.Columns = append(out.Columns, column{Name: name, Unit: q.Unit(), Values: nullable(s.number(name))})
-		}
-	}
-	writeJSON(w, out)
-	return nil
-}
-
-// nullable makes null of what is not there; two decimals are more than any instrument resolves.
-func nullable(x []float64) []*float64 {
-	out := make([]*float64, len(x))
-	for i, v := range x {
-		if v == v {
-			v = math.Round(v*100) / 100
-			out[i] = &v
-		}
-	}
-	return out
-}
-
-func writeJSON(w http.ResponseWriter, v any) {
-	w.Header().Set("Content-Type", "application/json; charset=utf-8")
-	w.Header().Set("Cache-Control", "no-cache")
-	_ = json.NewEncoder(w).Encode(v) // into memory: it cannot fail for what we give it
-}
-
-// dayCSV gives the day's minutes as `export` does.
-func (c *Console) dayCSV(w http.ResponseWriter, r *http.Request) error {
-	st, err := c.station(r)
-	if err != nil {
-		return err
-	}
-	day, err := parseDay(r.PathValue("day"))
-	if err != nil {
-		return err
-	}
-	if !c.archive.has(st.ID) {
-		return c.noSuchDay(st, day)
-	}
-	w.Header().Set("Content-Type", "text/csv; charset=utf-8")
-	w.Header().Set("Content-Disposition", fmt.Sprintf("attachment; filename=\"%s_%s.csv\"", st.ID, dayName(day)))
-	n, err := c.archive.csv(w, export.Request{Station: st.ID, From: day * minute.PerDay, To: (day + 1) * minute.PerDay})
-	if err == nil && n == 0 {
-		w.Header().Del("Content-Type")
-		w.Header().Del("Content-Disposition")
-		return c.noSuchDay(st, day)
-	}
-	return err
 }

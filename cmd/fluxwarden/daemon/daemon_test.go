@@ -117,7 +117,7 @@ func TestFromReadingToArchive(t *testing.T) {
 			t.Fatal("no judged minute within 20 s")
 		}
 	}
-	eventually(t, "the last minute on the status page", func() bool { _, page := get(t, d, "/"); return strings.Contains(page, "2026-06-21 11:59Z") })
+	eventually(t, "the last minute on the console", func() bool { _, page := get(t, d, "/"); return strings.Contains(page, "2026-06-21 11:59Z") })
 	_, text := get(t, d, "/metrics")
 	for _, want := range []string{`fluxwarden_gate_refused_readings_total{reason="unknown_station"} 1`, `fluxwarden_station_last_minute_timestamp_seconds{station="northmoor"}`,
 		"fluxwarden_worker_readings_total 2", "fluxwarden_build_info"} {

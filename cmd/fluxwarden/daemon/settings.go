@@ -20,7 +20,7 @@ import (
 // Settings are what the daemon itself needs; nothing of them can change a row. In a file, sizes and durations carry a unit.
 type Settings struct {
 	Archive     string         `yaml:"archive"`      // directory of the archive
-	Listen      string         `yaml:"listen"`       // address of status page and metrics; "none" for none
+	Listen      string         `yaml:"listen"`       // address of console and metrics; "none" for none
 	Grace       Duration       `yaml:"grace"`        // how long a minute waits for its readings
 	CommitEvery Duration       `yaml:"commit_every"` // how often what was judged is written
 	DiskFloor   Size           `yaml:"disk_floor"`   // with less free than this, no reading is taken
