@@ -102,6 +102,13 @@ func (st *Station) canonical() string {
 		}
 	}
 	c.line("sky", st.Sky.Model, st.Sky.OzoneCm, st.Sky.WaterCm, st.Sky.AOD, st.Sky.Albedo)
+	for i := range st.Local {
+		t := &st.Local[i]
+		c.line("local", t.Name, t.Miss)
+		for _, q := range t.Of {
+			c.line("local_of", q.String())
+		}
+	}
 	for i := range limitTable {
 		c.line("limit", limitTable[i].Key, *limitTable[i].field(&st.Limits))
 	}

@@ -25,6 +25,7 @@ func (r *reader) site(v *value) *Site {
 	seen := map[string]int{}
 	for _, s := range stations.items {
 		st := r.station(s, limits)
+		r.localTests(&st, v.at("rules"), s.at("rules"))
 		st.Products = productsOf(s.at("rules"), products)
 		if first := seen[st.ID]; first > 0 && st.ID != "" {
 			r.problem(s.at("id").node, "give each station its own id", "station id %s is there twice, first on line %d", short(st.ID), first)

@@ -83,6 +83,12 @@ var siteField = field{kind: objectKind, doc: "A network of radiation stations an
 
 var rulesFields = []field{
 	{key: "limits", kind: objectKind, doc: "Limits that differ from the published ones. A station's own go before the network's.", fields: limitFields()},
+	{key: "tests", kind: listKind, least: 1, most: LocalTestsMax, doc: "Tests of one's own, in CEL. A station has its own and the network's.", item: &field{kind: objectKind, fields: []field{
+		{key: "name", kind: nameKind, required: true, form: houseForm, doc: "Short name; it stands in the column local_missed."},
+		{key: "of", kind: listKind, required: true, least: 1, most: QuantityCount, doc: "Quantities whose primary instrument the test is held against.",
+			item: &field{kind: choiceKind, choices: quantityNames[:]}},
+		{key: "miss", kind: textKind, required: true, doc: "Expression that is true where the test misses. It may name quantities and their _sd, _min and _max, zenith, azimuth, cos_zenith, extraterrestrial, clear_global, clear_direct, clear_diffuse, clear_lw_down, day_of_year, minute_of_day, and house_ with the name of a housekeeping channel. Where a value that it names is not there it does not apply."},
+	}}},
 	{key: "products", kind: objectKind, doc: "How the clean products are made. A station's own go before the network's.", fields: []field{
 		{key: "night_negatives", kind: choiceKind, choices: []string{"keep", "zero"}, fallback: "keep",
 			doc: "What becomes of shortwave values below zero while the sun is more than 3 degrees below the horizon: all are kept, or all are set to zero."},

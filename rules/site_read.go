@@ -61,6 +61,8 @@ type reader struct {
 	problems Problems
 	warnings []Problem
 	patterns map[string]*regexp.Regexp
+	local    localCompiler
+	refused  map[*yaml.Node]bool // expressions of the network that were found wrong already
 }
 
 func (r *reader) problem(n *yaml.Node, mend, what string, args ...any) {

@@ -38,7 +38,8 @@ type Station struct {
 	Weather      []WeatherInput
 	Housekeeping []HousekeepingInput
 	Sky          Sky
-	Limits       Limits // the published ones with the network's and the station's overrides applied
+	Local        []LocalTest // the network's, then the station's own
+	Limits       Limits      // the published ones with the network's and the station's overrides applied
 	Products     Products
 	Digest       string // sha256, hex, of the station's own part: a change elsewhere in the file leaves it alone
 	Line         int    // of the site file

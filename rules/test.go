@@ -84,11 +84,12 @@ const (
 	NoHistory                   // not enough earlier minutes to compare with
 	NotLearnt                   // the site's own clear sky is not known yet
 	EclipseNow                  // the moon covers part of the sun
+	RuleBroken                  // an expression of the site's own could not be worked out
 	OutcomeCount = iota
 )
 
 var outcomeNames = [OutcomeCount]string{"not_run", "pass", "miss", "no_value", "no_partner", "sun_too_low", "sun_up", "sun_hidden",
-	"too_small", "no_weather", "no_history", "not_learnt", "eclipse"}
+	"too_small", "no_weather", "no_history", "not_learnt", "eclipse", "rule_broken"}
 
 func (o Outcome) String() string { return outcomeNames[o] }
 

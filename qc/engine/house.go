@@ -86,10 +86,12 @@ func (h *housePlan) columns(j *Judged) {
 }
 
 // HouseText writes the names of a row's channels that are out of their range, ';' between.
-func (j *Judged) HouseText(out uint32) string {
+func (j *Judged) HouseText(out uint32) string { return namesOf(j.HouseNames, out) }
+
+func namesOf(all []string, set uint32) string {
 	var names []string
-	for i, name := range j.HouseNames {
-		if out>>i&1 == 1 {
+	for i, name := range all {
+		if set>>i&1 == 1 {
 			names = append(names, name)
 		}
 	}

@@ -32,6 +32,10 @@ type Judged struct {
 	HouseNames []string // of the housekeeping channels that are tested; nil where there are none
 	HouseOut   []uint32 // those out of their sound range, a bit each in the order of HouseNames
 
+	LocalNames []string // of the station's own tests; nil where there are none
+	LocalOut   []uint32 // those that missed, a bit each in the order of LocalNames
+
+	local []float64  // the values that they may name, of the row in hand
 	house []houseRow // what the diagnosis is told of it; nil where there is none
 	sun   sunDay
 	beam  []float64 // direct normal irradiance that uncertainties are worked out with, W/m2
@@ -97,6 +101,7 @@ func newJudged(p *Plan, day int64) *Judged {
 	}
 	j.Best = p.bestColumns(&f)
 	p.house.columns(j)
+	p.local.columns(j)
 	j.reset(p, day)
 	return j
 }

@@ -87,6 +87,9 @@ func (j *Judger) AdvancePrepared(block *minute.Block) {
 	for r := j.judged.Rows; r < block.Rows; r++ {
 		j.sequence(r)
 		j.watch(r)
+		if j.judged.local != nil {
+			j.plan.localTests(j.judged, block, r)
+		}
 		j.judged.Rows = r + 1
 	}
 }

@@ -28,6 +28,7 @@ type Plan struct {
 	secondary   [rules.QuantityCount]int // where the first series beside the primary stands, -1 if there is none
 	best        []bestPlan
 	house       housePlan
+	local       localPlan
 	nothing     []float64       // a column without a value
 	passes      []rules.Outcome // a column of passes
 	setup       *fault.Setup
@@ -90,6 +91,7 @@ func NewPlan(st *rules.Station) (*Plan, error) {
 	}
 	p.pairUp()
 	p.planHouse()
+	p.planLocal()
 	p.setup = p.faultSetup()
 	p.base = p
 	return p, nil
