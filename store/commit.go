@@ -23,7 +23,8 @@ type draft struct {
 	number  uint64
 	jobs    []*job
 	removes []Removed
-	fresh   map[rawDay]bool // days that gain readings
+	fresh   map[rawDay]bool   // days that gain readings
+	reasons map[rawDay]string // why a day changes, where the writer said so
 	made    *harvest        // what comes of the minutes beside their own files
 }
 
@@ -86,7 +87,7 @@ func (a *Archive) draft(c *Commit) (*draft, error) {
 
 // plan lists the files to make.
 func (d *draft) plan() error {
-	for _, step := range []func() error{d.planRaw, d.planDays, d.planMonths, d.planRevisions, d.planFaults, d.planSummaries} {
+	for _, step := range []func() error{d.planRaw, d.planDays, d.planMonths, d.planRevisions, d.planFaults, d.planSummaries, d.planNotes} {
 		if err := step(); err != nil {
 			return err
 		}
@@ -177,7 +178,10 @@ func (d *draft) finish() (Record, error) {
 		return Record{}, err
 	}
 	r := Record{Partition: c.Partition, Number: d.number, Epoch: c.Epoch, Positions: c.Positions, RulesDigest: c.RulesDigest, Program: c.Program, Judge: engine.JudgeVersion,
-		Reason: c.Reason, Previous: p.hash, Removes: slices.Concat(d.removes, d.made.removes)}
+		Reason: c.Reason, Previous: p.hash, Removes: slices.Concat(d.removes, d.made.removes), Owed: c.Owed}
+	if c.Owed == nil {
+		r.Owed = p.last.Owed
+	}
 	if !c.Time.IsZero() {
 		r.Time = c.Time.UTC().Format(time.RFC3339)
 	}

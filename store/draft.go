@@ -16,13 +16,14 @@ type Draft struct {
 	seen  map[string]bool // table, station and period of the files to be made
 	mu    sync.Mutex
 	err   error
+	owes  bool
 }
 
 // Begin starts a commit of the partition, position, rules and reason in c, whose content is added later. Other commits of the partition
 // wait until Finish or Drop.
 func (a *Archive) Begin(c *Commit) (*Draft, error) {
 	own := *c
-	own.Raw, own.Days, own.Months, own.Revisions, own.Faults, own.Summaries = nil, nil, nil, nil, nil, nil
+	own.Raw, own.Days, own.Months, own.Revisions, own.Faults, own.Summaries, own.Notes = nil, nil, nil, nil, nil, nil, nil
 	d, err := a.draft(&own)
 	if err != nil {
 		return nil, err
@@ -43,7 +44,7 @@ func (t *Draft) Add(c *Commit) error {
 	d := t.d
 	content := t.begun
 	content.Raw, content.Days, content.Months, content.Revisions = c.Raw, c.Days, c.Months, c.Revisions
-	content.Faults, content.Summaries = c.Faults, c.Summaries
+	content.Faults, content.Summaries, content.Notes = c.Faults, c.Summaries, c.Notes
 	if c.Reason != "" {
 		content.Reason = c.Reason
 	}
@@ -84,8 +85,8 @@ func (t *Draft) fail(err error) error {
 	return t.err
 }
 
-// Empty says whether nothing has been added.
-func (t *Draft) Empty() bool { return len(t.d.jobs) == 0 }
+// Empty says whether nothing has been added, nor what is owed been changed.
+func (t *Draft) Empty() bool { return len(t.d.jobs) == 0 && !t.owes }
 
 // Finish makes it count, all or nothing, and gives the record. Errors are those of Archive.Commit.
 func (t *Draft) Finish() (Record, error) {
@@ -100,6 +101,14 @@ func (t *Draft) Finish() (Record, error) {
 		return Record{}, fmt.Errorf("commit: partition %02d: record %d: %w", t.begun.Partition, t.d.number, err)
 	}
 	return r, nil
+}
+
+// Owe replaces the days that the partition still owes when the draft is finished; see Commit.Owed.
+func (t *Draft) Owe(list []Owed) {
+	if list == nil {
+		list = []Owed{}
+	}
+	t.d.c.Owed, t.owes = list, true
 }
 
 // Drop gives it up and removes what it has staged.

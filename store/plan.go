@@ -149,6 +149,12 @@ func (d *draft) planDays() error {
 		if err := checkStation(j.Station); err != nil {
 			return err
 		}
+		if day.Reason != "" {
+			if d.reasons == nil {
+				d.reasons = map[rawDay]string{}
+			}
+			d.reasons[rawDay{j.Station, j.Day}] = day.Reason
+		}
 		if i > 0 && days[i-1].Judged.Station == j.Station && days[i-1].Judged.Day == j.Day {
 			return fmt.Errorf("day %s of %s: twice in one commit", dayName(j.Day), j.Station)
 		}

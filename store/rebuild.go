@@ -38,7 +38,7 @@ func (a *Archive) adopt() error {
 // unknownStations lists the stations that have a folder in the tree and are in no book.
 func (a *Archive) unknownStations() ([]string, error) {
 	var list []string
-	for _, t := range []string{TableRaw, TableMinutes, TableFaults} {
+	for _, t := range []string{TableRaw, TableMinutes, TableFaults, TableNotes} {
 		entries, err := a.fs.ReadDir(a.path(t))
 		if err != nil && !errors.Is(err, fs.ErrNotExist) {
 			return nil, err

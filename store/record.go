@@ -45,6 +45,10 @@ type Commit struct {
 	Revisions []*Month // days that replace those in the archive, each in the file that it is in; days with the same rows are left alone
 	Faults    []StationFaults
 	Summaries []Summary
+	Notes     []rules.Note // sealed by Note.Seal; added to those of their stations
+
+	// Owed are the days of the partition that are still to be judged once more when this commit is there; nil leaves what the record before says.
+	Owed []Owed
 }
 
 // A RawPart is readings of one station whose stamps fall on one UTC day.
@@ -57,6 +61,7 @@ type RawPart struct {
 type Day struct {
 	Judged *engine.Judged
 	Sealed bool
+	Reason string // why its rows change, as history shows it; empty leaves it to the commit
 }
 
 // StationFaults are all episodes of a station.
@@ -138,7 +143,7 @@ const (
 )
 
 // tables are all of them.
-var tables = []string{TableRaw, TableMinutes, TableFaults, TableState, TableCleanMinute, TableCleanHour, TableCleanDay, TableCleanMonth}
+var tables = []string{TableRaw, TableMinutes, TableFaults, TableState, TableCleanMinute, TableCleanHour, TableCleanDay, TableCleanMonth, TableNotes}
 
 // A File is one file of the published tree.
 type File struct {
@@ -174,6 +179,7 @@ type Record struct {
 	Previous    string     `json:"previous,omitempty"` // sha256 of the record before
 	Files       []File     `json:"files"`
 	Removes     []Removed  `json:"removes,omitempty"`
+	Owed        []Owed     `json:"owed,omitempty"`
 }
 
 func (r *Record) encode() (data []byte, hash string) {

@@ -140,6 +140,9 @@ func (d *draft) seenReason(station, day string, was *Revision) string {
 	if err != nil {
 		return ""
 	}
+	if reason := d.reasons[rawDay{station, n}]; reason != "" {
+		return reason
+	}
 	for k := n - lookBack; k <= n+lookAhead; k++ {
 		if d.fresh[rawDay{station, k}] {
 			return ReasonReadings

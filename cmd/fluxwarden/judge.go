@@ -110,6 +110,9 @@ func judgeBatch(a *store.Archive, s *rules.Site, st *rules.Station, all *minute.
 	if err != nil {
 		return nil, err
 	}
+	if plan, err = withNotes(a, plan); err != nil {
+		return nil, err
+	}
 	p := &pass{archive: a, station: st, plan: plan, fresh: map[int64]*minute.Batch{}, to: math.MaxInt64, helpers: runtime.GOMAXPROCS(0), step: bar.step}
 	parts, err := dropKnown(a, st.ID, splitByDay(all))
 	if err != nil {
@@ -133,6 +136,14 @@ func judgeBatch(a *store.Archive, s *rules.Site, st *rules.Station, all *minute.
 		_ = p.out.stop()
 		draft.Drop()
 		return nil, err
+	}
+	last, _, err := a.Last(broker.PartitionOf(st.ID))
+	if err != nil {
+		draft.Drop()
+		return nil, err
+	}
+	if owed := stillOwed(last.Owed, st.ID, p.firstDay); len(owed) < len(last.Owed) {
+		draft.Owe(owed)
 	}
 	_, err = draft.Finish()
 	return p, err

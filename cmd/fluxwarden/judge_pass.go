@@ -39,18 +39,17 @@ type pass struct {
 	firstDay  int64
 	unchanged map[int64]string // summaries in the archive
 	loadedTo  int64
+
+	past    []engine.DaySummary // what the judge looks back on, so that it can be made anew after a panic
+	trap    func(block *minute.Block, from int)
+	leftOut []string // minutes that the judge panicked on, with the reason
 }
 
 // errNoReadings says that there is nothing to judge.
 var errNoReadings = errors.New("there are no readings to judge")
 
-// run judges and hands the rows, summaries and episodes on. A panic of the core is an error: nothing is written then.
-func (p *pass) run() (err error) {
-	defer func() {
-		if r := recover(); r != nil {
-			err = fmt.Errorf("station %s: the judge panicked: %v; nothing was written", p.station.ID, r)
-		}
-	}()
+// run judges and hands the rows, summaries and episodes on. A minute on which the core panics is left out, as a daemon does.
+func (p *pass) run() error {
 	rawDays, err := p.begin()
 	if err != nil {
 		return err
@@ -59,6 +58,7 @@ func (p *pass) run() (err error) {
 	if err != nil {
 		return err
 	}
+	p.past = history
 	judger := engine.NewJudger(p.plan, history)
 	quit := make(chan struct{})
 	defer close(quit)
@@ -72,12 +72,12 @@ func (p *pass) run() (err error) {
 		if n++; p.step != nil {
 			p.step(n, len(rawDays))
 		}
-		if pr.block.Rows == 0 {
+		if pr.panicked == nil && pr.block.Rows == 0 {
 			p.reuse(pr)
 			continue
 		}
 		if last.judged != nil {
-			stop, err := p.endDay(judger)
+			stop, err := p.endDay(&judger)
 			if err != nil {
 				return err
 			}
@@ -85,9 +85,23 @@ func (p *pass) run() (err error) {
 				return p.finishEarly()
 			}
 		}
-		judger.BeginWith(pr.judged)
 		p.reuse(prepared{block: last.block})
-		judger.AdvancePrepared(pr.block)
+		last = prepared{}
+		cause := pr.panicked
+		if cause == nil {
+			cause = guarded(func() {
+				judger.BeginWith(pr.judged)
+				if p.trap != nil {
+					p.trap(pr.block, 0)
+				}
+				judger.AdvancePrepared(pr.block)
+			})
+		}
+		if cause != nil {
+			if pr, judger = p.careful(t, cause); pr.judged == nil {
+				continue
+			}
+		}
 		p.days++
 		p.inHand = append(p.inHand, pr.judged)
 		last = pr
@@ -156,8 +170,8 @@ func (p *pass) history(first int64) ([]engine.DaySummary, error) {
 
 // endDay closes the day and lets go of those that no episode can reach any more. stop is said when the days asked for are judged and
 // nothing that later days look back on has changed.
-func (p *pass) endDay(judger *engine.Judger) (stop bool, err error) {
-	s := judger.End()
+func (p *pass) endDay(judger **engine.Judger) (stop bool, err error) {
+	s := p.end(judger)
 	p.ended = s.Day
 	p.episodes = append(p.episodes, s.Closed...)
 	text, err := engine.EncodeSummary(&s)

@@ -2,7 +2,6 @@ package main
 
 import (
 	"errors"
-	"fmt"
 	"math"
 	"slices"
 
@@ -16,6 +15,8 @@ type prepared struct {
 	judged *engine.Judged
 	block  *minute.Block
 	err    error
+
+	panicked any // what the stateless stage panicked with
 }
 
 // A dayTask is a day on its way through the stateless stage.
@@ -165,7 +166,7 @@ func together(a, b *minute.Batch) *minute.Batch {
 func (p *pass) prepareDay(g *minute.Gatherer, day int64, readings *minute.Batch) (out prepared) {
 	defer func() {
 		if r := recover(); r != nil {
-			out = prepared{err: fmt.Errorf("station %s: %s: the judge panicked: %v; nothing was written", p.station.ID, dayText(day), r)}
+			out = prepared{panicked: r}
 		}
 	}()
 	select {

@@ -33,6 +33,7 @@ func commands() []command {
 		{"run", "the daemon: takes readings, judges them, keeps the archive", cmdRun},
 		{"judge", "judge files of readings into an archive", cmdJudge},
 		{"rejudge", "judge an archive's readings again with today's site file", cmdRejudge},
+		{"note", "write down a visit, a cleaning, an override; list what was written", cmdNote},
 		{"verify", "prove an archive intact, or name what is not", cmdVerify},
 		{"history", "the revisions of a station-day: what changed, why, by how much", cmdHistory},
 		{"export", "write an archive's minutes as CSV", cmdExport},

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"cmp"
 	"errors"
 	"flag"
 	"fmt"
@@ -15,6 +16,7 @@ import (
 
 	"fluxwarden/ingest/broker"
 	"fluxwarden/qc/engine"
+	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
 	"fluxwarden/store"
 	"fluxwarden/store/vfs"
@@ -32,7 +34,8 @@ type rejudging struct {
 	atOnce   bool // commit a partition as soon as it is judged
 	reasons  reasonBook
 	tally    tally
-	skipped  []string // stations that the site file does not have
+	trap     func(block *minute.Block, from int) // a test may panic in it as the core might
+	skipped  []string                            // stations that the site file does not have
 
 	mu     sync.Mutex
 	diffs  []difference
@@ -134,10 +137,10 @@ func (r *rejudging) run(station string, asJSON bool) (int, error) {
 	}
 	if !slices.ContainsFunc(r.diffs, func(d difference) bool { return !d.empty() }) {
 		fmt.Fprintln(os.Stderr, "nothing changes; nothing was written")
-		if r.atOnce {
-			return exitOK, r.keepSchedule(station != "")
+		if err := r.finishAll(); err != nil || !r.atOnce { // a draft without rows only says that no day is owed any more
+			return exitOK, err
 		}
-		return exitOK, nil
+		return exitOK, r.keepSchedule(station != "")
 	}
 	if r.dryRun {
 		fmt.Fprintln(os.Stderr, "nothing was written: --dry-run")
@@ -244,8 +247,13 @@ func (r *rejudging) judgeGroup(group []*rules.Station, helpers int) error {
 			return err
 		}
 	}
+	last, _, err := r.archive.Last(broker.PartitionOf(group[0].ID))
+	if err != nil {
+		return err
+	}
+	owed := last.Owed
 	for _, st := range group {
-		d, err := r.judgeStation(st, draft, helpers)
+		d, err := r.judgeStation(st, draft, &owed, helpers)
 		if err != nil {
 			if draft != nil {
 				draft.Drop()
@@ -255,6 +263,9 @@ func (r *rejudging) judgeGroup(group []*rules.Station, helpers int) error {
 		r.mu.Lock()
 		r.diffs = append(r.diffs, d)
 		r.mu.Unlock()
+	}
+	if draft != nil && len(owed) < len(last.Owed) {
+		draft.Owe(owed)
 	}
 	switch {
 	case draft == nil:
@@ -270,15 +281,18 @@ func (r *rejudging) judgeGroup(group []*rules.Station, helpers int) error {
 	return nil
 }
 
-func (r *rejudging) judgeStation(st *rules.Station, draft *store.Draft, helpers int) (difference, error) {
+func (r *rejudging) judgeStation(st *rules.Station, draft *store.Draft, owed *[]store.Owed, helpers int) (difference, error) {
 	plan, err := engine.NewPlan(st)
 	if err != nil {
 		return difference{}, err
 	}
-	p := &pass{archive: r.archive, station: st, plan: plan, from: r.from, to: r.to, helpers: helpers, step: r.tally.station(st.ID)}
+	if plan, err = withNotes(r.archive, plan); err != nil {
+		return difference{}, err
+	}
+	p := &pass{archive: r.archive, station: st, plan: plan, from: r.from, to: max(r.to, lastOwed(*owed, st.ID)), trap: r.trap, helpers: helpers, step: r.tally.station(st.ID)}
 	p.out = newMonths(r.archive, draft, st.ID)
 	p.out.site = r.site
-	p.out.reason = func(old []string) string { return r.reasons.why(st, old) }
+	p.out.reason = func(old []string) string { return cmp.Or(r.reasons.why(st, old), owedReason(owed, st.ID)) }
 	err = p.run()
 	if errors.Is(err, errNoReadings) {
 		err = nil
@@ -287,6 +301,7 @@ func (r *rejudging) judgeStation(st *rules.Station, draft *store.Draft, helpers 
 		_ = p.out.stop()
 		return difference{}, err
 	}
+	*owed = stillOwed(*owed, st.ID, p.firstDay)
 	return p.out.diff, p.out.stop()
 }
 

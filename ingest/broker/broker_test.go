@@ -132,7 +132,7 @@ func TestAStoreThatIsTooSmallIsSaid(t *testing.T) {
 
 func TestWhatIsPublishedHasAStream(t *testing.T) {
 	_, b := start(t, t.TempDir())
-	for _, subject := range []string{FindingSubject("northmoor"), ChangeSubject("note")} {
+	for _, subject := range []string{FindingSubject("northmoor"), ChangeSubject(7)} {
 		if err := b.Publish(t.Context(), subject, []byte("x")); err != nil {
 			t.Error(err)
 		}

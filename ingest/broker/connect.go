@@ -144,9 +144,6 @@ func (b *Broker) Publish(ctx context.Context, subject string, data []byte) error
 // FindingSubject is where changes to a station's episodes are published, in the stream FINDINGS.
 func FindingSubject(station string) string { return findingsPrefix + station }
 
-// ChangeSubject is where notes and rule sets are published, in the stream CHANGES.
-func ChangeSubject(kind string) string { return changesPrefix + kind }
-
 // Close ends the connection for good.
 func (b *Broker) Close() { b.Conn.Close() }
 

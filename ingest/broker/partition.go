@@ -26,6 +26,9 @@ func PartitionOf(station string) int {
 	return int(h % Partitions)
 }
 
+// ChangeSubject is the subject of what people say of a partition's stations, in the stream CHANGES.
+func ChangeSubject(partition int) string { return fmt.Sprintf("%s%02d", changesPrefix, partition) }
+
 // JournalSubject is the subject of a partition's readings in the stream JOURNAL.
 func JournalSubject(partition int) string { return fmt.Sprintf("%s%02d", journalPrefix, partition) }
 
