@@ -25,7 +25,7 @@ type draft struct {
 	removes []Removed
 	fresh   map[rawDay]bool   // days that gain readings
 	reasons map[rawDay]string // why a day changes, where the writer said so
-	made    *harvest        // what comes of the minutes beside their own files
+	made    *harvest          // what comes of the minutes beside their own files
 }
 
 type rawDay struct {

@@ -139,6 +139,12 @@ func joinRaw(tables []*table.Table) *table.Table {
 }
 
 func (d *draft) planDays() error {
+	for _, r := range d.c.DayReasons {
+		if d.reasons == nil {
+			d.reasons = map[rawDay]string{}
+		}
+		d.reasons[rawDay{r.Station, r.Day}] = r.Reason
+	}
 	days := slices.Clone(d.c.Days)
 	slices.SortStableFunc(days, func(x, y Day) int {
 		return cmp.Or(cmp.Compare(x.Judged.Station, y.Judged.Station), cmp.Compare(x.Judged.Day, y.Judged.Day))
@@ -148,12 +154,6 @@ func (d *draft) planDays() error {
 		j := day.Judged
 		if err := checkStation(j.Station); err != nil {
 			return err
-		}
-		if day.Reason != "" {
-			if d.reasons == nil {
-				d.reasons = map[rawDay]string{}
-			}
-			d.reasons[rawDay{j.Station, j.Day}] = day.Reason
 		}
 		if i > 0 && days[i-1].Judged.Station == j.Station && days[i-1].Judged.Day == j.Day {
 			return fmt.Errorf("day %s of %s: twice in one commit", dayName(j.Day), j.Station)

@@ -47,6 +47,8 @@ type Commit struct {
 	Summaries []Summary
 	Notes     []rules.Note // sealed by Note.Seal; added to those of their stations
 
+	// DayReasons say why single days change; see Reason.
+	DayReasons []DayReason
 	// Owed are the days of the partition that are still to be judged once more when this commit is there; nil leaves what the record before says.
 	Owed []Owed
 }
@@ -61,7 +63,13 @@ type RawPart struct {
 type Day struct {
 	Judged *engine.Judged
 	Sealed bool
-	Reason string // why its rows change, as history shows it; empty leaves it to the commit
+}
+
+// A DayReason is why a station-day's rows change, as history shows it.
+type DayReason struct {
+	Station string
+	Day     int64
+	Reason  string
 }
 
 // StationFaults are all episodes of a station.

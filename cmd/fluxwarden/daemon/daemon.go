@@ -10,6 +10,7 @@ import (
 	"net"
 	"net/http"
 	"os"
+	"strings"
 	"sync"
 	"sync/atomic"
 	"syscall"
@@ -126,7 +127,7 @@ func (d *Daemon) openArchive(context.Context) error {
 		return &Unusable{fmt.Errorf("archive %s: %w; make the directory writable for uid %d or name another with --archive", dir, err, os.Getuid())}
 	}
 	host, _ := os.Hostname()
-	a, err := worker.OpenStore(vfs.OS{}, dir, store.Options{Owner: fmt.Sprintf("process %d on %s", os.Getpid(), host)})
+	a, err := worker.OpenStore(vfs.OS{}, dir, store.Options{Owner: fmt.Sprintf("process %d on %s%s", os.Getpid(), host, brokerWords(&d.config.Settings.Broker))})
 	var held *vfs.HeldError
 	switch {
 	case errors.As(err, &held):
@@ -146,6 +147,17 @@ func (d *Daemon) openArchive(context.Context) error {
 	d.metrics.Stations(d.stationIDs())
 	d.metrics.Calibrations(d.rules.newest())
 	return nil
+}
+
+// brokerWords tell those who find the archive in use where they reach its daemon: the command note reads it.
+func brokerWords(b *BrokerSettings) string {
+	switch {
+	case b.URL != "":
+		return ", broker " + b.URL
+	case b.Listen != "none" && b.Listen != "" && !strings.HasSuffix(b.Listen, ":0"):
+		return ", broker nats://" + b.Listen
+	}
+	return ""
 }
 
 func (d *Daemon) stationIDs() []string {
@@ -272,7 +284,7 @@ func (d *Daemon) bringUp(ctx context.Context) error {
 	}
 	d.gate.Store(g)
 	w := worker.New(worker.Config{
-		Journal: &journal{b: d.broker, onFull: d.metrics.Journal}, Lease: d.lease(ctx), Archive: d.archive, Rules: d.rules,
+		Journal: &journal{b: d.broker, onFull: d.metrics.Journal}, Lease: d.lease(ctx), Changes: &changes{b: d.broker}, Archive: d.archive, Rules: d.rules,
 		Findings: findings{d.broker, d.config.Clock.Now}, Aside: aside{d.broker, d.config.Clock.Now}, Live: d.hub, Meter: d.metrics.Worker(),
 		Clock: d.config.Clock, Log: d.log, Program: d.config.Program, Grace: time.Duration(d.config.Settings.Grace),
 		CommitEvery: time.Duration(d.config.Settings.CommitEvery)})

@@ -19,7 +19,7 @@ import (
 const namespace = "fluxwarden"
 
 // Operations are all that can fail and is counted by its name.
-var Operations = []string{"commit", "lease", "lost_partition", "judge", "publish_findings", "purge_journal", "read_archive", "read_journal", "set_aside",
+var Operations = []string{"commit", "lease", "lost_partition", "judge", "publish_findings", "purge_journal", "read_archive", "read_journal", "read_changes", "set_aside",
 	"broker", "reload", "disk", "http", "clock", "notify", "credentials"}
 
 // NotifyWays are the ways on which the daemon's own messages go out.
@@ -49,6 +49,8 @@ type Metrics struct {
 	uncommittedSince, unsealedDays, oldestUnsealed prometheus.Gauge
 	notified, notifyFailed, notifyGivenUp          *prometheus.CounterVec
 	notifyWaiting                                  prometheus.Gauge
+	notes                                          prometheus.Counter
+	owedDays                                       prometheus.Gauge
 }
 
 // New makes the registry. now is the daemon's clock.
@@ -100,7 +102,7 @@ func (m *Metrics) worker() {
 	m.late = m.counter("worker", "late_readings_total", "Readings that came after their minute was judged.")
 	m.judgedAgain = m.counter("worker", "rejudged_total", "Station-days judged again, for late readings, for an episode that reaches back, or for their seal.")
 	m.setAside = m.counterVec("worker", "set_aside_readings_total", "Readings that could not be judged and lie in REFUSED, by reason.", "reason")
-	for _, r := range []string{worker.ReasonPanic, worker.ReasonUnreadable} {
+	for _, r := range []string{worker.ReasonPanic, worker.ReasonUnreadable, worker.ReasonNote} {
 		m.setAside.WithLabelValues(r)
 	}
 	m.gaps = m.counterVec("journal", "gaps_total", "Times that the journal was not what was read before, by reason.", "reason")
@@ -140,6 +142,8 @@ func (m *Metrics) archive() {
 
 func (m *Metrics) backlog() {
 	m.uncommittedSince = m.gauge("commit", "waiting_since_timestamp_seconds", "Last commit of the partition whose readings have waited longest for the next one; 0 while none waits.")
+	m.notes = m.counter("worker", "notes_total", "Notes that the daemon was given and took.")
+	m.owedDays = m.gauge("worker", "owed_days", "Station-days that late readings, a note or a fault found later make to be judged once more; they are, beside the readings.")
 	m.unsealedDays = m.gauge("seal", "waiting", "Station-days that are not sealed yet.")
 	m.oldestUnsealed = m.gauge("seal", "oldest_waiting_timestamp_seconds", "Begin of the oldest station-day that is not sealed; 0 while there is none.")
 }

@@ -50,6 +50,7 @@ func (w workerView) SetAside(reason string, n int) {
 }
 func (w workerView) Failed(operation string) { w.m.Failed(operation) }
 func (w workerView) Owned(n int)             { w.m.owned.Set(float64(n)) }
+func (w workerView) Noted(n int)             { w.m.notes.Add(float64(n)) }
 func (w workerView) Journal(_ worker.StreamState, pending uint64) {
 	w.m.pending.Set(float64(pending))
 }
@@ -57,6 +58,7 @@ func (w workerView) Waiting(b worker.Backlog) {
 	w.m.uncommittedSince.Set(seconds(b.UncommittedSince))
 	w.m.unsealedDays.Set(float64(b.UnsealedDays))
 	w.m.oldestUnsealed.Set(seconds(b.OldestUnsealed))
+	w.m.owedDays.Set(float64(b.Owed))
 }
 func (w workerView) Committed(took time.Duration, rows int, err error) {
 	w.m.commitSeconds.Observe(took.Seconds())

@@ -11,6 +11,7 @@ import (
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
+	"fluxwarden/store"
 )
 
 // excludedMax is how many minutes of a day may be left out because the core cannot bear them.
@@ -131,6 +132,7 @@ func (s *station) rebuild(ctx context.Context) error {
 			s.open.Append(&r)
 		}
 	}
+	c.idle = s.current.idle && len(all.At) == 0
 	s.w.spares.takeBlock(s.current.plan, s.current.block)
 	s.w.spares.takeJudged(s.current.plan, s.current.judged)
 	s.current = c
@@ -138,13 +140,13 @@ func (s *station) rebuild(ctx context.Context) error {
 }
 
 // foldLate takes the late readings in: what is known already is dropped, the rest joins the raw ones, and the days that
-// gained something are returned.
-func (s *station) foldLate() (map[int64]bool, error) {
+// gained something are owed.
+func (s *station) foldLate() error {
 	dirty := map[int64]bool{}
 	for _, day := range slices.Sorted(maps.Keys(s.late)) {
 		all, err := s.readings(day)
 		if err != nil {
-			return nil, err
+			return err
 		}
 		k := newKnown()
 		k.add(all)
@@ -166,70 +168,9 @@ func (s *station) foldLate() (map[int64]bool, error) {
 		delete(s.late, day)
 	}
 	for day := range dirty {
-		s.again[day] = true
+		s.owe(day, store.ReasonReadings)
 	}
-	return dirty, nil
-}
-
-// judgeAgain brings every day up to date that gained readings or looks back on one whose summary has changed.
-func (s *station) judgeAgain(ctx context.Context) error {
-	if _, err := s.foldLate(); err != nil {
-		return err
-	}
-	if len(s.again) == 0 {
-		return nil
-	}
-	first := slices.Min(slices.Collect(maps.Keys(s.again)))
-	if err := s.load(first - engine.HistoryDays); err != nil {
-		return err
-	}
-	changed := map[int64]bool{}
-	looksBack := func(day int64) bool {
-		for d := range changed {
-			if d < day && d >= day-engine.HistoryDays {
-				return true
-			}
-		}
-		return false
-	}
-	for _, day := range s.daysFrom(first) {
-		if !s.again[day] && !looksBack(day) {
-			continue
-		}
-		moved, err := s.closedDayAgain(ctx, day)
-		if err != nil {
-			return err
-		}
-		if moved {
-			changed[day] = true
-		}
-	}
-	if c := s.current; c != nil && (s.again[c.day] || looksBack(c.day)) {
-		s.w.cfg.Meter.DayJudgedAgain(s.id)
-		if err := s.rebuild(ctx); err != nil {
-			return err
-		}
-	}
-	clear(s.again)
 	return nil
-}
-
-// daysFrom lists the days before the current one that have readings, from the first on.
-func (s *station) daysFrom(first int64) []int64 {
-	set := map[int64]bool{}
-	for d := range s.summaries {
-		set[d] = true
-	}
-	for d := range s.again {
-		set[d] = true
-	}
-	var days []int64
-	for _, d := range slices.Sorted(maps.Keys(set)) {
-		if d >= first && (s.current == nil || d < s.current.day) {
-			days = append(days, d)
-		}
-	}
-	return days
 }
 
 // closedDayAgain judges a day before the current one and says whether what later days may know of it has changed.
@@ -238,6 +179,9 @@ func (s *station) closedDayAgain(ctx context.Context, day int64) (moved bool, er
 	all, err := s.readings(day)
 	if err != nil {
 		return false, err
+	}
+	if len(all.At) == 0 {
+		return false, nil // a note is about a day without readings
 	}
 	c := s.judgeDay(ctx, day, all, minute.PerDay)
 	if c == nil {
@@ -264,27 +208,6 @@ func sameSummary(a, b engine.DaySummary) bool {
 	x, errX := json.Marshal(a)
 	y, errY := json.Marshal(b)
 	return errX == nil && errY == nil && string(x) == string(y)
-}
-
-// settleBack judges again the days before the current one that an episode reaches now but did not at the last commit, or
-// the other way round.
-func (s *station) settleBack(ctx context.Context, episodes []fault.Episode) error {
-	touched := s.touched(episodes)
-	for _, day := range touched {
-		if s.judged[day] != nil {
-			continue
-		}
-		if err := s.load(day - engine.HistoryDays); err != nil {
-			return err
-		}
-		if _, ok := s.summaries[day]; !ok {
-			continue // no readings on that day
-		}
-		if _, err := s.closedDayAgain(ctx, day); err != nil {
-			return err
-		}
-	}
-	return nil
 }
 
 // touched lists the days before the current one whose rows the change of episodes since the last commit may change.

@@ -9,15 +9,21 @@ import (
 	"time"
 
 	"fluxwarden/qc/minute"
+	"fluxwarden/store"
 )
 
 // A partition is a set of stations and what was committed of it last.
 type partition struct {
 	number    int
 	epoch     uint64
-	base      uint64   // the number of the last commit
-	position  Position // of that commit
-	taken     Position // messages up to this one are with the stations or in the archive
+	base      uint64                  // the number of the last commit
+	position  Position                // of that commit
+	taken     Position                // messages up to this one are with the stations or in the archive
+	changes   Position                // of the stream of notes, as of that commit
+	heard     Position                // notes up to this one are with the stations or in the archive
+	looked    bool                    // whether heard was held against the stream
+	owed      map[string][]store.Owed // days to be judged once more, of stations whose state has not been made yet
+	due       bool                    // what was owed is paid: a commit should carry it soon
 	stations  map[string]*station
 	waiting   []string // declared stations whose state has not been made yet
 	rows      int      // readings that wait for a commit
@@ -33,14 +39,31 @@ func (w *Worker) adopt(n int, epoch uint64, now time.Time) (*partition, error) {
 	if err != nil {
 		return nil, fmt.Errorf("partition %d: last commit: %w", n, err)
 	}
-	p := &partition{number: n, epoch: epoch, base: base, stations: map[string]*station{}, waiting: slices.Clone(w.cfg.Rules.Stations(n))}
-	if len(positions) > 0 {
-		p.position = positions[len(positions)-1]
+	p := &partition{number: n, epoch: epoch, base: base, stations: map[string]*station{}, owed: map[string][]store.Owed{}, waiting: slices.Clone(w.cfg.Rules.Stations(n))}
+	p.position, p.changes = journalAndChanges(positions)
+	p.taken, p.heard = p.position, p.changes
+	owed, err := w.cfg.Archive.Owed(n)
+	if err != nil {
+		return nil, fmt.Errorf("partition %d: days owed: %w", n, err)
 	}
-	p.taken = p.position
+	for _, o := range owed {
+		p.owed[o.Station] = append(p.owed[o.Station], o)
+	}
 	// Partitions commit one after the other and not all at once: the readers of the journal then never wait long.
 	p.committed = now.Add(-w.cfg.CommitEvery * time.Duration(n%partitionCount) / partitionCount)
 	return p, nil
+}
+
+// journalAndChanges picks the two streams' positions.
+func journalAndChanges(positions []Position) (journal, changes Position) {
+	for _, p := range positions {
+		if p.Stream == ChangesStream {
+			changes = p
+		} else {
+			journal = p
+		}
+	}
+	return journal, changes
 }
 
 // openCursor reads the journal from the least position of the partitions, after holding each against the stream.
@@ -136,7 +159,7 @@ func (w *Worker) commitDue(ctx context.Context, now time.Time) {
 		}
 		since := now.Sub(p.committed)
 		due := p.rows >= w.cfg.CommitRows || since >= w.cfg.CommitEvery && (p.rows > 0 || p.dirty) ||
-			since >= idlePositionEvery && p.base > 0 && p.taken.Seq > p.position.Seq
+			p.due || since >= idlePositionEvery && p.base > 0 && (p.taken.Seq > p.position.Seq || p.heard.Seq > p.changes.Seq)
 		if due && !now.Before(p.retryAt) {
 			w.commit(ctx, p, now)
 		}
@@ -159,6 +182,12 @@ func (w *Worker) commit(ctx context.Context, p *partition, now time.Time) {
 	if w.cfg.Faulty.PositionEarly && w.cursor != nil {
 		c.Positions[0].Seq += w.cursor.Pending()
 		c.Positions[0].Stamp = 0
+	}
+	if p.heard.Created != 0 {
+		c.Positions = append(c.Positions, p.heard)
+	}
+	for _, id := range slices.Sorted(maps.Keys(p.owed)) {
+		c.Owed = append(c.Owed, p.owed[id]...)
 	}
 	ids := slices.Sorted(maps.Keys(p.stations))
 	prepared := make([]*prepared, 0, len(ids))
@@ -190,6 +219,7 @@ func (w *Worker) commit(ctx context.Context, p *partition, now time.Time) {
 		w.log.Info("commits come off again", "partition", p.number)
 	}
 	p.base, p.position, p.committed, p.rows, p.dirty, p.wait, w.failing = base, c.Positions[0], now, 0, false, 0, ""
+	p.changes, p.due = p.heard, false
 	delete(w.retry, p.number)
 	for i, id := range ids {
 		p.stations[id].settled(ctx, prepared[i])
@@ -249,10 +279,11 @@ func (w *Worker) purge(ctx context.Context, now time.Time) {
 			if base == 0 && len(w.cfg.Rules.Stations(n)) == 0 {
 				continue
 			}
-			if len(positions) == 0 {
+			at, _ := journalAndChanges(positions)
+			if at.Created == 0 {
 				return
 			}
-			seq, stream = positions[len(positions)-1].Seq, positions[len(positions)-1].Created
+			seq, stream = at.Seq, at.Created
 		}
 		if stream != w.stream.Created {
 			return
@@ -262,6 +293,7 @@ func (w *Worker) purge(ctx context.Context, now time.Time) {
 	if oldest == 0 || oldest == ^uint64(0) {
 		return
 	}
+	w.purgeChanges(ctx)
 	if err := w.cfg.Journal.Purge(ctx, oldest, now.Add(-purgeBehind)); err != nil {
 		w.fail("purge_journal", "the journal cannot be cut behind what is committed", err)
 	}

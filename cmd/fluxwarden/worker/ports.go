@@ -9,6 +9,8 @@ import (
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
+	"fluxwarden/store"
 )
 
 // ErrLost is what Archive.Commit answers when another worker has created the record first: the partition is no longer ours.
@@ -65,6 +67,29 @@ type Cursor interface {
 	Close()
 }
 
+// ChangesStream is the name under which commit records keep how far the stream of notes was read.
+const ChangesStream = "CHANGES"
+
+// Changes is the stream of what people say: the notes that the daemon was given.
+type Changes interface {
+	State(ctx context.Context) (StreamState, error)
+	StampOf(ctx context.Context, seq uint64) (int64, bool, error)
+	// Read gives messages in order, from the first whose number is at least from, as many as it likes; none where there are no more.
+	Read(ctx context.Context, from uint64) ([]Change, error)
+	// Purge forgets messages up to and with seq.
+	Purge(ctx context.Context, seq uint64) error
+}
+
+// A Change is one message of Changes.
+type Change struct {
+	Seq       uint64
+	Stamp     int64 // when the broker stored it, ns since 1970
+	Partition int
+	Note      rules.Note
+	Bad       error  // why the message cannot be read
+	Payload   []byte // as it came
+}
+
 // A Lease says which partitions this worker should work on now, with the epoch of each. It only advises: the archive decides.
 type Lease interface {
 	Owned(ctx context.Context, now time.Time) (map[int]uint64, error)
@@ -80,6 +105,10 @@ type Archive interface {
 	ReadRaw(station string, from, to int64, each func(*minute.Batch) error) error
 	Summaries(station string, from, to int64) ([]engine.DaySummary, error)
 	Faults(station string) ([]fault.Episode, error)
+	// Notes gives all notes of a station, withdrawn ones and withdrawals among them.
+	Notes(station string) ([]rules.Note, error)
+	// Owed lists the days of the partition's stations that the last commit left to be judged once more.
+	Owed(partition int) ([]store.Owed, error)
 	// Compact makes one file of a station's month, YYYY-MM, after the record base, and gives the record it made; base where there was
 	// nothing to do.
 	Compact(partition int, base uint64, station, month string) (uint64, error)
@@ -98,11 +127,14 @@ type Commit struct {
 	Days        []Day
 	Faults      []StationFaults
 	Summaries   []engine.DaySummary
+	Notes       []rules.Note
+	DayReasons  []store.DayReason // why days change that had been judged before
+	Owed        []store.Owed      // days that are still to be judged once more: all of the partition
 }
 
 // Empty says whether the commit would carry positions only.
 func (c *Commit) Empty() bool {
-	return len(c.Raw) == 0 && len(c.Days) == 0 && len(c.Faults) == 0 && len(c.Summaries) == 0
+	return len(c.Raw) == 0 && len(c.Days) == 0 && len(c.Faults) == 0 && len(c.Summaries) == 0 && len(c.Notes) == 0
 }
 
 // A RawPart is readings of one station whose minutes belong to one UTC day.
@@ -168,6 +200,7 @@ type Meter interface {
 	SetAside(reason string, n int)
 	Failed(operation string)
 	Owned(partitions int)
+	Noted(n int)
 	Waiting(b Backlog)
 }
 
@@ -176,6 +209,7 @@ type Backlog struct {
 	UncommittedSince time.Time // the longest that a partition with readings has waited for a commit; zero if none waits
 	UnsealedDays     int       // station-days
 	OldestUnsealed   time.Time // begin of the oldest of them; zero if there is none
+	Owed             int       // station-days to be judged once more
 }
 
 // Reasons under which a Meter counts a journal that is not the one that was read before.
@@ -189,4 +223,5 @@ const (
 const (
 	ReasonPanic      = "panic"
 	ReasonUnreadable = "unreadable"
+	ReasonNote       = "note" // a note that is about nothing the site has, or is not whole
 )

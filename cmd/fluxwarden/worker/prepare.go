@@ -10,29 +10,32 @@ import (
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/store"
 )
 
 // prepared is what of a station went into a commit, to be noted once it has come off.
 type prepared struct {
 	episodes []fault.Episode
 	sealed   []int64
+	notes    int
 }
 
 // prepare brings the station up to date with all its readings and adds to the commit what the archive does not have.
 func (s *station) prepare(ctx context.Context, now time.Time, c *Commit) (*prepared, error) {
-	if !s.w.cfg.Faulty.NoJudgingAgain {
-		if err := s.judgeAgain(ctx); err != nil {
-			return nil, err
-		}
-	} else if _, err := s.foldLate(); err != nil {
+	if err := s.foldLate(); err != nil {
+		return nil, err
+	}
+	if err := s.payAlone(ctx, now); err != nil {
 		return nil, err
 	}
 	pr := &prepared{episodes: s.episodes()}
-	if err := s.settleBack(ctx, pr.episodes); err != nil {
-		return nil, err
-	}
-	if err := s.judgeForSeal(ctx, minute.Stamp(now.UnixMicro())); err != nil {
-		return nil, err
+	s.oweTouched(pr.episodes)
+	s.oweSeals(minute.Stamp(now.UnixMicro()))
+	c.Owed = append(c.Owed, s.owed()...)
+	c.Notes = append(c.Notes, s.newNotes...)
+	pr.notes = len(s.newNotes)
+	for _, day := range slices.Sorted(maps.Keys(s.paid)) {
+		c.DayReasons = append(c.DayReasons, store.DayReason{Station: s.id, Day: day, Reason: s.paid[day]})
 	}
 	for _, day := range slices.Sorted(maps.Keys(s.raw)) {
 		c.Raw = append(c.Raw, RawPart{Day: day, Batch: s.raw[day]})
@@ -42,7 +45,7 @@ func (s *station) prepare(ctx context.Context, now time.Time, c *Commit) (*prepa
 		if sealed {
 			pr.sealed = append(pr.sealed, day)
 		}
-		s.addDay(c, s.w.cfg.Rules.PlanFor(s.id, day), s.judged[day], pr.episodes, sealed)
+		s.addDay(c, s.planFor(day), s.judged[day], pr.episodes, sealed)
 	}
 	if s.current != nil && s.current.changed {
 		s.addDay(c, s.current.plan, s.current.judged, pr.episodes, false)
@@ -75,31 +78,16 @@ func (s *station) addDay(c *Commit, plan *engine.Plan, j *engine.Judged, episode
 	}
 }
 
-// judgeForSeal judges the days whose time has come once more from all that is kept of them, so that they can be written
-// for good.
-func (s *station) judgeForSeal(ctx context.Context, now minute.Stamp) error {
-	for _, day := range slices.Sorted(maps.Keys(s.sealing)) {
-		if !isComplete(day, now) || s.judged[day] != nil {
-			continue
-		}
-		if _, err := s.closedDayAgain(ctx, day); err != nil {
-			return err
-		}
-		if s.judged[day] == nil { // the core cannot bear it: there is nothing to seal
-			delete(s.sealing, day)
-		}
-	}
-	return nil
-}
-
 // settled notes that a commit has come off.
 func (s *station) settled(ctx context.Context, pr *prepared) {
 	clear(s.raw)
 	for day, j := range s.judged {
-		s.w.spares.takeJudged(s.w.cfg.Rules.PlanFor(s.id, day), j)
+		s.w.spares.takeJudged(s.planFor(day), j)
 	}
 	clear(s.judged)
 	clear(s.unsaved)
+	clear(s.paid)
+	s.newNotes = s.newNotes[pr.notes:]
 	for _, day := range pr.sealed {
 		delete(s.sealing, day)
 	}
@@ -113,7 +101,7 @@ func (s *station) settled(ctx context.Context, pr *prepared) {
 
 // waits says whether the station has something that a commit should carry besides readings.
 func (s *station) waits(now minute.Stamp) bool {
-	if s.told || len(s.unsaved) > 0 || s.current != nil && s.current.changed {
+	if s.told || len(s.unsaved)+len(s.newNotes)+len(s.paid) > 0 || s.current != nil && s.current.changed {
 		return true
 	}
 	for day := range s.sealing {

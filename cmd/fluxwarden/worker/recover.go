@@ -29,13 +29,16 @@ const sealingDays = 5
 func (w *Worker) recoverStation(ctx context.Context, partition int, id string) (*station, error) {
 	s := &station{w: w, id: id, partition: partition, watermark: math.MinInt64 / 2, raw: map[int64]*minute.Batch{}, late: map[int64]*minute.Batch{},
 		open: &minute.Batch{Station: id}, summaries: map[int64]engine.DaySummary{}, lastEnded: firstDay - 1, judged: map[int64]*engine.Judged{},
-		unsaved: map[int64]bool{}, again: map[int64]bool{}, sealing: map[int64]bool{}, months: map[string]bool{}, published: map[string]fault.Episode{}, aside: map[int64]bool{}}
+		unsaved: map[int64]bool{}, again: map[int64]string{}, paid: map[int64]string{}, plans: map[*engine.Plan]*engine.Plan{}, sealing: map[int64]bool{}, months: map[string]bool{}, published: map[string]fault.Episode{}, aside: map[int64]bool{}}
 	var err error
 	if s.committed, err = w.cfg.Archive.Faults(id); err != nil {
 		return nil, err
 	}
 	for _, e := range s.committed {
 		s.published[e.ID] = e
+	}
+	if s.notes, err = w.cfg.Archive.Notes(id); err != nil {
+		return nil, err
 	}
 	today := minute.Stamp(w.cfg.Clock.Now().UnixMicro()).Day()
 	s.loadedFrom = lastDay + 1
@@ -57,6 +60,9 @@ func (w *Worker) recoverStation(ctx context.Context, partition int, id string) (
 		}
 	}
 	if err := s.takeUncommittedDays(ctx); err != nil {
+		return nil, err
+	}
+	if err := s.takeOwed(); err != nil {
 		return nil, err
 	}
 	s.showRecovered()

@@ -8,7 +8,7 @@ import (
 // sparesMax bounds the days' columns that are kept for use again. A day is a megabyte or two.
 const sparesMax = 16
 
-// spares keeps columns that are no longer in use, by the plan that they were made for.
+// spares keeps columns that are no longer in use, by the plan that they were made for, without its notes.
 type spares struct {
 	blocks map[*engine.Plan][]*minute.Block
 	judged map[*engine.Plan][]*engine.Judged
@@ -20,9 +20,9 @@ func newSpares() *spares {
 }
 
 func (s *spares) block(plan *engine.Plan, day int64, channels int) *minute.Block {
-	if list := s.blocks[plan]; len(list) > 0 {
+	if list := s.blocks[plan.Base()]; len(list) > 0 {
 		b := list[len(list)-1]
-		s.blocks[plan] = list[:len(list)-1]
+		s.blocks[plan.Base()] = list[:len(list)-1]
 		s.count--
 		b.Reset(day)
 		return b
@@ -31,9 +31,9 @@ func (s *spares) block(plan *engine.Plan, day int64, channels int) *minute.Block
 }
 
 func (s *spares) judgedFor(plan *engine.Plan, day int64) *engine.Judged {
-	if list := s.judged[plan]; len(list) > 0 {
+	if list := s.judged[plan.Base()]; len(list) > 0 {
 		j := list[len(list)-1]
-		s.judged[plan] = list[:len(list)-1]
+		s.judged[plan.Base()] = list[:len(list)-1]
 		s.count--
 		plan.Reset(j, day)
 		return j
@@ -44,14 +44,14 @@ func (s *spares) judgedFor(plan *engine.Plan, day int64) *engine.Judged {
 func (s *spares) takeBlock(plan *engine.Plan, b *minute.Block) {
 	if b != nil {
 		s.room()
-		s.blocks[plan] = append(s.blocks[plan], b)
+		s.blocks[plan.Base()] = append(s.blocks[plan.Base()], b)
 	}
 }
 
 func (s *spares) takeJudged(plan *engine.Plan, j *engine.Judged) {
 	if j != nil {
 		s.room()
-		s.judged[plan] = append(s.judged[plan], j)
+		s.judged[plan.Base()] = append(s.judged[plan.Base()], j)
 	}
 }
 

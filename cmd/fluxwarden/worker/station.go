@@ -10,6 +10,7 @@ import (
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
 )
 
 // aheadLimit is how far past the time of receipt a stamp may move the watermark: one reading of 2099 closes nothing.
@@ -30,17 +31,21 @@ type station struct {
 	summaries map[int64]engine.DaySummary // of the days before the current one, from loadedFrom on
 	// loadedFrom is the first day whose summary was asked of the archive.
 	loadedFrom int64
-	older      []fault.Episode          // ended before loadedFrom
-	lastEnded  int64                    // the last day that has a summary
-	judged     map[int64]*engine.Judged // days before the current one that are to be written
-	unsaved    map[int64]bool           // days whose summary the archive does not have
-	again      map[int64]bool           // days that gained readings after they were judged
-	sealing    map[int64]bool           // days not yet sealed
-	months     map[string]bool          // not yet compacted, YYYY-MM
-	committed  []fault.Episode          // as the archive has them
-	published  map[string]fault.Episode // as FINDINGS has them
-	told       bool                     // episodes have changed since the last commit
-	aside      map[int64]bool           // minutes whose readings have been set aside
+	older      []fault.Episode               // ended before loadedFrom
+	lastEnded  int64                         // the last day that has a summary
+	judged     map[int64]*engine.Judged      // days before the current one that are to be written
+	unsaved    map[int64]bool                // days whose summary the archive does not have
+	again      map[int64]string              // days that are to be judged once more, and why
+	paid       map[int64]string              // days judged once more since the last commit, and why
+	notes      []rules.Note                  // all there are, withdrawn ones too
+	newNotes   []rules.Note                  // that the archive does not have
+	plans      map[*engine.Plan]*engine.Plan // with the notes, by those without
+	sealing    map[int64]bool                // days not yet sealed
+	months     map[string]bool               // not yet compacted, YYYY-MM
+	committed  []fault.Episode               // as the archive has them
+	published  map[string]fault.Episode      // as FINDINGS has them
+	told       bool                          // episodes have changed since the last commit
+	aside      map[int64]bool                // minutes whose readings have been set aside
 }
 
 // A current is the day that the station is in: the last that has a judged minute.
@@ -54,6 +59,7 @@ type current struct {
 	excluded map[int]bool // rows whose readings the core cannot bear
 	changed  bool         // the archive's rows may not be these
 	tickedTo int64        // the minute of the last tick
+	idle     bool         // begun by a tick for a silent station: a day without a reading, which is none unless one comes
 	tickSaw  bool         // a tick has changed the episodes: on a guess, which what comes now may prove wrong
 }
 
@@ -128,6 +134,7 @@ func (s *station) isClosed(m int64) bool {
 func (s *station) tick(ctx context.Context, now minute.Stamp) {
 	s.watermark = max(s.watermark, now-s.w.grace)
 	s.advance(ctx)
+	s.endSilentDay(ctx, now)
 	if s.current == nil {
 		return
 	}
@@ -143,6 +150,26 @@ func (s *station) tick(ctx context.Context, now minute.Stamp) {
 	}
 }
 
+// endSilentDay ends the day of a station that has fallen silent when it is complete, so that it can be sealed, and begins one without
+// readings, in which the gap goes on.
+func (s *station) endSilentDay(ctx context.Context, now minute.Stamp) {
+	if c := s.current; c != nil && !c.idle && isComplete(c.day, now) {
+		if c.tickSaw { // it guessed; what a day hands on rests on readings alone
+			if err := s.rebuild(ctx); err != nil {
+				s.w.drop(s.partition, "read_archive", err)
+				return
+			}
+		}
+		s.endDay()
+	}
+	if day := s.watermark.Day(); s.current == nil && s.lastEnded >= firstDay && day > s.lastEnded {
+		if c := s.begin(day); c != nil {
+			c.idle, c.changed = true, false
+			s.current = c
+		}
+	}
+}
+
 // advance judges the minutes that the watermark has closed.
 func (s *station) advance(ctx context.Context) {
 	closed := s.watermark.Minute()
@@ -151,7 +178,8 @@ func (s *station) advance(ctx context.Context) {
 		if !ok || first >= closed {
 			return
 		}
-		if s.current != nil && s.current.tickSaw {
+		day := minute.FloorDiv(first, minute.PerDay)
+		if c := s.current; c != nil && c.tickSaw && !(c.idle && c.day < day) {
 			from := s.current.block.Rows
 			if err := s.rebuild(ctx); err != nil {
 				s.w.drop(s.partition, "read_archive", err)
@@ -162,7 +190,6 @@ func (s *station) advance(ctx context.Context) {
 			}
 			continue
 		}
-		day := minute.FloorDiv(first, minute.PerDay)
 		if s.current == nil || s.current.day < day {
 			if !s.roll(day) {
 				s.dropOpen(func(m int64) bool { return m < (day+1)*minute.PerDay })
@@ -209,6 +236,11 @@ func (s *station) endDay() {
 		return
 	}
 	s.current = nil
+	if c.idle {
+		s.w.spares.takeBlock(c.plan, c.block)
+		s.w.spares.takeJudged(c.plan, c.judged)
+		return
+	}
 	s.summaries[c.day] = s.close(c)
 	s.lastEnded = c.day
 	s.unsaved[c.day] = true
@@ -218,9 +250,21 @@ func (s *station) endDay() {
 	s.w.spares.takeBlock(c.plan, c.block)
 }
 
+// planFor is the plan that holds on a day, with the station's notes.
+func (s *station) planFor(day int64) *engine.Plan {
+	base := s.w.cfg.Rules.PlanFor(s.id, day)
+	if base == nil || len(s.notes) == 0 {
+		return base
+	}
+	if s.plans[base] == nil {
+		s.plans[base] = base.WithNotes(s.notes)
+	}
+	return s.plans[base]
+}
+
 // begin makes the state of a day from the summaries of the days before it.
 func (s *station) begin(day int64) *current {
-	plan := s.w.cfg.Rules.PlanFor(s.id, day)
+	plan := s.planFor(day)
 	if plan == nil {
 		return nil
 	}
@@ -269,6 +313,7 @@ func (s *station) history(day int64) []engine.DaySummary {
 // fill judges the current day's minutes up to the row. It says false where the core could not bear them.
 func (s *station) fill(to int) bool {
 	c := s.current
+	c.idle = false
 	c.gatherer.Fill(c.block, s.open, c.block.Rows, to)
 	end := c.day*minute.PerDay + int64(to)
 	s.dropOpen(func(m int64) bool { return m < end })

@@ -10,6 +10,7 @@ import (
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
 	"fluxwarden/store"
 	"fluxwarden/store/vfs"
 )
@@ -141,6 +142,10 @@ func (s *Store) Commit(c *Commit) (number uint64, err error) {
 	for _, f := range c.Faults {
 		out.Faults = append(out.Faults, store.StationFaults{Station: f.Station, Episodes: f.Episodes})
 	}
+	out.Notes, out.DayReasons, out.Owed = c.Notes, c.DayReasons, c.Owed
+	if out.Owed == nil {
+		out.Owed = []store.Owed{} // all is paid
+	}
 	for _, sum := range c.Summaries {
 		text, err := json.Marshal(sum)
 		if err != nil {
@@ -190,6 +195,22 @@ func (s *Store) Summaries(station string, from, to int64) (sums []engine.DaySumm
 // Faults implements Archive.
 func (s *Store) Faults(station string) (list []fault.Episode, err error) {
 	err = s.of(station, func(a *store.Archive) error { list, err = a.Faults(station); return err })
+	return list, err
+}
+
+// Notes implements Archive.
+func (s *Store) Notes(station string) (list []rules.Note, err error) {
+	err = s.of(station, func(a *store.Archive) error { list, err = a.Notes(station); return err })
+	return list, err
+}
+
+// Owed implements Archive.
+func (s *Store) Owed(partition int) (list []store.Owed, err error) {
+	err = s.use(func(a *store.Archive) error {
+		r, _, err := a.Last(partition)
+		list = r.Owed
+		return err
+	})
 	return list, err
 }
 

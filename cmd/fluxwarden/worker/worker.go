@@ -31,6 +31,7 @@ const (
 type Config struct {
 	Journal     Journal
 	Lease       Lease
+	Changes     Changes // nil where nobody can give notes
 	Archive     Archive
 	Rules       Rules
 	Findings    Findings
@@ -74,6 +75,9 @@ type Worker struct {
 	metered    time.Time
 	caughtUp   bool
 	spares     *spares
+	listened   time.Time // to the stream of notes
+	payAt      time.Time // when a day may be judged once more
+	paid       time.Time
 	failing    string // the error that was logged last, so that it is logged once
 }
 
@@ -115,7 +119,7 @@ func (w *Worker) Close() { w.closeCursor() }
 func (w *Worker) Ready() bool { return w.cursor != nil && w.caughtUp }
 
 // Step does a bounded piece of work: it looks after the leases and the clock, and takes the next message if one comes
-// within the wait. It says whether a message came.
+// within the wait, and judges a day once more if one is owed. It says whether it did one of the two.
 func (w *Worker) Step(ctx context.Context, wait time.Duration) bool {
 	now := w.cfg.Clock.Now()
 	if len(w.partitions) == 0 || passed(w.leased, now, leaseEvery) {
@@ -135,8 +139,13 @@ func (w *Worker) Step(ctx context.Context, wait time.Duration) bool {
 		w.ticked = now
 		w.tick(ctx, now)
 	}
+	if w.cfg.Changes != nil && passed(w.listened, now, tickEvery) {
+		w.listened = now
+		w.listen(ctx)
+	}
+	paid := w.payOne(ctx, now)
 	w.commitDue(ctx, now)
-	return took
+	return took || paid
 }
 
 // backlog is what waits to be written or sealed now.
@@ -152,7 +161,8 @@ func (w *Worker) backlog() Backlog {
 			for day := range s.sealing {
 				oldest = min(oldest, day)
 			}
-			if s.current != nil && !s.sealing[s.current.day] {
+			b.Owed += len(s.again)
+			if s.current != nil && !s.current.idle && !s.sealing[s.current.day] {
 				b.UnsealedDays++
 				oldest = min(oldest, s.current.day)
 			}

@@ -10,6 +10,8 @@ import (
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
+	"fluxwarden/store"
 )
 
 // A memory is the plainest archive there can be: what it has committed it keeps, whole or not at all. It lets the worker be
@@ -20,6 +22,8 @@ type memory struct {
 	digests   map[stationDay]string
 	summaries map[stationDay]engine.DaySummary
 	faults    map[string][]fault.Episode
+	notes     map[string][]rules.Note
+	owed      map[int][]store.Owed
 }
 
 type record struct {
@@ -34,7 +38,8 @@ type stationDay struct {
 
 func newMemory() *memory {
 	return &memory{records: map[int][]record{}, raw: map[stationDay][]*minute.Batch{}, digests: map[stationDay]string{},
-		summaries: map[stationDay]engine.DaySummary{}, faults: map[string][]fault.Episode{}}
+		summaries: map[stationDay]engine.DaySummary{}, faults: map[string][]fault.Episode{},
+		notes: map[string][]rules.Note{}, owed: map[int][]store.Owed{}}
 }
 
 // open gives the archive to one worker process, which dies in the commit after so many more of them; never if negative.
@@ -87,6 +92,10 @@ func (s *memorySession) Commit(c *worker.Commit) (uint64, error) {
 	for _, f := range c.Faults {
 		s.m.faults[f.Station] = slices.Clone(f.Episodes)
 	}
+	for _, n := range c.Notes {
+		s.m.notes[n.Station] = append(s.m.notes[n.Station], n)
+	}
+	s.m.owed[c.Partition] = slices.Clone(c.Owed)
 	if s.dieAt() { // after it: all of it holds, but the worker never hears of that
 		panic(died{})
 	}
@@ -133,6 +142,14 @@ func (s *memorySession) Summaries(station string, from, to int64) ([]engine.DayS
 
 func (s *memorySession) Faults(station string) ([]fault.Episode, error) {
 	return slices.Clone(s.m.faults[station]), nil
+}
+
+func (s *memorySession) Notes(station string) ([]rules.Note, error) {
+	return slices.Clone(s.m.notes[station]), nil
+}
+
+func (s *memorySession) Owed(partition int) ([]store.Owed, error) {
+	return slices.Clone(s.m.owed[partition]), nil
 }
 
 func (s *memorySession) Compact(_ int, base uint64, _, _ string) (uint64, error) { return base, nil }
