@@ -143,7 +143,7 @@ func (m *Metrics) archive() {
 func (m *Metrics) backlog() {
 	m.uncommittedSince = m.gauge("commit", "waiting_since_timestamp_seconds", "Last commit of the partition whose readings have waited longest for the next one; 0 while none waits.")
 	m.notes = m.counter("worker", "notes_total", "Notes that the daemon was given and took.")
-	m.owedDays = m.gauge("worker", "owed_days", "Station-days that late readings, a note or a fault found later make to be judged once more; they are, beside the readings.")
+	m.owedDays = m.gauge("worker", "owed", "Station-days that late readings, a note or a fault found later make to be judged once more; they are, beside the readings.")
 	m.unsealedDays = m.gauge("seal", "waiting", "Station-days that are not sealed yet.")
 	m.oldestUnsealed = m.gauge("seal", "oldest_waiting_timestamp_seconds", "Begin of the oldest station-day that is not sealed; 0 while there is none.")
 }
