@@ -54,7 +54,10 @@ func (p Problems) sort() {
 }
 
 // nearest gives the word of the list that is fewest edits away from what was written; none if all are far.
-func nearest(written string, words []string) (word string, ok bool) {
+func nearest(written string, words []string) (word string, ok bool) { return Nearest(written, words) }
+
+// Nearest gives the word of a list that was most likely meant by one that is not in it.
+func Nearest(written string, words []string) (word string, ok bool) {
 	if len(written) > 64 {
 		return "", false
 	}

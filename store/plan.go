@@ -114,7 +114,11 @@ func (d *draft) makeRaw(f File, old []File, fresh []*table.Table) ([]byte, File,
 
 func (d *draft) encodeRaw(f File, t *table.Table) ([]byte, File, error) {
 	f.Rows = t.Rows
-	var err error
+	site, err := d.site()
+	if err != nil {
+		return nil, f, err
+	}
+	t.Columns = withUnits(t.Columns, site, f.Station)
 	if t.Meta, err = d.meta(&f, nil); err != nil {
 		return nil, f, err
 	}

@@ -399,3 +399,45 @@ func (a *Archive) ProductDigest(station, tableName, period string) (digest strin
 	})
 	return digest, err
 }
+
+// Extent gives the first and the last period that there are files of a table for, as dates; empty without any. What is not cut by time is
+// looked into.
+func (a *Archive) Extent(station, tableName string) (first, last string, err error) {
+	err = a.retry(station, func(p *partition) error {
+		first, last = "", ""
+		for _, f := range p.current(station, tableName) {
+			from, to := f.Period, f.Period
+			if f.Period == "" {
+				t, err := a.readFile(f, []string{"time"})
+				if err != nil {
+					return err
+				}
+				days := daysOf(t)
+				if len(days) == 0 {
+					continue
+				}
+				from, to = dayName(days[0].day), dayName(days[len(days)-1].day)
+			}
+			if first == "" || from < first {
+				first = from
+			}
+			last = max(last, to)
+		}
+		return nil
+	})
+	return first, last, err
+}
+
+// NewestMeta gives the metadata of the last file of a table.
+func (a *Archive) NewestMeta(station, tableName string) (meta map[string]string, err error) {
+	err = a.retry(station, func(p *partition) error {
+		files := p.current(station, tableName)
+		if len(files) == 0 {
+			meta = map[string]string{}
+			return nil
+		}
+		meta, err = a.metaOf(files[len(files)-1])
+		return err
+	})
+	return meta, err
+}

@@ -6,12 +6,15 @@ import (
 	"fmt"
 	"io/fs"
 	"path"
+	"slices"
 	"strconv"
+	"strings"
 	"sync"
 	"time"
 
 	"fluxwarden/rules"
 	"fluxwarden/store/product"
+	"fluxwarden/store/table"
 )
 
 // sites are rule sets that were read from the archive, by their digests.
@@ -135,4 +138,54 @@ func calibrationsOf(st *rules.Station, period string) []usedCalibration {
 		}
 	}
 	return list
+}
+
+// udunits are the units of a site file's channels in UDUNITS form; those that are not in it are written alike.
+var udunits = map[string]string{"W/m2": "W m-2", "umol/(m2 s)": "umol m-2 s-1", "degC": "degree_Celsius", "%": "percent", "m/s": "m s-1", "ohm_10k": "ohm", "ohm_pt100": "ohm"}
+
+// withUnits says of the channels of a station's readings what the site file says of them.
+func withUnits(columns []table.Column, site *rules.Site, station string) []table.Column {
+	if site == nil || site.Station(station) == nil {
+		return columns
+	}
+	units, about := channelsOf(site.Station(station))
+	columns = slices.Clone(columns)
+	for i := range columns {
+		name, statistic, _ := strings.Cut(columns[i].Name, ":")
+		if about[name] == "" {
+			continue
+		}
+		columns[i].Description = about[name] + ", as received"
+		if statistic == "n" {
+			columns[i].Description = about[name] + ": samples"
+		} else if columns[i].Unit = units[name]; udunits[units[name]] != "" {
+			columns[i].Unit = udunits[units[name]]
+		}
+	}
+	return columns
+}
+
+// channelsOf gives the units of a station's channels, and what they are.
+func channelsOf(st *rules.Station) (units, about map[string]string) {
+	units, about = map[string]string{}, map[string]string{}
+	set := func(channel, unit, what string) {
+		if channel != "" {
+			units[channel], about[channel] = unit, what
+		}
+	}
+	for i := range st.Instruments {
+		in := &st.Instruments[i]
+		p := &in.Input
+		set(p.Signal, p.SignalUnit, "signal of "+in.ID+", "+in.Measures.String())
+		set(p.Irradiance, in.Measures.Unit(), in.Measures.String()+" of "+in.ID)
+		set(p.Case, p.CaseUnit, "body temperature of "+in.ID)
+		set(p.Dome, p.DomeUnit, "dome temperature of "+in.ID)
+	}
+	for _, w := range st.Weather {
+		set(w.Channel, w.Unit, w.Quantity.String())
+	}
+	for _, h := range st.Housekeeping {
+		set(h.Channel, "", "housekeeping: "+h.Name)
+	}
+	return units, about
 }

@@ -36,7 +36,7 @@ func commands() []command {
 		{"note", "write down a visit, a cleaning, an override; list what was written", cmdNote},
 		{"verify", "prove an archive intact, or name what is not", cmdVerify},
 		{"history", "the revisions of a station-day: what changed, why, by how much", cmdHistory},
-		{"export", "write an archive's minutes as CSV", cmdExport},
+		{"export", "write an archive's minutes, readings or clean products as CSV, NetCDF or Parquet", cmdExport},
 		{"faults", "list the episodes: which instrument, what, since when, what to do", cmdFaults},
 		{"sky", "what the judge expects: sun, clear sky, the bounds of every limit", cmdSky},
 		{"budget", "what an instrument's uncertainty is made of, in one minute", cmdBudget},

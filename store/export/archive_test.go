@@ -43,16 +43,16 @@ func TestCSV(t *testing.T) {
 	if err != nil || rows != 3 {
 		t.Fatalf("%d rows, %v", rows, err)
 	}
-	want := `time,global,global_verdict,global_reasons,global_measured,global_u95,air_temperature,air_temperature_verdict,air_temperature_reasons,air_temperature_measured,air_temperature_u95,global_sd,global_min,global_max,global_n,records,zenith_deg,apparent_zenith_deg,azimuth_deg,extraterrestrial,clear_global,clear_direct,clear_diffuse,clear_lw_down
-2026-06-21T00:00:00Z,812.34,accepted,,812.34,,17.91,accepted,,17.91,,0.50,,,60,60,45.500,,,,,,,
-2026-06-21T00:01:00Z,-1.50,questioned,spike;closure;dome_wet,-1.50,,18.00,questioned,spike;closure;dome_wet,18.00,,0.25,,,59,59,45.250,,,,,,,
-2026-06-21T00:02:00Z,,absent,missing,,,,absent,missing,,,,,,0,0,45.000,,,,,,,
+	want := `time,global,global_verdict,global_reasons,global_measured,global_u95,air_temperature,air_temperature_verdict,air_temperature_reasons,air_temperature_measured,global_sd,global_min,global_max,global_n,records,zenith_deg,apparent_zenith_deg,azimuth_deg,extraterrestrial,clear_global,clear_direct,clear_diffuse,clear_lw_down
+2026-06-21T00:00:00Z,812.34,accepted,,812.34,,17.91,accepted,,17.91,0.50,,,60,60,45.500,,,,,,,
+2026-06-21T00:01:00Z,-1.50,questioned,spike;closure;dome_wet,-1.50,,18.00,questioned,spike;closure;dome_wet,18.00,0.25,,,59,59,45.250,,,,,,,
+2026-06-21T00:02:00Z,,absent,missing,,,,absent,missing,,,,,0,0,45.000,,,,,,,
 `
 	if b.String() != want {
 		t.Errorf("got\n%s\nwant\n%s", b.String(), want)
 	}
 	b.Reset()
-	if rows, err = CSV(&b, a, Request{Station: "saltpan", From: day*minute.PerDay + 1, To: day*minute.PerDay + 2, Quantities: []rules.Quantity{rules.Global}}); err != nil || rows != 1 ||
+	if rows, err = CSV(&b, a, Request{Station: "saltpan", From: day*minute.PerDay + 1, To: day*minute.PerDay + 2, Quantities: []string{"global"}}); err != nil || rows != 1 ||
 		strings.Count(b.String(), "\n") != 2 || strings.Contains(b.String(), "air_temperature") {
 		t.Errorf("one minute of global: %d rows, %v\n%s", rows, err, b.String())
 	}

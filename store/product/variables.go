@@ -41,9 +41,6 @@ const (
 	variableCount
 )
 
-// stepRatio is the resolution of what has no unit.
-const stepRatio = 1.0 / 4096
-
 var variables = listVariables()
 
 // listVariables has the CF standard names from memory.
@@ -58,7 +55,7 @@ func listVariables() [variableCount]variable {
 		return variable{name, "W m-2", standard, long, table.StepIrradiance, shortwave, uncertain}
 	}
 	ratio := func(name, standard, long string) variable {
-		return variable{name: name, unit: "1", standard: standard, long: long, step: stepRatio}
+		return variable{name: name, unit: "1", standard: standard, long: long, step: table.StepRatio}
 	}
 	list[vShortwaveDown] = flux("shortwave_down", "surface_downwelling_shortwave_flux_in_air", "downwelling shortwave: direct on the horizontal plus diffuse, "+
 		"or global where they are not both accepted", true, true)
@@ -181,3 +178,12 @@ func MinuteColumns() []table.Column { return minuteLayout.columns }
 func HourColumns() []table.Column   { return hourLayout.columns }
 func DayColumns() []table.Column    { return dayLayout.columns }
 func MonthColumns() []table.Column  { return monthLayout.columns }
+
+// Names lists what the products hold: the quantities, then what is derived of them.
+func Names() []string {
+	var list []string
+	for i := range variables {
+		list = append(list, variables[i].name)
+	}
+	return list
+}

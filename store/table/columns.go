@@ -158,5 +158,8 @@ func TestBits() string {
 	return s
 }
 
+// StepRatio is the resolution of what has no unit.
+const StepRatio = 1.0 / 4096
+
 // LongName says in words what a quantity is.
 func LongName(q rules.Quantity) string { return longNames[q] }

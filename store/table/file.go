@@ -212,6 +212,17 @@ func readTable(f *parquet.File, want []string) (*Table, error) {
 	return t, nil
 }
 
+// Described lists what a file's metadata say of its columns; their kinds are not among it.
+func Described(meta map[string]string) []Column {
+	var list []described
+	_ = json.Unmarshal([]byte(meta["columns"]), &list) // a foreign file says nothing
+	columns := make([]Column, len(list))
+	for i, d := range list {
+		columns[i] = Column{Name: d.Name, Unit: d.Unit, StandardName: d.StandardName, Description: d.Description, Step: d.Step}
+	}
+	return columns
+}
+
 // lastDescribed keeps what was parsed last: files of one table say the same of their columns.
 var lastDescribed struct {
 	sync.Mutex

@@ -103,3 +103,14 @@ func Union(tables []*Table) []Column {
 	}
 	return list
 }
+
+// Pick gives the columns that are wanted, sharing the values.
+func (t *Table) Pick(wanted func(c *Column) bool) *Table {
+	out := &Table{Rows: t.Rows, Meta: t.Meta}
+	for i := range t.Columns {
+		if wanted(&t.Columns[i]) {
+			out.Columns, out.Vectors = append(out.Columns, t.Columns[i]), append(out.Vectors, t.Vectors[i])
+		}
+	}
+	return out
+}
