@@ -8,6 +8,7 @@ import (
 	"fmt"
 	"os"
 	"strings"
+	_ "time/tzdata" // zones of quiet hours, where the machine has none
 )
 
 // Exit codes.

@@ -34,20 +34,27 @@ func cmdRun(args []string) int {
 	if err := fs.Parse(args); err != nil {
 		return parseCode(err)
 	}
-	s := daemon.DefaultSettings()
-	if *settings != "" {
-		var err error
-		if s, err = daemon.LoadSettings(*settings); err != nil {
-			return complain(exitUsage, err)
+	load := func() (daemon.Settings, error) {
+		s := daemon.DefaultSettings()
+		if *settings != "" {
+			var err error
+			if s, err = daemon.LoadSettings(*settings); err != nil {
+				return s, err
+			}
 		}
+		for _, f := range []struct {
+			flag *string
+			to   *string
+		}{{archive, &s.Archive}, {listen, &s.Listen}, {brokerURL, &s.Broker.URL}, {credentials, &s.Broker.Credentials}, {stations, &s.Broker.Listen}, {journal, &s.Broker.Store}} {
+			if *f.flag != "" {
+				*f.to = *f.flag
+			}
+		}
+		return s, nil
 	}
-	for _, f := range []struct {
-		flag *string
-		to   *string
-	}{{archive, &s.Archive}, {listen, &s.Listen}, {brokerURL, &s.Broker.URL}, {credentials, &s.Broker.Credentials}, {stations, &s.Broker.Listen}, {journal, &s.Broker.Store}} {
-		if *f.flag != "" {
-			*f.to = *f.flag
-		}
+	s, err := load()
+	if err != nil {
+		return complain(exitUsage, err)
 	}
 	if *printSettings {
 		fmt.Print(s.Example())
@@ -56,7 +63,7 @@ func cmdRun(args []string) int {
 	if *site == "" || fs.NArg() > 0 {
 		return complain(exitUsage, errors.New("run: name a site file: fluxwarden run --site site.yaml"))
 	}
-	return runDaemon(s, *site)
+	return runDaemon(s, load, *site)
 }
 
 // loadSite reads a site file, parsed and as written.
@@ -69,7 +76,7 @@ func loadSite(path string) (*rules.Site, []byte, error) {
 	return site, text, err
 }
 
-func runDaemon(s daemon.Settings, sitePath string) int {
+func runDaemon(s daemon.Settings, load func() (daemon.Settings, error), sitePath string) int {
 	log := slog.New(slog.NewTextHandler(os.Stderr, nil))
 	site, text, err := loadSite(sitePath)
 	if err != nil {
@@ -80,7 +87,9 @@ func runDaemon(s daemon.Settings, sitePath string) int {
 	}
 	signals := make(chan os.Signal, 4)
 	signal.Notify(signals, os.Interrupt, syscall.SIGTERM, syscall.SIGHUP)
+	started := daemon.ExtendStart()
 	d, err := daemon.Start(context.Background(), daemon.Config{Settings: s, Site: site, SiteText: text, Log: log, Program: "fluxwarden " + version})
+	started()
 	if err != nil {
 		var unusable *daemon.Unusable
 		if errors.As(err, &unusable) {
@@ -88,11 +97,17 @@ func runDaemon(s daemon.Settings, sitePath string) int {
 		}
 		return complain(exitProblem, err)
 	}
-	daemon.Notify("READY=1")
+	go func() { // a stop must not wait for it
+		d.AwaitReplay(context.Background(), daemon.Notify)
+		daemon.Notify("READY=1")
+	}()
 	log.Info("running", "network", site.Network.ID, "stations", len(site.Stations), "archive", s.Archive, "pages", d.Address(), "broker", d.BrokerURL())
 	for sig := range signals {
 		if sig != syscall.SIGHUP {
 			break
+		}
+		if err := d.ReloadSettings(load()); err != nil {
+			log.Warn("settings", "cause", err)
 		}
 		site, text, err := loadSite(sitePath)
 		if err := d.Reload(site, text, err); err != nil {

@@ -20,6 +20,7 @@ type Settings struct {
 	Known   func(station string) bool // needed; see also SetKnown
 	Now     func() time.Time          // needed
 	DiskLow func() bool               // asked before every flush; true: nothing is taken. Optional
+	NoClock func() bool               // likewise, while the clock is not set: a receive time is kept with each reading. Optional
 	Meter   Meter                     // optional
 	Log     *slog.Logger              // optional
 
@@ -109,7 +110,8 @@ const (
 	BrokerAway   RetryReason = "broker_away" // it did not say in time that the readings are on disk
 	DiskIsLow    RetryReason = "disk_low"
 	ShuttingDown RetryReason = "shutting_down"
+	ClockUnset   RetryReason = "clock_unset"
 )
 
 // RetryReasons lists them all.
-var RetryReasons = []RetryReason{Busy, TooFast, JournalFull, BrokerAway, DiskIsLow, ShuttingDown}
+var RetryReasons = []RetryReason{Busy, TooFast, JournalFull, BrokerAway, DiskIsLow, ShuttingDown, ClockUnset}

@@ -67,6 +67,9 @@ func (d *Daemon) Stop() error {
 			shutdownServer(d.server)
 		}
 		d.done.Wait()
+		if n := d.hub.notify.Load(); n != nil {
+			d.stopErr = errors.Join(d.stopErr, n.Stop())
+		}
 		if d.broker != nil {
 			d.broker.Close()
 		}

@@ -62,6 +62,8 @@ type Daemon struct {
 
 	connected atomic.Bool
 	diskLow   atomic.Bool
+	diskFloor atomic.Int64
+	noClock   atomic.Bool
 	working   atomic.Bool
 	caughtUp  atomic.Bool
 	progress  atomic.Int64 // of the worker, wall time in ns
@@ -94,10 +96,12 @@ func Start(ctx context.Context, c Config) (*Daemon, error) {
 	}
 	d := &Daemon{config: c, log: c.Log, metrics: metrics.New(c.Program, c.Clock.Now)}
 	d.hub = &hub{metrics: d.metrics, onMinutes: c.OnMinutes, onEpisodes: c.OnEpisodes, heard: map[string]bool{}}
+	d.diskFloor.Store(int64(c.Settings.DiskFloor))
+	d.lookAtClock()
 	run, cancel := context.WithCancel(context.WithoutCancel(ctx))
 	d.cancel = cancel
 	openConsole := func(context.Context) error { d.openConsole(run); return nil }
-	for _, step := range []func(context.Context) error{d.openArchive, openConsole, d.openPages, d.openAccess, d.openBroker, d.openWays} {
+	for _, step := range []func(context.Context) error{d.openArchive, d.openNotifier, openConsole, d.openPages, d.openAccess, d.openBroker, d.openWays} {
 		if err := step(ctx); err != nil {
 			_ = d.Stop()
 			return nil, err
@@ -123,6 +127,9 @@ func Start(ctx context.Context, c Config) (*Daemon, error) {
 
 func (d *Daemon) openArchive(context.Context) error {
 	dir := d.config.Settings.Archive
+	if err := underManager(dir); err != nil {
+		return &Unusable{err}
+	}
 	if err := os.MkdirAll(dir, 0o755); err != nil {
 		return &Unusable{fmt.Errorf("archive %s: %w; make the directory writable for uid %d or name another with --archive", dir, err, os.Getuid())}
 	}
@@ -275,7 +282,7 @@ func (d *Daemon) bringUp(ctx context.Context) error {
 		return err
 	}
 	known := d.known()
-	g, err := gate.New(d.broker, gate.Settings{Known: known, Now: d.config.Clock.Now, DiskLow: d.diskLow.Load, Meter: d.metrics.Gate(), Log: d.log})
+	g, err := gate.New(d.broker, gate.Settings{Known: known, Now: d.config.Clock.Now, DiskLow: d.diskLow.Load, NoClock: d.noClock.Load, Meter: d.metrics.Gate(), Log: d.log})
 	if err != nil {
 		return err
 	}
@@ -332,6 +339,8 @@ func (d *Daemon) NotReady() string {
 		return "the broker is away"
 	case !d.working.Load():
 		return "the streams are not there yet"
+	case d.noClock.Load():
+		return "the clock is not set: it stands before 2020"
 	case d.diskLow.Load():
 		return "the disk is nearly full"
 	case time.Since(time.Unix(0, d.progress.Load())) > stuckAfter:
@@ -353,11 +362,9 @@ func (d *Daemon) watchDisk(ctx context.Context) {
 	timer := time.NewTicker(every)
 	defer timer.Stop()
 	for {
+		d.lookAtClock()
 		d.lookAtDisk()
-		d.metrics.Ready(d.NotReady() == "")
-		if !d.working.Load() || time.Since(time.Unix(0, d.progress.Load())) < stuckAfter {
-			Notify("WATCHDOG=1")
-		}
+		d.tellManager()
 		select {
 		case <-ctx.Done():
 			return
@@ -367,7 +374,7 @@ func (d *Daemon) watchDisk(ctx context.Context) {
 }
 
 func (d *Daemon) lookAtDisk() {
-	floor := uint64(d.config.Settings.DiskFloor)
+	floor := uint64(d.diskFloor.Load())
 	low := false
 	dirs := map[string]string{"archive": d.config.Settings.Archive}
 	if d.embedded != nil {
@@ -384,7 +391,7 @@ func (d *Daemon) lookAtDisk() {
 	}
 	if was := d.diskLow.Swap(low); low != was {
 		if low {
-			d.log.Error("the disk is nearly full: no reading is taken until there is room again", "floor", d.config.Settings.DiskFloor.String())
+			d.log.Error("the disk is nearly full: no reading is taken until there is room again", "floor", Size(floor).String())
 		} else {
 			d.log.Info("there is room on the disk again: readings are taken")
 		}

@@ -2,9 +2,11 @@ package daemon
 
 import (
 	"sync"
+	"sync/atomic"
 
 	"fluxwarden/cmd/fluxwarden/console"
 	"fluxwarden/cmd/fluxwarden/metrics"
+	"fluxwarden/cmd/fluxwarden/notify"
 	"fluxwarden/qc/engine"
 	"fluxwarden/qc/fault"
 )
@@ -16,6 +18,7 @@ type hub struct {
 	onEpisodes func(station string, episodes []fault.Episode)
 
 	console *console.Console
+	notify  atomic.Pointer[notify.Notifier]
 
 	mu    sync.Mutex
 	heard map[string]bool // stations that a reading has been judged of
@@ -42,6 +45,9 @@ func (h *hub) Minutes(j *engine.Judged, from, to int) {
 func (h *hub) Episodes(station string, episodes []fault.Episode) {
 	h.metrics.Episodes(station, episodes)
 	h.console.Episodes(station, episodes)
+	if n := h.notify.Load(); n != nil {
+		n.Episodes(station, episodes)
+	}
 	if h.onEpisodes != nil {
 		h.onEpisodes(station, episodes)
 	}

@@ -28,6 +28,7 @@ type Settings struct {
 	Access      AccessSettings `yaml:"access"`
 	TLS         TLSSettings    `yaml:"tls"`
 	Ways        WaySettings    `yaml:"ways"`
+	Notify      NotifySettings `yaml:"notify"`
 }
 
 // BrokerSettings say which broker is used. With a URL it is an external one; without, it runs in this process.
@@ -52,7 +53,8 @@ func DefaultSettings() Settings {
 		CommitEvery: Duration(worker.CommitEveryDefault), DiskFloor: 256 << 20,
 		Broker: BrokerSettings{Store: filepath.Join(state, "journal"), Listen: "127.0.0.1:4222", Journal: Size(streams.JournalBytes),
 			Refused: Size(streams.RefusedBytes), Findings: Size(streams.FindingsBytes)},
-		Access: AccessSettings{Anonymous: "auto"}, Ways: WaySettings{HTTP: "none"}}
+		Access: AccessSettings{Anonymous: "auto"}, Ways: WaySettings{HTTP: "none"},
+		Notify: NotifySettings{Zone: "UTC", Sent: filepath.Join(state, "notify.jsonl")}}
 }
 
 // Example is a settings file with every key and its default.
@@ -102,6 +104,9 @@ func (s *Settings) Check() error {
 		return errors.New("settings: broker: give the url of a broker, or a store directory for the embedded one")
 	case s.Broker.Journal < 1<<20:
 		return fmt.Errorf("settings: broker: journal: %v: give at least 1MiB", s.Broker.Journal)
+	}
+	if err := s.Notify.check(); err != nil {
+		return err
 	}
 	return s.checkWays()
 }

@@ -68,6 +68,7 @@ func ruleList(t *testing.T) []rule {
 func metricNames(t *testing.T) map[string]bool {
 	t.Helper()
 	m := metrics.New("test", time.Now)
+	m.NewField()
 	descs := make(chan *prometheus.Desc, 1000)
 	go func() { m.Registry.Describe(descs); close(descs) }()
 	names := map[string]bool{}

@@ -108,8 +108,9 @@ type Notifier struct {
 }
 
 type known struct {
-	episodes map[string]fault.Episode
-	changed  time.Time // by the wall clock
+	episodes  map[string]fault.Episode
+	suspected []fault.Episode
+	changed   time.Time // by the wall clock
 }
 
 // Start opens the log of what was sent and begins to tell.
@@ -155,6 +156,8 @@ func (n *Notifier) Episodes(station string, all []fault.Episode) {
 	for _, e := range all {
 		if e.Severity == rules.Act {
 			k.episodes[e.ID] = e
+		} else if e.To == fault.Open {
+			k.suspected = append(k.suspected, e)
 		}
 	}
 	n.mu.Lock()
