@@ -137,7 +137,7 @@ func (n *Note) Silences() bool {
 func (n *Note) Ends(kind FaultKind) bool {
 	switch n.Kind {
 	case Cleaning:
-		return kind == DomeSoiled || kind == DomeWet || kind == DomeSnow
+		return kind == DomeSoiled || kind == DomeWet || kind == DomeSnow || kind == DomeFouled
 	case Levelling:
 		return kind == SensorTilted
 	case Exchange:

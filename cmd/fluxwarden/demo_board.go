@@ -139,7 +139,7 @@ func (r *demoRow) share(v rules.Verdict) float64 {
 func demoWords(e *demoEvent) string {
 	at := func(minuteUTC int64) string { return time.Unix(60*minuteUTC, 0).UTC().Format("01-02 15:04Z") }
 	if e.episode.To == fault.Open {
-		return fmt.Sprintf("%s %s: %s since %s", e.station, e.episode.Instrument, e.episode.Kind.Entry().Title, at(e.episode.From))
+		return fmt.Sprintf("%s %s: %s", e.station, e.episode.Instrument, e.episode.What(e.episode.Raised))
 	}
 	return fmt.Sprintf("%s %s: %s is over, from %s to %s", e.station, e.episode.Instrument, e.episode.Kind.Entry().Title, at(e.episode.From), at(e.episode.To))
 }

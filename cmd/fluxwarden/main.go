@@ -39,6 +39,7 @@ func commands() []command {
 		{"history", "the revisions of a station-day: what changed, why, by how much", cmdHistory},
 		{"export", "write an archive's minutes, readings or clean products as CSV, NetCDF or Parquet", cmdExport},
 		{"faults", "list the episodes: which instrument, what, since when, what to do", cmdFaults},
+		{"status", "the morning sheet: what is wrong, the worst first, what to take along, whether repairs worked", cmdStatus},
 		{"sky", "what the judge expects: sun, clear sky, the bounds of every limit", cmdSky},
 		{"budget", "what an instrument's uncertainty is made of, in one minute", cmdBudget},
 		{"lint", "check site files", cmdLint},

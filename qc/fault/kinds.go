@@ -98,8 +98,10 @@ func (f *gatherKinds) close(w *Watcher, day *DayFacts) KindFacts {
 
 // KindCarry is what the kinds of this file hand on over midnight.
 type KindCarry struct {
-	Nights [2]int   `json:"nights"`         // clear nights on end whose zero spoke for lost ventilation, of global and diffuse
-	Since  [2]int64 `json:"since"`          // since when
+	Nights [2]int   `json:"nights"` // clear nights on end whose zero spoke for lost ventilation, of global and diffuse
+	Since  [2]int64 `json:"since"`  // since when
+	Checks []Check  `json:"checks,omitempty"`
+	During []during `json:"during,omitempty"`
 	Jump   string   `json:"jump,omitempty"` // id of the open episode of a change of gain that only the days show
 }
 
@@ -108,6 +110,7 @@ func (w *Watcher) endKinds(facts *DayFacts) {
 	days := append(append(make([]KindFacts, 0, len(w.taught)+1), w.taught...), facts.Kinds)
 	w.watchVentilation(days)
 	w.watchDrift(days)
+	w.forgetChecks()
 }
 
 // theilSen is the median of the slopes between all pairs of points (Theil 1950; Sen 1968, J. Am. Stat. Assoc. 63, 1379), and Kendall's

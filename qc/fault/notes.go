@@ -53,6 +53,7 @@ func (w *Watcher) endByNotes(now int64) {
 					w.slow.Episode, w.slow.Imbalance = "", imbalance{}
 				}
 				w.finish(k, min(span.From, now))
+				w.noteCheck(n.ID)
 				continue
 			}
 			k++

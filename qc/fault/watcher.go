@@ -74,7 +74,7 @@ func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watche
 			}
 		}
 		w.slow = carry.Slow.clone()
-		w.kinds = carry.Kinds
+		w.kinds = carry.Kinds.clone()
 	}
 	for i := range w.ring {
 		w.ring[i].forget()
@@ -117,6 +117,7 @@ func (w *Watcher) Minute(m *Minute) {
 	}
 	w.watchSlow(w.now)
 	w.watchTouch(w.now)
+	w.watchRepairs(w.now)
 	w.facts.minute(w, w.now)
 }
 
@@ -165,7 +166,7 @@ func (w *Watcher) Tick(minuteUTC int64) {
 func (w *Watcher) EndDay() (DayFacts, Carry) {
 	facts := w.facts.close(w)
 	w.endKinds(&facts)
-	c := Carry{LastRecord: w.last, Open: slices.Clone(w.open), Slow: w.slow.clone(), Kinds: w.kinds}
+	c := Carry{LastRecord: w.last, Open: slices.Clone(w.open), Slow: w.slow.clone(), Kinds: w.kinds.clone()}
 	for i := range w.cases {
 		if s := &w.cases[i]; s.Score > 0 || s.Since != noMinute {
 			c.Cases = append(c.Cases, CarriedCase{Case: i, Score: quantise(s.Score), Since: s.Since, Last: s.Last, For: s.For, Sum: quantise(s.Sum)})
@@ -206,6 +207,7 @@ func (w *Watcher) raise(e Episode) *Episode {
 		e.Advice = e.Kind.Entry().Advice
 	}
 	e.Confidence = float64(quantise(e.Confidence))
+	w.againAfterCheck(&e)
 	w.open = append(w.open, e)
 	return &w.open[len(w.open)-1]
 }
@@ -227,6 +229,7 @@ func (w *Watcher) reopen(e *Episode) *Episode {
 			o.From = min(o.From, e.From)
 			o.Rev++
 			w.closed = slices.Delete(w.closed, i, i+1)
+			w.kinds.Checks = slices.DeleteFunc(w.kinds.Checks, func(c Check) bool { return c.Episode == o.ID })
 			w.open = append(w.open, o)
 			return &w.open[len(w.open)-1]
 		}
@@ -241,6 +244,7 @@ func (w *Watcher) finish(i int, to int64) {
 	e.Rev++
 	w.open = slices.Delete(w.open, i, i+1)
 	w.closed = append(w.closed, e)
+	w.beginCheck(&e)
 }
 
 func (w *Watcher) openIndex(instrument string, kind rules.FaultKind) int {

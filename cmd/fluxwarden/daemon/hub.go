@@ -1,6 +1,7 @@
 package daemon
 
 import (
+	"slices"
 	"sync"
 	"sync/atomic"
 
@@ -21,7 +22,8 @@ type hub struct {
 	notify  atomic.Pointer[notify.Notifier]
 
 	mu    sync.Mutex
-	heard map[string]bool // stations that a reading has been judged of
+	heard map[string]bool            // stations that a reading has been judged of
+	told  map[string][]fault.Episode // what was said last of each station
 }
 
 // Minutes implements worker.Live.
@@ -43,6 +45,12 @@ func (h *hub) Minutes(j *engine.Judged, from, to int) {
 
 // Episodes implements worker.Live.
 func (h *hub) Episodes(station string, episodes []fault.Episode) {
+	h.mu.Lock()
+	if h.told == nil {
+		h.told = map[string][]fault.Episode{}
+	}
+	h.told[station] = slices.Clone(episodes)
+	h.mu.Unlock()
 	h.metrics.Episodes(station, episodes)
 	h.console.Episodes(station, episodes)
 	if n := h.notify.Load(); n != nil {
@@ -51,4 +59,11 @@ func (h *hub) Episodes(station string, episodes []fault.Episode) {
 	if h.onEpisodes != nil {
 		h.onEpisodes(station, episodes)
 	}
+}
+
+// episodes is what was said last of a station.
+func (h *hub) episodes(station string) []fault.Episode {
+	h.mu.Lock()
+	defer h.mu.Unlock()
+	return h.told[station]
 }

@@ -9,7 +9,6 @@ import (
 	"github.com/prometheus/client_golang/prometheus/promhttp"
 
 	"fluxwarden/cmd/fluxwarden/console"
-	"fluxwarden/qc/fault"
 )
 
 // handler serves metrics, health and the console.
@@ -25,6 +24,7 @@ func (d *Daemon) handler() http.Handler {
 		fmt.Fprintln(w, "ready")
 	})
 	mux.Handle("/", d.hub.console.Handler())
+	mux.HandleFunc("GET /status.json", d.sheet)
 	return mux
 }
 
@@ -41,18 +41,6 @@ func (d *Daemon) openConsole(run context.Context) {
 			d.log.Warn("the network page begins empty", "cause", err)
 		}
 	})
-}
-
-// InWords says what an episode means for a person.
-func InWords(e *fault.Episode) string {
-	s := fmt.Sprintf("%s: %s since %s", e.Instrument, e.Kind.Entry().Title, time.Unix(60*e.From, 0).UTC().Format("2006-01-02 15:04Z"))
-	if e.To != fault.Open {
-		s += time.Unix(60*e.To, 0).UTC().Format(" until 2006-01-02 15:04Z")
-	}
-	if e.Advice != "" {
-		s += ". " + e.Advice
-	}
-	return s
 }
 
 const (
