@@ -24,7 +24,7 @@ func (d *Daemon) handler() http.Handler {
 		fmt.Fprintln(w, "ready")
 	})
 	mux.Handle("/", d.hub.console.Handler())
-	mux.HandleFunc("GET /status.json", d.sheet)
+	mux.HandleFunc("GET /status.json", d.morningSheet)
 	return mux
 }
 

@@ -142,8 +142,8 @@ func plural(n int, word string) string {
 	return word + "s"
 }
 
-// sheet answers with the morning sheet of what is open now, and of what is over since the day began.
-func (d *Daemon) sheet(w http.ResponseWriter, _ *http.Request) {
+// morningSheet answers with the morning sheet of what is open now, and of what is over since the day began.
+func (d *Daemon) morningSheet(w http.ResponseWriter, _ *http.Request) {
 	site := d.rules.newest()
 	now := d.config.Clock.Now().UTC()
 	s := Sheet{Until: now.Format(time.RFC3339), Stations: []SheetStation{}, Asked: len(site.Stations)}
