@@ -62,6 +62,8 @@ func (r *reader) station(v *value, limits Limits) Station {
 	st.Weather = r.weather(v.at("weather"), path, use)
 	st.Housekeeping = r.housekeeping(v.at("housekeeping"), path, &st)
 	st.Sky = sky(v.at("sky"))
+	st.Files = r.files(v.at("files"), path)
+	st.Modbus = r.modbus(v.at("modbus"), path, channelUnits(&st))
 	return st
 }
 

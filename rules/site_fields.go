@@ -142,6 +142,7 @@ var stationField = field{kind: objectKind, doc: "A place with a position and ins
 		{key: "albedo", kind: numberKind, unit: "1", low: 0, high: 1, doc: "Ground albedo."},
 	}},
 	{key: "rules", kind: objectKind, doc: "Overrides for this station.", fields: rulesFields},
+	filesField, modbusField,
 }}
 
 func weatherField(key string, units ...string) field {

@@ -41,8 +41,10 @@ type Station struct {
 	Local        []LocalTest // the network's, then the station's own
 	Limits       Limits      // the published ones with the network's and the station's overrides applied
 	Products     Products
-	Digest       string // sha256, hex, of the station's own part: a change elsewhere in the file leaves it alone
-	Line         int    // of the site file
+	Files        []FileLayout   // that are followed; no part of the digest
+	Modbus       []ModbusDevice // that are asked; no part of the digest
+	Digest       string         // sha256, hex, of the station's own part: a change elsewhere in the file leaves it alone
+	Line         int            // of the site file
 }
 
 // Products says how the clean products are made of judged minutes.

@@ -45,6 +45,7 @@ func commands() []command {
 		{"lint", "check site files", cmdLint},
 		{"refused", "list, show and requeue what was refused", cmdRefused},
 		{"credentials", "who may send: make, list and revoke credentials", cmdCredentials},
+		{"feed", "bring a logger's files to a daemon elsewhere", cmdFeed},
 		{"simulate", "write a synthetic station's readings with labelled faults", cmdSimulate},
 		{"look", "pages over an archive in a browser: network, days, faults, residuals", cmdLook},
 		{"report", "a station's month as one page to print or send", cmdReport},

@@ -34,6 +34,7 @@ func (d *Daemon) Reload(site *rules.Site, text []byte, err error) error {
 	d.metrics.Calibrations(d.rules.newest())
 	if g := d.gate.Load(); g != nil {
 		g.SetKnown(d.known())
+		d.follow(d.rules.newest())
 	}
 	return nil
 }

@@ -297,6 +297,7 @@ func (d *Daemon) bringUp(ctx context.Context) error {
 		CommitEvery: time.Duration(d.config.Settings.CommitEvery)})
 	d.working.Store(true)
 	d.done.Go(func() { d.work(ctx, w) })
+	d.follow(d.rules.newest())
 	return nil
 }
 

@@ -53,7 +53,7 @@ func DefaultSettings() Settings {
 		CommitEvery: Duration(worker.CommitEveryDefault), DiskFloor: 256 << 20,
 		Broker: BrokerSettings{Store: filepath.Join(state, "journal"), Listen: "127.0.0.1:4222", Journal: Size(streams.JournalBytes),
 			Refused: Size(streams.RefusedBytes), Findings: Size(streams.FindingsBytes)},
-		Access: AccessSettings{Anonymous: "auto"}, Ways: WaySettings{HTTP: "none"},
+		Access: AccessSettings{Anonymous: "auto"}, Ways: WaySettings{HTTP: "none", MQTT: "none", State: filepath.Join(state, "ways")},
 		Notify: NotifySettings{Zone: "UTC", Sent: filepath.Join(state, "notify.jsonl")}}
 }
 

@@ -7,6 +7,9 @@ import (
 	"fmt"
 	"net"
 	"net/http"
+	"os"
+	"path/filepath"
+	"sync"
 	"syscall"
 	"time"
 
@@ -14,6 +17,8 @@ import (
 	"fluxwarden/ingest/broker"
 	"fluxwarden/ingest/field"
 	"fluxwarden/ingest/gate"
+	"fluxwarden/ingest/wire"
+	"fluxwarden/rules"
 )
 
 // ways are the ways in beside NATS, and what all of them share.
@@ -23,6 +28,13 @@ type ways struct {
 	certificate *broker.Certificate
 	http        *http.Server
 	httpAddress string
+	mqtt        *field.MQTT
+	mqttListen  net.Listener
+
+	followers sync.WaitGroup
+	followMu  sync.Mutex
+	stopped   bool
+	unfollow  context.CancelFunc // ends followers and pollers; nil while there are none
 }
 
 // openAccess reads credentials and certificate.
@@ -93,7 +105,11 @@ func (d *Daemon) watchAccess(ctx context.Context) {
 }
 
 // accessChanged is called after the credentials were read again.
-func (d *Daemon) accessChanged() {}
+func (d *Daemon) accessChanged() {
+	if d.ways.mqtt != nil {
+		d.ways.mqtt.Check()
+	}
+}
 
 // openWays opens the listeners of the other ways in. What comes before the gate is there is asked to come again.
 func (d *Daemon) openWays(context.Context) error {
@@ -115,7 +131,68 @@ func (d *Daemon) openWays(context.Context) error {
 			}
 		})
 	}
+	if !off(s.MQTT) {
+		l, err := d.listenFor("ways: mqtt", s.MQTT)
+		if err != nil {
+			return err
+		}
+		d.ways.mqttListen = l
+		if d.ways.tls != nil {
+			l = tls.NewListener(l, d.ways.tls)
+		}
+		d.ways.mqtt = field.NewMQTT(field.MQTTSettings{Door: d, Guard: d.access, Refuse: d.refuse, Log: d.log})
+		d.done.Go(func() {
+			if err := d.ways.mqtt.Serve(l); err != nil {
+				d.metrics.Failed("mqtt")
+				d.log.Error("readings are no longer taken by MQTT", "cause", err)
+			}
+		})
+	}
 	return nil
+}
+
+// refuse keeps what a way in could not read, in the stream REFUSED, and counts it.
+func (d *Daemon) refuse(ctx context.Context, station string, reason wire.Reason, detail string, count int, payload []byte) error {
+	d.metrics.Gate().Refused(reason, count)
+	return aside{d.broker, d.config.Clock.Now}.SetAside(ctx, string(reason), station, nil, payload, detail)
+}
+
+// follow begins to follow the files and to ask the devices that the site file names, in place of those before.
+func (d *Daemon) follow(site *rules.Site) {
+	w := &d.ways
+	w.followMu.Lock()
+	defer w.followMu.Unlock()
+	w.stopFollowing()
+	if w.stopped {
+		return
+	}
+	ctx, cancel := context.WithCancel(context.Background())
+	w.unfollow = cancel
+	for i := range site.Stations {
+		st := &site.Stations[i]
+		for k := range st.Files {
+			if err := os.MkdirAll(d.config.Settings.Ways.State, 0o750); err != nil {
+				d.metrics.Failed("files")
+				d.log.Error("followed files: how far they were taken is not kept", "cause", err)
+			}
+			f := field.NewFollower(field.FileSettings{Station: st.ID, Layout: &st.Files[k], Door: d, Refuse: d.refuse, Log: d.log,
+				Places: filepath.Join(d.config.Settings.Ways.State, fmt.Sprintf("%s.files-%d.json", st.ID, k+1))})
+			w.followers.Go(func() { f.Run(ctx) })
+		}
+		if len(st.Modbus) > 0 {
+			p := field.NewModbusPoller(field.ModbusSettings{Station: st.ID, Devices: st.Modbus, Door: d, Now: d.config.Clock.Now, Log: d.log,
+				Failed: func() { d.metrics.Failed("modbus") }, Lost: func(int) { d.metrics.Failed("modbus_lost") }})
+			w.followers.Go(func() { p.Run(ctx) })
+		}
+	}
+}
+
+func (w *ways) stopFollowing() {
+	if w.unfollow != nil {
+		w.unfollow()
+		w.followers.Wait()
+		w.unfollow = nil
+	}
 }
 
 func (d *Daemon) listenFor(key, address string) (net.Listener, error) {
@@ -149,7 +226,25 @@ func (d *Daemon) Take(ctx context.Context, station string, payload []byte) (fiel
 // HTTPAddress is where readings are taken by HTTP; empty if they are not.
 func (d *Daemon) HTTPAddress() string { return d.ways.httpAddress }
 
+// MQTTAddress is where readings are taken by MQTT; empty if they are not.
+func (d *Daemon) MQTTAddress() string {
+	if d.ways.mqttListen == nil {
+		return ""
+	}
+	return d.ways.mqttListen.Addr().String()
+}
+
 func (w *ways) stop() {
+	w.followMu.Lock()
+	w.stopFollowing()
+	w.stopped = true
+	w.followMu.Unlock()
+	if w.mqttListen != nil {
+		_ = w.mqttListen.Close()
+	}
+	if w.mqtt != nil {
+		w.mqtt.Close()
+	}
 	if w.http != nil {
 		shutdownServer(w.http)
 	}

@@ -23,7 +23,9 @@ type TLSSettings struct {
 
 // WaySettings say on which addresses readings are taken beside NATS; "none" for none.
 type WaySettings struct {
-	HTTP string `yaml:"http"`
+	HTTP  string `yaml:"http"`
+	MQTT  string `yaml:"mqtt"`
+	State string `yaml:"state"` // directory that keeps how far followed files were taken
 }
 
 // checkWays refuses what would let strangers in.
@@ -36,7 +38,7 @@ func (s *Settings) checkWays() error {
 	if (s.TLS.Certificate == "") != (s.TLS.Key == "") || (s.TLS.ClientCA != "" && s.TLS.Certificate == "") {
 		return errors.New("settings: tls: a certificate needs its key, and client_ca needs both")
 	}
-	for _, l := range []struct{ key, address string }{{"broker: listen", s.brokerListen()}, {"ways: http", s.Ways.HTTP}} {
+	for _, l := range []struct{ key, address string }{{"broker: listen", s.brokerListen()}, {"ways: http", s.Ways.HTTP}, {"ways: mqtt", s.Ways.MQTT}} {
 		if off(l.address) {
 			continue
 		}

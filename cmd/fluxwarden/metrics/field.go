@@ -8,9 +8,6 @@ import (
 	"fluxwarden/ingest/broker"
 )
 
-// Ways are those by which readings come in.
-var Ways = []string{"nats", "http", "mqtt", "file", "modbus", "edge"}
-
 // A Field counts what happens at the ways in, before the gate.
 type Field struct {
 	turnedAway         *prometheus.CounterVec
