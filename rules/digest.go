@@ -101,7 +101,7 @@ func (st *Station) canonical() string {
 			c.line("house_of", strings.Join(h.Of, " "))
 		}
 	}
-	c.line("sky", st.Sky.Model, st.Sky.OzoneCm, st.Sky.WaterCm, st.Sky.AOD, st.Sky.Albedo)
+	st.Sky.canonical(&c)
 	for i := range st.Local {
 		t := &st.Local[i]
 		c.line("local", t.Name, t.Miss)
@@ -116,4 +116,20 @@ func (st *Station) canonical() string {
 		c.line("products", "night_negatives", "zero")
 	}
 	return c.String()
+}
+
+// canonical writes the clear sky's lines; what the file does not say writes nothing.
+func (s *Sky) canonical(c *canon) {
+	c.line("sky", s.Model, s.OzoneCm, s.WaterCm, s.AOD, s.Albedo)
+	for _, m := range [...]struct {
+		key    string
+		values []float64
+	}{{"ozone_cm", s.Monthly.OzoneCm}, {"water_cm", s.Monthly.WaterCm}, {"aod", s.Monthly.AOD}, {"albedo", s.Monthly.Albedo}} {
+		for i, x := range m.values {
+			c.line("sky_month", m.key, float64(i+1), x)
+		}
+	}
+	if s.Channels != (SkyChannels{}) {
+		c.line("sky_channels", s.Channels.OzoneCm, s.Channels.WaterCm, s.Channels.AOD, s.Channels.Albedo)
+	}
 }

@@ -225,8 +225,15 @@ func (r *reader) housekeeping(v *value, path string, st *Station) []Housekeeping
 }
 
 func sky(v *value) Sky {
-	return Sky{Model: v.textAt("model", "bird"), OzoneCm: v.numberAt("ozone_cm", math.NaN()), WaterCm: v.numberAt("water_cm", math.NaN()),
+	s := Sky{Model: v.textAt("model", "bird"), OzoneCm: v.numberAt("ozone_cm", math.NaN()), WaterCm: v.numberAt("water_cm", math.NaN()),
 		AOD: v.numberAt("aod", math.NaN()), Albedo: v.numberAt("albedo", math.NaN())}
+	months := v.at("monthly")
+	s.Monthly = SkyMonths{OzoneCm: months.numbersAt("ozone_cm"), WaterCm: months.numbersAt("water_cm"), AOD: months.numbersAt("aod"),
+		Albedo: months.numbersAt("albedo")}
+	live := v.at("channels")
+	s.Channels = SkyChannels{OzoneCm: live.textAt("ozone_cm", ""), WaterCm: live.textAt("water_cm", ""), AOD: live.textAt("aod", ""),
+		Albedo: live.textAt("albedo", "")}
+	return s
 }
 
 // productsOf applies what a rules section says of the clean products.

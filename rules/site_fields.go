@@ -140,6 +140,18 @@ var stationField = field{kind: objectKind, doc: "A place with a position and ins
 		{key: "water_cm", kind: numberKind, unit: "cm", low: 0.01, high: 10, doc: "Precipitable water."},
 		{key: "aod", kind: numberKind, unit: "1", low: 0, high: 5, doc: "Broadband aerosol optical depth."},
 		{key: "albedo", kind: numberKind, unit: "1", low: 0, high: 1, doc: "Ground albedo."},
+		{key: "monthly", kind: objectKind, doc: "Values by month, January first, in place of those above.", fields: []field{
+			{key: "ozone_cm", kind: numbersKind, unit: "cm", low: 0.05, high: 0.7, least: 12, most: 12, doc: "Total ozone column."},
+			{key: "water_cm", kind: numbersKind, unit: "cm", low: 0.01, high: 10, least: 12, most: 12, doc: "Precipitable water."},
+			{key: "aod", kind: numbersKind, unit: "1", low: 0, high: 5, least: 12, most: 12, doc: "Broadband aerosol optical depth."},
+			{key: "albedo", kind: numbersKind, unit: "1", low: 0, high: 1, least: 12, most: 12, doc: "Ground albedo."},
+		}},
+		{key: "channels", kind: objectKind, doc: "Channels that send such a value live; where one sends nothing, what stands above holds.", fields: []field{
+			{key: "ozone_cm", kind: nameKind, form: channelForm, doc: "Total ozone column, cm."},
+			{key: "water_cm", kind: nameKind, form: channelForm, doc: "Precipitable water, cm."},
+			{key: "aod", kind: nameKind, form: channelForm, doc: "Broadband aerosol optical depth."},
+			{key: "albedo", kind: nameKind, form: channelForm, doc: "Ground albedo."},
+		}},
 	}},
 	{key: "rules", kind: objectKind, doc: "Overrides for this station.", fields: rulesFields},
 	filesField, modbusField,

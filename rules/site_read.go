@@ -55,6 +55,14 @@ func (v *value) numberAt(key string, fallback float64) float64 {
 	return fallback
 }
 
+// numbersAt gives the numbers of a list, nil where the file has none.
+func (v *value) numbersAt(key string) []float64 {
+	if v.given(key) {
+		return v.at(key).numbers
+	}
+	return nil
+}
+
 // A reader collects what is wrong while it walks a file.
 type reader struct {
 	file     string

@@ -61,7 +61,16 @@ type Sky struct {
 	WaterCm float64 // precipitable water, 0.01..10
 	AOD     float64 // broadband aerosol optical depth, 0..5
 	Albedo  float64 // of the ground, 0..1
+
+	Monthly  SkyMonths   // in place of those above
+	Channels SkyChannels // before both, where they send
 }
+
+// SkyMonths are twelve values each, January first; empty where the file says nothing.
+type SkyMonths struct{ OzoneCm, WaterCm, AOD, Albedo []float64 }
+
+// SkyChannels name the channels that send what the clear sky depends on; empty where there is none.
+type SkyChannels struct{ OzoneCm, WaterCm, AOD, Albedo string }
 
 // Timing is how a station's logger stamps its records.
 type Timing struct {

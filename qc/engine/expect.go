@@ -4,7 +4,6 @@ import (
 	"math"
 
 	"fluxwarden/qc/exact"
-	"fluxwarden/qc/fault"
 	"fluxwarden/qc/limit"
 	"fluxwarden/qc/minute"
 	"fluxwarden/qc/sky"
@@ -24,8 +23,8 @@ type Expectation struct {
 	Sun                           limit.Sun
 }
 
-// Expect evaluates the full solar position algorithm at an instant, in microseconds since 1970, UTC, and the clear sky of Ineichen &
-// Perez 2002 at the default turbidity.
+// Expect evaluates the full solar position algorithm at an instant, in microseconds since 1970, UTC, and the clear sky of the
+// station's model with what the site file and the defaults say of air and ground.
 func (p *Plan) Expect(unixMicros int64) Expectation {
 	day := minute.Stamp(unixMicros).Day()
 	at := sun.At(unixMicros, p.site, p.pressureHPa, refractionTemperatureC, sun.DeltaTSeconds(sun.DecimalYear(day)))
@@ -36,12 +35,8 @@ func (p *Plan) Expect(unixMicros int64) Expectation {
 	e.ExtraterrestrialHorizontalWm2 = e.ExtraterrestrialWm2 * max(cosine, 0)
 	hidden := p.horizon != nil && p.horizon.Hides(at.ApparentZenithDeg, at.AzimuthDeg)
 	e.Sun = limit.SunOf(at.ZenithDeg, cosine, at.ApparentZenithDeg, apparent, e.ExtraterrestrialWm2, hidden)
-	clear, ok := sky.IneichenPerez(sky.IneichenInput{CosZenith: apparent, AirMass: sun.AirMassAtPressure(sun.AirMassKastenYoung(at.ApparentZenithDeg), p.pressureHPa),
-		LinkeTurbidity: fault.DefaultLinke, ElevationM: p.Station.ElevationM, ExtraterrestrialWm2: e.ExtraterrestrialWm2})
-	if !ok {
-		nan := math.NaN()
-		clear = sky.Irradiance{GlobalWm2: nan, DirectWm2: nan, DiffuseWm2: nan}
-	}
+	state := p.setup.Sky.State(day, p.pressureHPa)
+	clear := p.setup.Sky.At(at.ApparentZenithDeg, e.ExtraterrestrialWm2, &state)
 	e.Clear = clear
 	return e
 }

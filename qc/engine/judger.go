@@ -175,6 +175,9 @@ func (j *Judger) watch(r int) {
 	if d.house != nil {
 		d.house[r].tell(m)
 	}
+	if m.Minute%fault.SkyInputsEvery == 0 {
+		m.Sky = j.plan.liveSky(j.block, r)
+	}
 	j.watcher.Minute(m)
 	d.ClearGlobalWm2[r], d.ClearDirectWm2[r] = RoundIrradiance(m.Clear[rules.Global]), RoundIrradiance(m.Clear[rules.Direct])
 	d.ClearDiffuseWm2[r], d.ClearLWDownWm2[r] = RoundIrradiance(m.Clear[rules.Diffuse]), RoundIrradiance(m.Clear[rules.LWDown])

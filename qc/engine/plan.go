@@ -33,7 +33,8 @@ type Plan struct {
 	passes      []rules.Outcome // a column of passes
 	setup       *fault.Setup
 	notes       *rules.NoteBook
-	base        *Plan // without notes
+	base        *Plan  // without notes
+	skyColumns  [4]int // block columns of live aerosol, water, ozone and albedo; -1 where there is none
 }
 
 // A seriesPlan is how one series is made from channels.
@@ -92,6 +93,9 @@ func NewPlan(st *rules.Station) (*Plan, error) {
 	p.pairUp()
 	p.planHouse()
 	p.planLocal()
+	for i, c := range [...]string{st.Sky.Channels.AOD, st.Sky.Channels.WaterCm, st.Sky.Channels.OzoneCm, st.Sky.Channels.Albedo} {
+		p.skyColumns[i] = p.column(c)
+	}
 	p.setup = p.faultSetup()
 	p.base = p
 	return p, nil
@@ -166,7 +170,7 @@ func (p *Plan) add(s seriesPlan) error {
 // faultSetup is what the diagnosis needs to know of the station.
 func (p *Plan) faultSetup() *fault.Setup {
 	u := &fault.Setup{Station: p.Station.ID, GapMinutes: int64(p.Station.Limits.GapMinutes), LatitudeDeg: p.Station.LatitudeDeg,
-		ElevationM: p.Station.ElevationM}
+		PressureHPa: p.pressureHPa, Sky: skySetup(p.Station, p.pressureHPa)}
 	for q := range rules.Quantity(rules.RadiationCount) {
 		k := p.primary[q]
 		if k < 0 {

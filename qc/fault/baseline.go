@@ -4,9 +4,7 @@ import (
 	"math"
 	"slices"
 
-	"fluxwarden/qc/exact"
 	"fluxwarden/qc/sky"
-	"fluxwarden/rules"
 )
 
 // A Baseline is what the days before have taught of a station: how its sound instruments stand to each other and how clear its
@@ -20,17 +18,12 @@ type Baseline struct {
 	dull      float64    // how far it scatters within a day
 	zero      [3]float64 // night value of global, direct, diffuse, W/m2
 	zeroKnown [3]bool
-	linke     float64 // Linke turbidity of the site's clear minutes
-	kGlobal   float64 // measured over modelled clear-sky global
-	kDiffuse  float64
+	sky       sky.Learnt // what its cloudless sky is expected to be
 	skyKnown  bool
 	bodyAir   [2]float64 // pyrgeometer body less air, by night and by day, K
 	bodyKnown [2]bool
 	kLW       float64 // measured over modelled clear-sky longwave
 	lwKnown   bool
-	model     sky.IneichenSite
-	pressure  float64 // station pressure over the standard one
-	elevation float64
 }
 
 // The sun's sectors: morning and afternoon, by height.
@@ -58,14 +51,11 @@ const (
 	trustedMinutes = 20
 	// defaultSpread is the scatter assumed before the station's own is known.
 	defaultSpread = 0.01
-	// DefaultLinke is the turbidity assumed before the site's own is known: a mean value of temperate lowland (from memory).
-	DefaultLinke = 3.5
 )
 
 // learn makes the baseline from the facts of the days before.
 func learn(s *Setup, day int64, facts []DayFacts) Baseline {
-	b := Baseline{linke: DefaultLinke, kGlobal: 1, kDiffuse: 1, kLW: 1, overcast: 1, dull: defaultSpread, elevation: s.ElevationM}
-	b.pressure = exact.Pow(1-float64(2.25577e-5*s.ElevationM), 5.25588)
+	b := Baseline{kLW: 1, overcast: 1, dull: defaultSpread}
 	all, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Closure })
 	b.known = n >= 100
 	if !b.known {
@@ -90,16 +80,12 @@ func learn(s *Setup, day int64, facts []DayFacts) Baseline {
 			b.zero[k], b.zeroKnown[k] = m, true
 		}
 	}
-	if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Linke }); n >= 60 {
-		b.linke, b.skyKnown = m, true
-		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.ClearGlobal }); n >= 60 {
-			b.kGlobal = m
-		}
-		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.ClearDiffuse }); n >= 60 {
-			b.kDiffuse = m
-		}
+	closure := math.NaN()
+	if b.known {
+		closure = all
 	}
-	b.model = sky.NewIneichenSite(max(b.linke, 1), b.elevation)
+	b.sky = learnSky(s, day, facts, closure)
+	b.skyKnown = b.sky.Days > 0
 	for k := range b.bodyAir {
 		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.BodyAir[k] }); n >= 60 {
 			b.bodyAir[k], b.bodyKnown[k] = m, true
@@ -133,21 +119,4 @@ func medianOf(facts []DayFacts, least int, pick func(*DayFacts) Fact) (float64, 
 		return v[k/2], n
 	}
 	return (v[k/2-1] + v[k/2]) / 2, n
-}
-
-// clearSky fills in what a cloudless sky would give.
-func (b *Baseline) clearSky(m *Minute) {
-	nan := math.NaN()
-	for q := range m.Clear {
-		m.Clear[q] = nan
-	}
-	if m.Mu > 0 && m.ZenithDeg < 90 {
-		g, n := b.ineichen(m)
-		m.Clear[rules.Direct] = n
-		m.Clear[rules.Diffuse] = max(0, b.kDiffuse*(g-float64(n*m.Mu)))
-		m.Clear[rules.Global] = max(0, b.kGlobal*g)
-	} else {
-		m.Clear[rules.Global], m.Clear[rules.Direct], m.Clear[rules.Diffuse] = 0, 0, 0
-	}
-	m.Clear[rules.LWDown] = b.kLW * clearLongwave(m.Value[rules.AirTemperature], m.Value[rules.Humidity])
 }

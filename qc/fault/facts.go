@@ -1,37 +1,36 @@
 package fault
 
 import (
-	"math"
-
 	"fluxwarden/rules"
 )
 
 // DayFacts is what one day taught, quantised. Minutes under an open or strongly suspected fault are left out.
 type DayFacts struct {
-	Closure      Fact          `json:"closure"`
-	Sector       [sectors]Fact `json:"sector"`
-	Overcast     Fact          `json:"overcast"`
-	Zero         [3]Fact       `json:"zero"`
-	Linke        Fact          `json:"linke"`
-	ClearGlobal  Fact          `json:"clear_global"`
-	ClearDiffuse Fact          `json:"clear_diffuse"`
-	ClearLW      Fact          `json:"clear_lw"`
-	BodyAir      [2]Fact       `json:"body_air"`
-	Kinds        KindFacts     `json:"kinds"`
+	Day         int64         `json:"day,omitempty"` // since 1970
+	Closure     Fact          `json:"closure"`
+	Sector      [sectors]Fact `json:"sector"`
+	Overcast    Fact          `json:"overcast"`
+	Zero        [3]Fact       `json:"zero"`
+	ClearLW     Fact          `json:"clear_lw"`
+	BodyAir     [2]Fact       `json:"body_air"`
+	SkyModel    string        `json:"sky_model,omitempty"`   // that the next two are of
+	Aerosol     Fact          `json:"aerosol,omitzero"`      // sky.LogOf the load; N counts one clear minute in five
+	DiffuseGain Fact          `json:"diffuse_gain,omitzero"` // measured over modelled diffuse under it
+	Kinds       KindFacts     `json:"kinds"`
 }
 
 // A gatherFacts collects a day's facts minute by minute.
 type gatherFacts struct {
-	closure      histogram
-	sector       [sectors]histogram
-	overcast     histogram
-	zero         [3]histogram
-	linke        histogram
-	clearGlobal  histogram
-	clearDiffuse histogram
-	clearLW      histogram
-	bodyAir      [2]histogram
-	kinds        gatherKinds
+	closure     histogram
+	sector      [sectors]histogram
+	overcast    histogram
+	zero        [3]histogram
+	clearLW     histogram
+	bodyAir     [2]histogram
+	aerosol     histogram
+	diffuseGain histogram
+	window      clearMinutes
+	kinds       gatherKinds
 }
 
 func (f *gatherFacts) reset(w *Watcher) {
@@ -43,9 +42,8 @@ func (f *gatherFacts) reset(w *Watcher) {
 	for k := range f.zero {
 		f.zero[k] = newHistogram(-60, 60, 0.25)
 	}
-	f.linke = newHistogram(1, 9, 0.05)
-	f.clearGlobal = newHistogram(0.5, 1.5, 0.005)
-	f.clearDiffuse = newHistogram(0.2, 3, 0.02)
+	f.aerosol = newHistogram(-4.61, 1.15, 0.02) // of the logarithm: loads of 0 to 3
+	f.diffuseGain = newHistogram(0.2, 3, 0.01)
 	f.clearLW = newHistogram(0.6, 1.6, 0.005)
 	for k := range f.bodyAir {
 		f.bodyAir[k] = newHistogram(-15, 15, 0.1)
@@ -83,33 +81,6 @@ func (f *gatherFacts) minute(w *Watcher, v *view) {
 	f.sky(w, v)
 }
 
-// sky takes what a steady minute with much beam says of the clear sky.
-func (f *gatherFacts) sky(w *Watcher, v *view) {
-	g, b, d := v.g(), v.b(), v.d()
-	if !(b > 250 && v.mu > 0.2 && v.steady) || !w.smooth(v) {
-		return
-	}
-	tl := w.base.linkeOf(v)
-	f.linke.add(tl)
-	cg, cn := w.base.withLinke(tl, v)
-	f.clearGlobal.add(g / cg)
-	f.clearDiffuse.add(d / (cg - float64(cn*v.mu)))
-	if b > 0.8*v.clear[rules.Direct] && !w.tainted(rules.LWDown) {
-		f.clearLW.add(v.value[rules.LWDown] / clearLongwave(v.value[rules.AirTemperature], v.value[rules.Humidity]))
-	}
-}
-
-// smooth says whether the last minutes all had much beam and moved little, as under a clear sky.
-func (w *Watcher) smooth(v *view) bool {
-	for i := range historyViews {
-		p := w.prev(i)
-		if p.minute != v.minute-1-int64(i) || !(math.Abs(p.b()-v.b()) < 0.015*v.b()*float64(i+1)) {
-			return false
-		}
-	}
-	return true
-}
-
 // tainted says whether what an instrument says is in doubt: an open episode on it, or on what upsets it.
 func (w *Watcher) tainted(q rules.Quantity) bool {
 	id := w.setup.Instruments[q].ID
@@ -126,8 +97,10 @@ func (w *Watcher) tainted(q rules.Quantity) bool {
 }
 
 func (f *gatherFacts) close(w *Watcher) DayFacts {
-	out := DayFacts{Closure: f.closure.fact(), Overcast: f.overcast.fact(), Linke: f.linke.fact(), ClearGlobal: f.clearGlobal.fact(),
-		ClearDiffuse: f.clearDiffuse.fact(), ClearLW: f.clearLW.fact()}
+	out := DayFacts{Day: w.day, Closure: f.closure.fact(), Overcast: f.overcast.fact(), ClearLW: f.clearLW.fact()}
+	if f.aerosol.n > 0 {
+		out.SkyModel, out.Aerosol, out.DiffuseGain = w.setup.Sky.Model().String(), f.aerosol.fact(), f.diffuseGain.fact()
+	}
 	for k := range f.sector {
 		out.Sector[k] = f.sector[k].fact()
 	}

@@ -23,6 +23,13 @@ func (h *histogram) add(v float64) {
 	h.n++
 }
 
+// addTimes counts a value that stands for several.
+func (h *histogram) addTimes(v float64, times int) {
+	for range times {
+		h.add(v)
+	}
+}
+
 // quantile is the middle of the bin that holds the share p of the values; NaN without any.
 func (h *histogram) quantile(p float64) float64 {
 	if h.n == 0 {

@@ -15,7 +15,7 @@ type KindFacts struct {
 	Net       Fact    `json:"net"`        // net longwave of the minutes of ClearZero, W/m2
 	High      Fact    `json:"high"`       // closure with the sun high
 	Dull      Fact    `json:"dull"`       // global over diffuse without a beam; an open drift does not keep it out
-	Beam      Fact    `json:"beam"`       // the day's turbidity, from the beam alone
+	Beam      Fact    `json:"beam"`       // the day's aerosol load, see DayFacts
 }
 
 // gatherKinds collects a day's KindFacts.
@@ -89,7 +89,7 @@ func (f *gatherKinds) minute(w *Watcher, v *view) {
 }
 
 func (f *gatherKinds) close(w *Watcher, day *DayFacts) KindFacts {
-	out := KindFacts{Day: w.day, Net: f.net.fact(), High: f.high.fact(), Dull: f.dull.fact(), Beam: day.Linke}
+	out := KindFacts{Day: w.day, Net: f.net.fact(), High: f.high.fact(), Dull: f.dull.fact(), Beam: day.Aerosol}
 	for k := range f.clearZero {
 		out.ClearZero[k], out.DullZero[k] = f.clearZero[k].fact(), f.dullZero[k].fact()
 	}

@@ -6,6 +6,7 @@ import (
 	"slices"
 	"testing"
 
+	"fluxwarden/qc/sky"
 	"fluxwarden/qc/sun"
 	"fluxwarden/rules"
 
@@ -14,7 +15,7 @@ import (
 
 // whole is the setup of a station with every instrument; the volts' coefficients stand in the order of the quantities.
 func whole() *Setup {
-	s := &Setup{Station: "moor", LatitudeDeg: 50, ElevationM: 300, GapMinutes: 30}
+	s := &Setup{Station: "moor", LatitudeDeg: 50, PressureHPa: 978, Sky: SkySetup{Site: sky.NewSite(sky.BirdHulstrom, 300, 978)}, GapMinutes: 30}
 	for q := range s.Instruments {
 		s.Instruments[q] = Instrument{ID: []string{"G1", "P1", "D1", "R1", "L1", "U1", "V1", "Q1"}[q], Class: "A", Present: true, Volts: true, SensitivityUVPerW: 8 + float64(q)}
 	}

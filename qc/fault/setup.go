@@ -11,7 +11,8 @@ import (
 type Setup struct {
 	Station     string
 	LatitudeDeg float64
-	ElevationM  float64
+	PressureHPa float64 // of the standard atmosphere at the station
+	Sky         SkySetup
 	GapMinutes  int64 // no record for so long is a gap
 	Instruments [rules.RadiationCount]Instrument
 
@@ -55,6 +56,7 @@ type Minute struct {
 	Run         [rules.QuantityCount]int  // minutes on end with the very same value
 	BodyC       float64                   // of the primary lw_down
 	NetWm2      float64                   // its thermopile signal over its sensitivity
+	Sky         SkyInputs                 // of the channels that the site file names, NaN where absent
 
 	Fan             [rules.RadiationCount]House // of the primary instruments' fans; HouseOut where one of several is
 	Tracker, Supply House

@@ -74,7 +74,7 @@ func (v *view) look(w *Watcher, m *Minute) {
 	v.bodyC, v.net = m.BodyC, m.NetWm2
 	v.fan, v.tracker, v.supply, v.rainMM = m.Fan, m.Tracker, m.Supply, m.PrecipitationMM
 	w.silence(v)
-	w.base.clearSky(m)
+	w.clearSky(m)
 	v.clear = m.Clear
 	c := w.base.closureAt(v)
 	beam := float64(v.b() * v.mu)

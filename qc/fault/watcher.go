@@ -29,6 +29,7 @@ type Watcher struct {
 	taught         []KindFacts // by the days before, ascending
 	kinds          KindCarry
 	touch          touch
+	cloudless      Cloudless
 }
 
 const noMinute = int64(-1) << 40
@@ -58,6 +59,7 @@ type CarriedCase struct {
 func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watcher {
 	w := &Watcher{setup: setup, day: day, last: noMinute}
 	w.base = learn(setup, day, facts)
+	w.cloudless = NewCloudless(setup, day, w.base.sky)
 	for i := range facts {
 		w.taught = append(w.taught, facts[i].Kinds)
 	}

@@ -89,6 +89,16 @@ func (la LongAckerman) clearRatio(ratio []float64, i int) bool {
 	return standardDeviation(ratio[i-half:i+half+1]) < la.RatioSDMax
 }
 
+// steadyRatioMax is the standard deviation of the normalised diffuse ratio up to which a window is steady: values of 0.0012 to 0.0015 are in
+// use (from memory).
+const steadyRatioMax = 0.0015
+
+// SteadyRatio is the fourth test of Long and Ackerman on one window of diffuse over global, looking back only. The ratio is normalised by
+// the cosine of the window's last minute, for within minutes it changes little.
+func SteadyRatio(diffuseOverGlobal []float64, cosZenith float64) bool {
+	return standardDeviation(diffuseOverGlobal) < float64(steadyRatioMax*exact.Pow(cosZenith, LongAckermanDefaults().RatioExponent))
+}
+
 // ClearSkyFit is a day's cloudless sky: G = GlobalA mu^GlobalB and D/G = RatioA mu^RatioB, mu the cosine of the zenith
 // angle. It holds between the cosines it was fitted on.
 type ClearSkyFit struct {

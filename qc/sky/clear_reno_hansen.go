@@ -82,7 +82,7 @@ func (rh RenoHansen) mark(measured, modelled []float64, alpha float64, clear []b
 		return 0
 	}
 	for start := 0; start+w <= len(clear); start++ {
-		if rh.clearWindow(measured[start:start+w], modelled[start:start+w], alpha) {
+		if rh.ClearWindow(measured[start:start+w], modelled[start:start+w], alpha) {
 			for i := range w {
 				clear[start+i] = true
 			}
@@ -97,8 +97,8 @@ func (rh RenoHansen) mark(measured, modelled []float64, alpha float64, clear []b
 	return count
 }
 
-// clearWindow applies the five criteria to one window; any NaN fails.
-func (rh RenoHansen) clearWindow(measured, modelled []float64, alpha float64) bool {
+// ClearWindow applies the five criteria to one window, the model scaled by alpha; any NaN fails.
+func (rh RenoHansen) ClearWindow(measured, modelled []float64, alpha float64) bool {
 	n := len(measured)
 	var mean, meanModel, line, lineModel, slopeSum, stepMax float64
 	top, topModel := math.Inf(-1), math.Inf(-1)
