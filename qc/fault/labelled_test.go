@@ -318,7 +318,7 @@ var floors = [rules.FaultKindCount]floor{
 	rules.ShadeOff:          {8, 8, 8, 4, 0},
 	rules.DomeWet:           {7, 7, 7, 0, 0},
 	rules.DomeSnow:          {3, 2, 1, 0, 0},
-	rules.DomeSoiled:        {4, 4, 4, 2, 0},
+	rules.DomeSoiled:        {4, 3, 3, 2, 0},
 	rules.DomeFouled:        {4, 3, 3, 0, 0},
 	rules.SensorTilted:      {8, 7, 6.5, 5, 0},
 	rules.SensitivityWrong:  {12, 11, 8, 2, 0},
