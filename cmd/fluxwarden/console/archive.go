@@ -5,6 +5,7 @@ import (
 	"slices"
 
 	"fluxwarden/qc/fault"
+	"fluxwarden/rules"
 	"fluxwarden/store"
 	"fluxwarden/store/export"
 )
@@ -58,4 +59,9 @@ func (l library) revisions(station string, day int64) (list []store.Revision, er
 func (l library) csv(w io.Writer, r export.Request) (rows int, err error) {
 	err = l.of(r.Station, func(a *store.Archive) (err error) { rows, err = export.CSV(w, a, r); return err })
 	return rows, err
+}
+
+func (l library) notes(station string) (list []rules.Note, err error) {
+	err = l.of(station, func(a *store.Archive) (err error) { list, err = a.Notes(station); return err })
+	return list, err
 }

@@ -102,7 +102,7 @@ func (c *Console) yearPage(w http.ResponseWriter, r *http.Request) error {
 		Words         string
 		Expiring      []string
 		Reports       []link
-	}{c.frame(fmt.Sprintf("%s %d", st.Name, year), stationLink(st.ID), link{Text: strconv.Itoa(year), Here: true}), st, year, base + strconv.Itoa(year-1), base + strconv.Itoa(year+1),
+	}{c.frame(r, fmt.Sprintf("%s %d", st.Name, year), stationLink(st.ID), link{Text: strconv.Itoa(year), Here: true}), st, year, base + strconv.Itoa(year-1), base + strconv.Itoa(year+1),
 		calendar(st.ID, from, days), calibrations(st, from, to),
 		fmt.Sprintf("%.1f %% of the year's radiation minutes are there; %.1f %% of those are accepted.", 100*float64(total.present)/float64(full), 100*float64(total.accepted)/float64(total.present)),
 		expiring(st, c.now()), reportLinks(st.ID, year, from, days)})

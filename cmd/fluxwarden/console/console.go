@@ -5,6 +5,7 @@ package console
 import (
 	"bytes"
 	"compress/gzip"
+	"context"
 	"embed"
 	"fmt"
 	"html/template"
@@ -27,8 +28,10 @@ type Config struct {
 	Archive func(func(a *store.Archive) error) error // runs a function on the archive; Of makes one
 	Site    func() *rules.Site                       // the rules in force; nil where only an archive is looked at
 	Now     func() time.Time
-	Trouble func() string // why the daemon is not ready, empty if it is; may be nil
-	Failed  func()        // told of a page that could not be made; may be nil
+	Trouble func() string                                  // why the daemon is not ready, empty if it is; may be nil
+	People  string                                         // file of who may sign in; empty is nobody
+	Note    func(ctx context.Context, n *rules.Note) error // keeps a note; nil where none can be written
+	Failed  func()                                         // told of a page that could not be made; may be nil
 	Program string
 }
 
@@ -38,6 +41,7 @@ type Console struct {
 	archive library
 	pages   *template.Template
 	live    live
+	signed  signIns
 
 	mu     sync.Mutex
 	states map[string]*stationState
@@ -68,6 +72,11 @@ func (c *Console) Handler() http.Handler {
 		"GET /station/{station}/fault/{fault}":         c.faultPage,
 		"GET /station/{station}/residual":              c.residualPage,
 		"GET /station/{station}/report/{month}":        c.reportPage,
+		"GET /sign-in":                                 c.signInPage,
+		"POST /sign-in":                                c.signInPost,
+		"POST /sign-out":                               c.signOutPost,
+		"POST /station/{station}/note":                 c.notePost,
+		"POST /station/{station}/fault/{fault}":        c.faultPost,
 		"GET /api/v1/network":                          c.networkJSON,
 		"GET /api/v1/station/{station}/day/{day}":      c.dayJSON,
 		"GET /api/v1/station/{station}/faults":         c.faultsJSON,
@@ -77,10 +86,27 @@ func (c *Console) Handler() http.Handler {
 			return notFound("there is no page "+r.URL.Path, "Begin at the network page.")
 		},
 	} {
+		if strings.HasPrefix(pattern, "POST ") {
+			page = small(page)
+		}
 		mux.HandleFunc(pattern, func(w http.ResponseWriter, r *http.Request) { c.serve(w, r, page) })
 	}
 	mux.HandleFunc("GET /live", c.liveEvents)
-	return secure(mux)
+	return secure(http.NewCrossOriginProtection().Handler(mux))
+}
+
+// formMax is the most that a form may carry, in bytes.
+const formMax = 64 << 10
+
+// small bounds what a form may send.
+func small(page func(http.ResponseWriter, *http.Request) error) func(http.ResponseWriter, *http.Request) error {
+	return func(w http.ResponseWriter, r *http.Request) error {
+		r.Body = http.MaxBytesReader(nil, r.Body, formMax)
+		if err := r.ParseForm(); err != nil {
+			return badInput("the form cannot be read", "Send it again from the page.")
+		}
+		return page(w, r)
+	}
 }
 
 // secure sets what a browser is told of what a page may do: nothing from elsewhere, no frames, no inline script.
@@ -142,7 +168,7 @@ func (c *Console) serve(w http.ResponseWriter, r *http.Request, page func(http.R
 			c.render(held, "problem.html", struct {
 				frame
 				What, Mend string
-			}{c.frame(http.StatusText(p.code)), p.what, p.mend})
+			}{c.frame(r, http.StatusText(p.code)), p.what, p.mend})
 		}
 	}
 	held.send(r)
@@ -189,6 +215,9 @@ type frame struct {
 	Title, Network, Now, Program, Trouble string
 	Trail                                 []link
 	Patterns                              template.HTML
+	SignedIn, Form                        string // who is signed in, and the secret of the session's forms
+	CanSignIn                             bool
+	Here                                  string
 }
 
 type link struct {
@@ -196,12 +225,13 @@ type link struct {
 	Here     bool
 }
 
-func (c *Console) frame(title string, trail ...link) frame {
+func (c *Console) frame(r *http.Request, title string, trail ...link) frame {
 	network := c.config.Site().Network.Name
 	if network == "" {
 		network = "fluxwarden"
 	}
-	return frame{Title: title, Network: network, Now: c.now().Format("2006-01-02 15:04Z"), Program: c.config.Program, Trouble: c.trouble(),
+	s, _ := c.signedIn(r)
+	return frame{SignedIn: s.name, Form: s.form, CanSignIn: c.config.People != "", Here: r.URL.RequestURI(), Title: title, Network: network, Now: c.now().Format("2006-01-02 15:04Z"), Program: c.config.Program, Trouble: c.trouble(),
 		Trail: append([]link{{Text: network, To: "/"}}, trail...), Patterns: patterns}
 }
 

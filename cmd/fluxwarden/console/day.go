@@ -82,6 +82,9 @@ type dayView struct {
 	Residuals                          []link
 	Zoom                               []link
 	API                                string
+	Notes                              []noteLine
+	NoteTo, Kept                       string // where the form goes; the note just kept
+	NoteFrom, NoteUntil                string
 }
 
 type episodeLine struct{ Words, To, Severity, Also string }
@@ -117,7 +120,7 @@ func (c *Console) dayPage(w http.ResponseWriter, r *http.Request) error {
 	if err != nil {
 		return err
 	}
-	view := dayView{frame: c.frame(st.Name+" "+dayName(day), stationLink(st.ID), link{Text: dayName(day), Here: true}), Station: st, Day: dayName(day), Minutes: s.rows,
+	view := dayView{frame: c.frame(r, st.Name+" "+dayName(day), stationLink(st.ID), link{Text: dayName(day), Here: true}), Station: st, Day: dayName(day), Minutes: s.rows,
 		Before: dayLink(st.ID, day-1), After: dayLink(st.ID, day+1), Whole: dayLink(st.ID, day), Export: dayLink(st.ID, day) + "/minutes.csv",
 		Year: fmt.Sprintf("/station/%s/year/%s", url.PathEscape(st.ID), dayName(day)[:4]), API: "/api/v1" + dayLink(st.ID, day)}
 	sky := solarDayOf(st, day)
@@ -127,6 +130,13 @@ func (c *Console) dayPage(w http.ResponseWriter, r *http.Request) error {
 	view.Shares = shares(s)
 	for i := range episodes {
 		view.Episodes = append(view.Episodes, lineOf(&episodes[i]))
+	}
+	if view.Notes, err = c.notesOf(st.ID, win.from, win.to); err != nil {
+		return err
+	}
+	if c.config.Note != nil {
+		view.NoteTo, view.Kept = noteLink(st.ID), r.URL.Query().Get("kept")
+		view.NoteFrom, view.NoteUntil = dayName(day)+"T09:00", dayName(day)+"T09:10"
 	}
 	view.Revisions = c.revisions(st.ID, day)
 	view.Zoom = zoomLinks(st.ID, win, sky)

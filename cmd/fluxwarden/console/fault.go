@@ -23,6 +23,8 @@ type faultView struct {
 	Figure                       template.HTML
 	Residual, Day, More          string
 	Others                       []episodeLine
+	Said                         []string
+	SayTo                        string
 }
 
 type evidenceLine struct{ Name, Value string }
@@ -43,7 +45,7 @@ func (c *Console) faultPage(w http.ResponseWriter, r *http.Request) error {
 		return notFound(fmt.Sprintf("%s has no episode %q", st.ID, id), "It may have been taken back or renamed when more was known; the station's newest day lists what is there.")
 	}
 	e := &all[k]
-	v := faultView{frame: c.frame(e.Kind.Entry().Title, stationLink(st.ID), link{Text: e.Instrument + ": " + e.Kind.Entry().Title, Here: true}), Station: st, Episode: e, Entry: e.Kind.Entry(),
+	v := faultView{frame: c.frame(r, e.Kind.Entry().Title, stationLink(st.ID), link{Text: e.Instrument + ": " + e.Kind.Entry().Title, Here: true}), Station: st, Episode: e, Entry: e.Kind.Entry(),
 		Head: e.Instrument + ": " + e.Kind.Entry().Title, From: minuteName(e.From), To: "still open", Raised: minuteName(e.Raised), Sure: fmt.Sprintf("%.0f %%", 100*e.Confidence),
 		Day: dayLink(st.ID, e.From/minute.PerDay)}
 	if !openEnded(e) {
@@ -63,6 +65,12 @@ func (c *Console) faultPage(w http.ResponseWriter, r *http.Request) error {
 	}
 	if v.More != "" {
 		v.Residual = findResidual(residualOf(e.Kind, instrument(st, e.Instrument))).about
+	}
+	if v.Said, err = c.saidOf(e); err != nil {
+		return err
+	}
+	if c.config.Note != nil {
+		v.SayTo = faultLink(e)
 	}
 	for i := range all {
 		if i != k && all[i].From < e.From+7*minute.PerDay && all[i].From > e.From-7*minute.PerDay {

@@ -290,11 +290,11 @@ func (c *Console) rows() []networkRow {
 	return rows
 }
 
-func (c *Console) networkPage(w http.ResponseWriter, _ *http.Request) error {
+func (c *Console) networkPage(w http.ResponseWriter, r *http.Request) error {
 	rows := c.rows()
 	sick := 0
-	for _, r := range rows {
-		if len(r.Faults) > 0 || r.Silent {
+	for _, row := range rows {
+		if len(row.Faults) > 0 || row.Silent {
 			sick++
 		}
 	}
@@ -306,7 +306,7 @@ func (c *Console) networkPage(w http.ResponseWriter, _ *http.Request) error {
 		frame
 		Rows  []networkRow
 		Words string
-	}{c.frame("Network"), rows, words})
+	}{c.frame(r, "Network"), rows, words})
 }
 
 func (c *Console) networkJSON(w http.ResponseWriter, _ *http.Request) error {

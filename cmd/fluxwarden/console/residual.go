@@ -203,11 +203,24 @@ func (o *series) summarise() {
 // against are the ways to draw a residual.
 var against = []struct{ name, title string }{{"time", "time"}, {"bearing", "bearing of the sun"}, {"zenith", "zenith angle"}}
 
+// axis gives the ends of the axis: what holds nearly all values, with nothing in it, a fifth of the residual's range at least and all of it at most.
+func (o *series) axis() (low, high float64) {
+	x := o.residual
+	low, high = 0, 0
+	if n := len(o.values); n > 0 {
+		v := slices.Sorted(slices.Values(o.values))
+		low, high = min(0, v[n/100]), max(0, v[n-1-n/100])
+	}
+	room := (x.high - x.low) / 10
+	low, high = min(low, -room)-room/2, max(high, room)+room/2
+	return max(low, min(x.low, 0)), min(high, x.high)
+}
+
 // figure draws the series. Episodes are shaded where the axis is time.
 func (o *series) figure(by string, episodes []fault.Episode) template.HTML {
 	x := o.residual
-	low, high := x.low, x.high
-	f := newFigure(x.title, x.title+", "+prettyUnit(x.unit), 320, float64(o.from), float64(o.to), low, high)
+	low, high := o.axis()
+	f := newFigure(x.title, prettyUnit(x.unit), 320, float64(o.from), float64(o.to), low, high)
 	switch by {
 	case "bearing":
 		f.x0, f.x1 = 0, 360
@@ -327,7 +340,7 @@ func (c *Console) residualPage(w http.ResponseWriter, r *http.Request) error {
 		Which, By, Far []link
 		From, To       string
 		Show, Against  string
-	}{frame: c.frame(x.title, stationLink(st.ID), link{Text: x.title, Here: true}), Station: st, About: x.about, N: len(s.values), Figure: s.figure(by, episodes),
+	}{frame: c.frame(r, x.title, stationLink(st.ID), link{Text: x.title, Here: true}), Station: st, About: x.about, N: len(s.values), Figure: s.figure(by, episodes),
 		Stretch: a + " to " + dayName(to/minute.PerDay-1), From: a, To: b, Show: x.name, Against: by}
 	for i := range residuals {
 		view.Which = append(view.Which, link{residuals[i].title, residualLink(st.ID, residuals[i].name, a, b, by), residuals[i].name == x.name})

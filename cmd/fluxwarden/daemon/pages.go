@@ -2,6 +2,8 @@ package daemon
 
 import (
 	"context"
+	"encoding/json"
+	"errors"
 	"fmt"
 	"net/http"
 	"time"
@@ -9,6 +11,8 @@ import (
 	"github.com/prometheus/client_golang/prometheus/promhttp"
 
 	"fluxwarden/cmd/fluxwarden/console"
+	"fluxwarden/ingest/broker"
+	"fluxwarden/rules"
 )
 
 // handler serves metrics, health and the console.
@@ -31,7 +35,7 @@ func (d *Daemon) handler() http.Handler {
 // openConsole makes the pages; what the archive holds of the last day is read beside, so that they are there at once.
 func (d *Daemon) openConsole(run context.Context) {
 	d.hub.console = console.New(console.Config{Archive: d.archive.Read, Site: d.rules.newest, Now: d.config.Clock.Now, Trouble: d.NotReady,
-		Failed: func() { d.metrics.Failed("http") }, Program: d.config.Program})
+		People: d.config.Settings.Console.People, Note: d.keepNote, Failed: func() { d.metrics.Failed("http") }, Program: d.config.Program})
 	if d.config.Settings.Listen == "none" || d.config.Settings.Listen == "" {
 		return
 	}
@@ -41,6 +45,18 @@ func (d *Daemon) openConsole(run context.Context) {
 			d.log.Warn("the network page begins empty", "cause", err)
 		}
 	})
+}
+
+// keepNote gives a note from the console to the stream that the worker reads, as the command note does.
+func (d *Daemon) keepNote(ctx context.Context, n *rules.Note) error {
+	if !d.connected.Load() {
+		return errors.New("the broker is not reached")
+	}
+	text, err := json.Marshal(n)
+	if err != nil {
+		return err
+	}
+	return d.broker.PublishChange(ctx, broker.PartitionOf(n.Station), text)
 }
 
 const (

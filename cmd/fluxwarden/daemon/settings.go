@@ -19,16 +19,17 @@ import (
 
 // Settings are what the daemon itself needs; nothing of them can change a row. In a file, sizes and durations carry a unit.
 type Settings struct {
-	Archive     string         `yaml:"archive"`      // directory of the archive
-	Listen      string         `yaml:"listen"`       // address of console and metrics; "none" for none
-	Grace       Duration       `yaml:"grace"`        // how long a minute waits for its readings
-	CommitEvery Duration       `yaml:"commit_every"` // how often what was judged is written
-	DiskFloor   Size           `yaml:"disk_floor"`   // with less free than this, no reading is taken
-	Broker      BrokerSettings `yaml:"broker"`
-	Access      AccessSettings `yaml:"access"`
-	TLS         TLSSettings    `yaml:"tls"`
-	Ways        WaySettings    `yaml:"ways"`
-	Notify      NotifySettings `yaml:"notify"`
+	Archive     string          `yaml:"archive"`      // directory of the archive
+	Listen      string          `yaml:"listen"`       // address of console and metrics; "none" for none
+	Grace       Duration        `yaml:"grace"`        // how long a minute waits for its readings
+	CommitEvery Duration        `yaml:"commit_every"` // how often what was judged is written
+	DiskFloor   Size            `yaml:"disk_floor"`   // with less free than this, no reading is taken
+	Broker      BrokerSettings  `yaml:"broker"`
+	Access      AccessSettings  `yaml:"access"`
+	TLS         TLSSettings     `yaml:"tls"`
+	Ways        WaySettings     `yaml:"ways"`
+	Notify      NotifySettings  `yaml:"notify"`
+	Console     ConsoleSettings `yaml:"console"`
 }
 
 // BrokerSettings say which broker is used. With a URL it is an external one; without, it runs in this process.
@@ -40,6 +41,11 @@ type BrokerSettings struct {
 	Journal     Size   `yaml:"journal"`     // bound of the stream JOURNAL
 	Refused     Size   `yaml:"refused"`
 	Findings    Size   `yaml:"findings"`
+}
+
+// ConsoleSettings are of the pages.
+type ConsoleSettings struct {
+	People string `yaml:"people"` // file of who may sign in and write notes, made by `fluxwarden people`; empty is nobody
 }
 
 // DefaultSettings are those of a few stations on a small machine. Under systemd the state directory is used.
