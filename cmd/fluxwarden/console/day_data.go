@@ -81,16 +81,15 @@ func (c *Console) dayCSV(w http.ResponseWriter, r *http.Request) error {
 	if err != nil {
 		return err
 	}
-	if !c.archive.has(st.ID) {
+	s, err := readSpan(c.archive, st.ID, day*minute.PerDay, (day+1)*minute.PerDay, []string{"time"})
+	if err != nil {
+		return err
+	}
+	if s.rows == 0 {
 		return c.noSuchDay(st, day)
 	}
 	w.Header().Set("Content-Type", "text/csv; charset=utf-8")
 	w.Header().Set("Content-Disposition", fmt.Sprintf("attachment; filename=\"%s_%s.csv\"", st.ID, dayName(day)))
-	n, err := c.archive.csv(w, export.Request{Station: st.ID, From: day * minute.PerDay, To: (day + 1) * minute.PerDay})
-	if err == nil && n == 0 {
-		w.Header().Del("Content-Type")
-		w.Header().Del("Content-Disposition")
-		return c.noSuchDay(st, day)
-	}
+	_, err = c.archive.csv(w, export.Request{Station: st.ID, From: day * minute.PerDay, To: (day + 1) * minute.PerDay})
 	return err
 }
