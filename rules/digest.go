@@ -75,6 +75,9 @@ func (st *Station) canonical() string {
 		c.line("instrument", in.ID, in.Measures.String(), in.Class, in.Primary, in.Shaded)
 		p := &in.Input
 		c.line("input", p.Signal, p.SignalUnit, p.Irradiance, p.Case, p.CaseUnit, p.Dome, p.DomeUnit, p.SignalMin, p.SignalMax)
+		if in.Offset != ByDefault {
+			c.line("thermal_offset", in.Offset == On)
+		}
 		for _, b := range in.StatusBits {
 			c.line("status", in.Status, float64(b.Bit), b.Test.String(), b.Clear)
 		}

@@ -28,6 +28,14 @@ func (r *reader) instrument(v *value, station string, use channelUse) Instrument
 		r.take(use, v.at("input").at(key), station, "instrument "+in.ID+" "+key)
 	}
 	in.Input = r.input(v.at("input"), in.Measures, path)
+	if v.given("thermal_offset") {
+		if in.Offset = Off; v.at("thermal_offset").yes {
+			in.Offset = On
+		}
+		if in.Measures != Global && in.Measures != Diffuse {
+			r.problem(v.at("thermal_offset").node, "leave it out", "%s measures %s: a thermal offset is taken out of global and diffuse", path, in.Measures)
+		}
+	}
 	r.status(v.at("status"), station, path, use, &in)
 	in.Calibrations = r.calibrations(v.at("calibrations"), &in, v, path)
 	return in

@@ -58,6 +58,12 @@ func (r *reader) station(v *value, limits Limits) Station {
 			st.Instruments = append(st.Instruments, in)
 		}
 		r.primaries(&st, list, path)
+		for i := range st.Instruments {
+			if in := &st.Instruments[i]; in.Offset == On && (in.Measures == Global || in.Measures == Diffuse) && !st.TakesOffset(in) {
+				r.problem(list.items[i].at("thermal_offset").node, "leave it out, or add the case: channel of a pyrgeometer for lw_down",
+					"%s instrument %s: its thermal offset needs a pyrgeometer for lw_down whose case temperature is sent", path, in.ID)
+			}
+		}
 	}
 	st.Weather = r.weather(v.at("weather"), path, use)
 	st.Housekeeping = r.housekeeping(v.at("housekeeping"), path, &st)

@@ -183,6 +183,7 @@ var instrumentField = field{kind: objectKind, doc: "One instrument, or the place
 		{key: "dome_unit", kind: choiceKind, choices: temperatureUnits, fallback: "degC", doc: "Unit of it."},
 		{key: "range", kind: numbersKind, least: 2, most: 2, low: -1e7, high: 1e7, doc: "Least and largest value the logger can give, in the unit of the signal."},
 	}},
+	{key: "thermal_offset", kind: boolKind, doc: "Whether the thermal offset of a global or diffuse instrument is taken out by the net longwave beside it (Dutton et al. 2001), as fitted on the station's own nights. Without it: where a pyrgeometer for lw_down sends its own signal."},
 	{key: "status", kind: objectKind, doc: "The status word of a digital instrument.", fields: []field{
 		{key: "channel", kind: nameKind, required: true, form: channelForm, doc: "Channel of the word, a whole number of at most 32 bits."},
 		{key: "bits", kind: listKind, required: true, least: 1, most: 32, doc: "What the bits mean.", item: &field{kind: objectKind, fields: []field{

@@ -91,9 +91,34 @@ type Instrument struct {
 	Input        Input
 	Calibrations []Calibration // sorted by From; no overlap
 	Shaded       bool          // a pyrgeometer kept out of the beam
+	Offset       Switch        // whether its thermal offset is taken out, after Dutton et al. 2001; see Station.TakesOffset
 	Status       string        // channel of the status word of a digital instrument; empty if there is none
 	StatusBits   []StatusBit   // in the file's order
 	Line         int
+}
+
+// A Switch is on, off, or left to the default.
+type Switch uint8
+
+const (
+	ByDefault Switch = iota
+	On
+	Off
+)
+
+// TakesOffset says whether the thermal offset of an instrument of the station is taken out: where the file says so, else for global and
+// diffuse beside a pyrgeometer that sends its own signal. One whose logger converts tells the net longwave only by its case
+// temperature, and is used if the file asks for it.
+func (st *Station) TakesOffset(in *Instrument) bool {
+	if in.Measures != Global && in.Measures != Diffuse || in.Offset == Off {
+		return false
+	}
+	for i := range st.Instruments {
+		if l := &st.Instruments[i]; l.Measures == LWDown && l.Primary {
+			return l.Input.Case != "" && (l.Input.Signal != "" || in.Offset == On)
+		}
+	}
+	return false
 }
 
 // An Input says which channels an instrument reads and in which unit.

@@ -61,6 +61,9 @@ type Series struct {
 	Notes      []rules.NoteSet                  // what people said of this minute; nil is nothing
 	Outcomes   [rules.TestCount][]rules.Outcome // of the tests that this series has; nil for the others
 
+	offset    []float64 // thermal offset that is taken off, W/m2; nil where none is, NaN where it is not known
+	offsetU95 []float64 // U95 of the value without it
+
 	soundU95     []float64 // U95 of Measured; nil for weather
 	marked       []bool    // the logger sent a mark instead of a value
 	bodyC, domeC []float64 // of a pyrgeometer; nil for others
@@ -98,6 +101,9 @@ func newJudged(p *Plan, day int64) *Judged {
 	j.Series = make([]Series, len(p.series))
 	for i := range p.series {
 		j.Series[i] = p.series[i].columns(&f)
+	}
+	for _, k := range p.offsets {
+		j.Series[k].offset, j.Series[k].offsetU95 = f.cut(), f.cut()
 	}
 	j.Best = p.bestColumns(&f)
 	p.house.columns(j)

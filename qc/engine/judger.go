@@ -23,6 +23,7 @@ type Judger struct {
 	block   *minute.Block
 	watcher *fault.Watcher
 	runs    []limit.Run // one a series
+	offsets []offsetState
 	minute  fault.Minute
 
 	global, direct, diffuse []float64 // measured by the primaries on the day begun; without a value where there is none
@@ -62,6 +63,7 @@ func (j *Judger) BeginWith(judged *Judged) *Judged {
 			carry, carriedFrom = &h.Carry, h.Day
 		}
 	}
+	j.beginOffsets(judged.Day)
 	j.watcher = fault.NewWatcher(j.plan.setup, judged.Day, facts, carry)
 	for i := range j.runs {
 		j.runs[i] = limit.Run{Value: math.NaN()}
@@ -87,6 +89,9 @@ func (j *Judger) AdvancePrepared(block *minute.Block) {
 	for r := j.judged.Rows; r < block.Rows; r++ {
 		j.sequence(r)
 		j.watch(r)
+		if len(j.offsets) > 0 {
+			j.takeOffsets(r)
+		}
 		if j.judged.local != nil {
 			j.plan.localTests(j.judged, block, r)
 		}
@@ -209,6 +214,7 @@ func (j *Judger) End() DaySummary {
 		}
 	}
 	s.Carry.Open = s.Open
+	s.Offsets = j.offsetFacts()
 	j.history = append(j.history, s)
 	for len(j.history) > HistoryDays+1 {
 		j.history = append(j.history[:0], j.history[1:]...)

@@ -29,6 +29,7 @@ type Plan struct {
 	best        []bestPlan
 	house       housePlan
 	local       localPlan
+	offsets     []int           // series whose thermal offset is taken out
 	nothing     []float64       // a column without a value
 	passes      []rules.Outcome // a column of passes
 	setup       *fault.Setup
@@ -92,6 +93,7 @@ func NewPlan(st *rules.Station) (*Plan, error) {
 	}
 	p.pairUp()
 	p.planHouse()
+	p.planOffsets()
 	p.planLocal()
 	for i, c := range [...]string{st.Sky.Channels.AOD, st.Sky.Channels.WaterCm, st.Sky.Channels.OzoneCm, st.Sky.Channels.Albedo} {
 		p.skyColumns[i] = p.column(c)

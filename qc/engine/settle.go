@@ -41,6 +41,9 @@ func settleTests(plan *Plan, j *Judged, i int) {
 	if s.soundU95 != nil {
 		copy(s.U95[:n], s.soundU95[:n])
 	}
+	if s.offset != nil {
+		s.withoutOffset(n)
+	}
 	clear(s.Faults[:n])
 	clear(s.Restored[:n])
 	clear(s.Notes[:n])

@@ -21,6 +21,7 @@ type DaySummary struct {
 	Carry   fault.Carry     `json:"carry"`
 	Open    []fault.Episode `json:"-"` // they stand in the carry
 	Closed  []fault.Episode `json:"closed,omitempty"`
+	Offsets []OffsetFacts   `json:"offsets,omitempty"`
 }
 
 // EncodeSummary writes a summary as the archive keeps it.

@@ -81,6 +81,9 @@ func (f *gatherFacts) minute(w *Watcher, v *view) {
 	f.sky(w, v)
 }
 
+// Tainted says whether what the primary instrument of a quantity says is in doubt at the minute in hand.
+func (w *Watcher) Tainted(q rules.Quantity) bool { return w.tainted(q) }
+
 // tainted says whether what an instrument says is in doubt: an open episode on it, or on what upsets it.
 func (w *Watcher) tainted(q rules.Quantity) bool {
 	id := w.setup.Instruments[q].ID

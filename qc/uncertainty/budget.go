@@ -126,6 +126,19 @@ func (b *Budget) Standard(c *Conditions) float64 {
 // U95 gives the expanded uncertainty, k=2, in the quantity's unit; NaN for a value that is not there.
 func (b *Budget) U95(c *Conditions) float64 { return Coverage * b.Standard(c) }
 
+// OffsetCorrected gives the expanded uncertainty, k=2, of a value whose thermal offset was taken out by the net longwave beside it: what the
+// class allows of zero offset a stays by half, for night and day differ (Sanchez et al. 2015, JTECH 32, 234; the half is own choice), and the
+// standard uncertainty of the offset itself, W/m2, comes to it.
+func (b *Budget) OffsetCorrected(c *Conditions, standardWm2 float64) float64 {
+	u := b.Standard(c)
+	infrared := 1.0
+	if c.NetWm2 == c.NetWm2 {
+		infrared = c.NetWm2 * (1 / infraredOfClassWm2)
+	}
+	gone := float64(float64(infrared*infrared)*b.square[byInfrared]) * (1 - float64(zeroCorrectedShare*zeroCorrectedShare))
+	return Coverage * math.Sqrt(max(0, float64(u*u)-gone)+float64(standardWm2*standardWm2))
+}
+
 func (b *Budget) shortwave(c *Conditions) float64 {
 	v, years, beam := math.Abs(c.Value), known(c.Years, YearsAssumed), b.beam(c)
 	mu := c.CosZenith
