@@ -9,6 +9,8 @@ import (
 	"os"
 	"strings"
 	_ "time/tzdata" // zones of quiet hours, where the machine has none
+
+	_ "golang.org/x/crypto/x509roots/fallback" // authorities, where the machine has none
 )
 
 // Exit codes.
@@ -49,6 +51,7 @@ func commands() []command {
 		{"simulate", "write a synthetic station's readings with labelled faults", cmdSimulate},
 		{"look", "pages over an archive in a browser: network, days, faults, residuals", cmdLook},
 		{"report", "a station's month as one page to print or send", cmdReport},
+		{"health", "ask a running daemon how it is", cmdHealth},
 		{"version", "print the version", func([]string) int { fmt.Println("fluxwarden", version); return exitOK }},
 	}
 }

@@ -33,12 +33,21 @@ func output(t *testing.T, dir string, command ...string) string {
 	return string(out)
 }
 
+// runs says whether a command ends well.
+func runs(command ...string) bool { return exec.Command(command[0], command[1:]...).Run() == nil }
+
 // The rules are taken by Prometheus and fire when they must and only then.
 func TestAlertRulesInPromtool(t *testing.T) {
 	promtool := tool(t, "promtool", "prometheus")
 	output(t, file("alerts"), promtool, "check", "rules", "fluxwarden.rules.yaml")
 	output(t, file("alerts"), promtool, "check", "config", "prometheus.yaml")
 	dir := t.TempDir()
+	for name, from := range map[string]string{"prometheus.yaml": "container", "fluxwarden.rules.yaml": "alerts"} {
+		if err := os.WriteFile(filepath.Join(dir, name), []byte(read(t, from, name)), 0o600); err != nil {
+			t.Fatal(err)
+		}
+	}
+	output(t, dir, promtool, "check", "config", "prometheus.yaml")
 	text := read(t, "alerts", "fluxwarden.rules.yaml")
 	shortened := adviceLine.ReplaceAllString(text, "${1}ADVICE")
 	if shortened == text {
@@ -56,10 +65,8 @@ func TestAlertRulesInPromtool(t *testing.T) {
 	if err := os.WriteFile(filepath.Join(dir, "fluxwarden.rules.yaml"), []byte(eager), 0o600); err != nil {
 		t.Fatal(err)
 	}
-	cmd := exec.Command(promtool, "test", "rules", "fluxwarden.days.test.yaml")
-	cmd.Dir = dir
-	if out, err := cmd.CombinedOutput(); err == nil {
-		t.Errorf("a rule that always fires passes the tests:\n%s", out)
+	if runs(promtool, "test", "rules", filepath.Join(dir, "fluxwarden.days.test.yaml")) {
+		t.Error("a rule that always fires passes the tests")
 	}
 }
 
