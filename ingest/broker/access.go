@@ -39,6 +39,8 @@ type Access struct {
 	byName map[string]*Credential
 	byKey  map[string]*Credential
 	proved map[[32]byte]string        // hash of name and secret that were proved right, to the name: bcrypt is slow by intent
+	edges  *server.Account            // that edges join; nil: none may
+	leaves map[uint64]string          // connections of edges, to their names
 	cut    func(gone map[string]bool) // ends the server's connections of these names and nkeys
 }
 
@@ -210,7 +212,20 @@ func (a *Access) prove(name, secret string) (*Credential, string) {
 
 // Check implements server.Authentication.
 func (a *Access) Check(client server.ClientAuthentication) bool {
+	if client.Kind() == server.LEAF {
+		return a.checkLeaf(client)
+	}
 	o := client.GetOpts()
+	if o.Username == houseEdgesName && subtle.ConstantTimeCompare([]byte(o.Password), []byte(a.house)) == 1 {
+		a.mu.Lock()
+		account := a.edges
+		a.mu.Unlock()
+		if account == nil {
+			return false
+		}
+		client.RegisterUser(&server.User{Username: houseEdgesName, Account: account})
+		return true
+	}
 	if o.Username == houseName && subtle.ConstantTimeCompare([]byte(o.Password), []byte(a.house)) == 1 {
 		return true
 	}
@@ -302,19 +317,6 @@ func LoopbackOnly(address string) bool {
 	}
 	ip := net.ParseIP(host)
 	return ip != nil && ip.IsLoopback()
-}
-
-// leafUsers are the edges that may join.
-func (a *Access) leafUsers(account string) []*server.User {
-	a.mu.Lock()
-	defer a.mu.Unlock()
-	var users []*server.User
-	for _, name := range slices.Sorted(maps.Keys(a.byName)) {
-		if c := a.byName[name]; c.Role == RoleEdge && c.Revoked.IsZero() {
-			users = append(users, &server.User{Username: c.Name, Password: c.Bcrypt, Account: &server.Account{Name: account}})
-		}
-	}
-	return users
 }
 
 // violation gives the reason behind what the server logs about a client, empty for anything else.

@@ -41,6 +41,7 @@ type EmbeddedSettings struct {
 	StoreBytes int64       // all streams together; the streams' own bounds must fit in
 	Access     *Access     // who may speak; nil: whoever comes from loopback
 	TLS        *tls.Config // nil: none
+	Leaf       LeafSettings
 	Log        *slog.Logger
 
 	authSeconds float64 // for a client to say who it is; 0 is authTimeoutSeconds
@@ -69,7 +70,12 @@ func StartEmbedded(ctx context.Context, s EmbeddedSettings) (*Embedded, error) {
 	if s.Access == nil {
 		s.Access, _ = OpenAccess(AccessSettings{Anonymous: true}) // without a book it cannot fail
 	}
-	srv, err := server.NewServer(embeddedOptions(s))
+	options := embeddedOptions(s)
+	if err := s.leaf(options); err != nil {
+		unlock()
+		return nil, err
+	}
+	srv, err := server.NewServer(options)
 	if err != nil {
 		unlock()
 		return nil, fmt.Errorf("broker: embedded server: %w", err)
@@ -87,6 +93,9 @@ func StartEmbedded(ctx context.Context, s EmbeddedSettings) (*Embedded, error) {
 			err = fmt.Errorf("%w: %s", err, last)
 		}
 		return nil, fmt.Errorf("broker: embedded server on %s:%d: %w", s.host(), s.Port, err)
+	}
+	if s.Leaf.Host != "" {
+		e.openEdges()
 	}
 	if !srv.JetStreamEnabled() {
 		e.Stop()
@@ -130,6 +139,14 @@ func (e *Embedded) disconnect(gone map[string]bool) {
 	for _, c := range list.Conns {
 		if gone[c.AuthorizedUser] {
 			_ = e.server.DisconnectClientByID(c.Cid) // an error says that it has gone already
+		}
+	}
+	e.access.mu.Lock()
+	defer e.access.mu.Unlock()
+	for id, name := range e.access.leaves {
+		if gone[name] {
+			go e.server.DisconnectClientByID(id)
+			delete(e.access.leaves, id)
 		}
 	}
 }

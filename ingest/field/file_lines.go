@@ -150,15 +150,10 @@ func (r *lineReader) record(line []byte) (*minute.Reading, *wire.Refusal) {
 			return nil, refuse(wire.BadValue, "column %s: %.40q is not a number; a mark for no value belongs into missing", r.layout.Channels[i].Column, fields[c])
 		}
 		if given {
-			reading.Values = append(reading.Values, minute.ChannelValue{Channel: r.layout.Channels[i].Channel, Value: sample(v)})
+			reading.Values = append(reading.Values, minute.ChannelValue{Channel: r.layout.Channels[i].Channel, Value: minute.Single(v)})
 		}
 	}
 	return reading, nil
-}
-
-// sample is a value that was measured once.
-func sample(v float64) minute.Value {
-	return minute.Value{Mean: v, SD: math.NaN(), Min: v, Max: v, N: 1}
 }
 
 // number reads a field; given is false where it stands for no value.

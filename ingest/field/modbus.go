@@ -218,7 +218,7 @@ func readModbus(c *modbus.ModbusClient, d *rules.ModbusDevice, at minute.Stamp) 
 			v := &d.Values[i]
 			at := int(v.Address) - int(first.Address)
 			if x, ok := modbusNumber(v, words[at:at+v.Registers()]); ok {
-				r.Values = append(r.Values, minute.ChannelValue{Channel: v.Channel, Value: sample(x)})
+				r.Values = append(r.Values, minute.ChannelValue{Channel: v.Channel, Value: minute.Single(x)})
 			}
 		}
 	}

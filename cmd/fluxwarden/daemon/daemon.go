@@ -222,6 +222,9 @@ func (d *Daemon) openBroker(ctx context.Context) error {
 				}
 			}
 		}
+		if err := d.leafSettings(&s.Leaf); err != nil {
+			return &Unusable{err}
+		}
 		e, err := broker.StartEmbedded(ctx, s)
 		if err != nil {
 			return err
@@ -291,13 +294,14 @@ func (d *Daemon) bringUp(ctx context.Context) error {
 	}
 	d.gate.Store(g)
 	w := worker.New(worker.Config{
-		Journal: &journal{b: d.broker, onFull: d.metrics.Journal}, Lease: d.lease(ctx), Changes: &changes{b: d.broker}, Archive: d.archive, Rules: d.rules,
+		Journal: &journal{b: d.broker, onFull: d.metrics.Journal, hold: d.holdForHub()}, Lease: d.lease(ctx), Changes: &changes{b: d.broker}, Archive: d.archive, Rules: d.rules,
 		Findings: findings{d.broker, d.config.Clock.Now}, Aside: aside{d.broker, d.config.Clock.Now}, Live: d.hub, Meter: d.metrics.Worker(),
 		Clock: d.config.Clock, Log: d.log, Program: d.config.Program, Grace: time.Duration(d.config.Settings.Grace),
 		CommitEvery: time.Duration(d.config.Settings.CommitEvery)})
 	d.working.Store(true)
 	d.done.Go(func() { d.work(ctx, w) })
 	d.follow(d.rules.newest())
+	d.startEdgeOrHub(ctx)
 	return nil
 }
 

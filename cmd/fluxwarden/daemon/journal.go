@@ -20,6 +20,7 @@ type journal struct {
 	mu     sync.Mutex
 	opened *broker.Journal
 	onFull func(bytes, limit uint64)
+	hold   func(ctx context.Context) (upTo uint64, err error) // on an edge: what the hub has; nil elsewhere
 }
 
 func (j *journal) open(ctx context.Context) (*broker.Journal, error) {
@@ -75,6 +76,15 @@ func (j *journal) Purge(ctx context.Context, seq uint64, before time.Time) error
 	o, err := j.open(ctx)
 	if err != nil {
 		return err
+	}
+	if j.hold != nil {
+		has, err := j.hold(ctx)
+		if err != nil {
+			return err
+		}
+		if seq = min(seq, has); seq == 0 {
+			return nil
+		}
 	}
 	return o.PurgeBefore(ctx, seq, before)
 }

@@ -30,6 +30,8 @@ type Settings struct {
 	Ways        WaySettings     `yaml:"ways"`
 	Notify      NotifySettings  `yaml:"notify"`
 	Console     ConsoleSettings `yaml:"console"`
+	Edge        EdgeSettings    `yaml:"edge"`
+	Hub         HubSettings     `yaml:"hub"`
 }
 
 // BrokerSettings say which broker is used. With a URL it is an external one; without, it runs in this process.
@@ -60,6 +62,7 @@ func DefaultSettings() Settings {
 		Broker: BrokerSettings{Store: filepath.Join(state, "journal"), Listen: "127.0.0.1:4222", Journal: Size(streams.JournalBytes),
 			Refused: Size(streams.RefusedBytes), Findings: Size(streams.FindingsBytes)},
 		Access: AccessSettings{Anonymous: "auto"}, Ways: WaySettings{HTTP: "none", MQTT: "none", State: filepath.Join(state, "ways")},
+		Hub:    HubSettings{Listen: "none", CatchUp: 5000},
 		Notify: NotifySettings{Zone: "UTC", Sent: filepath.Join(state, "notify.jsonl")}}
 }
 

@@ -28,6 +28,21 @@ type WaySettings struct {
 	State string `yaml:"state"` // directory that keeps how far followed files were taken
 }
 
+// EdgeSettings make the daemon an edge of a hub: its journal is kept until the hub has it.
+type EdgeSettings struct {
+	Hub         string `yaml:"hub"`         // nats-leaf://host:7422 or tls://host:7422; empty: no edge
+	Credentials string `yaml:"credentials"` // file of the edge's secret, made at the hub by fluxwarden credentials new --role edge
+	CA          string `yaml:"ca"`          // file of the authority that signed the hub's certificate
+}
+
+// HubSettings make the daemon a hub: it reads the journals of its edges, which are those that have a credential.
+type HubSettings struct {
+	Listen string `yaml:"listen"` // address for edges; none for no hub
+	// CatchUp bounds how many readings a second are taken from one edge while what it sends is older than a minute, so that live data of
+	// the others stay live.
+	CatchUp int `yaml:"catch_up_readings_per_second"`
+}
+
 // checkWays refuses what would let strangers in.
 func (s *Settings) checkWays() error {
 	switch s.Access.Anonymous {
@@ -38,7 +53,13 @@ func (s *Settings) checkWays() error {
 	if (s.TLS.Certificate == "") != (s.TLS.Key == "") || (s.TLS.ClientCA != "" && s.TLS.Certificate == "") {
 		return errors.New("settings: tls: a certificate needs its key, and client_ca needs both")
 	}
-	for _, l := range []struct{ key, address string }{{"broker: listen", s.brokerListen()}, {"ways: http", s.Ways.HTTP}, {"ways: mqtt", s.Ways.MQTT}} {
+	if s.Edge.Hub != "" && (s.Edge.Credentials == "" || s.Broker.URL != "") {
+		return errors.New("settings: edge: an edge needs the file of its credentials, and the broker in this process")
+	}
+	if !off(s.Hub.Listen) && (s.Access.Credentials == "" || s.Broker.URL != "" || s.Hub.CatchUp < 1) {
+		return errors.New("settings: hub: a hub needs access: credentials with those of its edges, the broker in this process, and catch_up_readings_per_second above 0")
+	}
+	for _, l := range []struct{ key, address string }{{"hub: listen", s.Hub.Listen}, {"broker: listen", s.brokerListen()}, {"ways: http", s.Ways.HTTP}, {"ways: mqtt", s.Ways.MQTT}} {
 		if off(l.address) {
 			continue
 		}

@@ -12,6 +12,10 @@ import (
 type Field struct {
 	turnedAway         *prometheus.CounterVec
 	certificateExpires prometheus.Gauge
+
+	edgeJoined, edgeUnsent, edgeShare prometheus.Gauge
+	fromEdge                          *prometheus.CounterVec
+	edgeLag                           *prometheus.GaugeVec
 }
 
 // NewField registers the series of the ways in.
@@ -26,7 +30,28 @@ func (m *Metrics) NewField() *Field {
 			f.turnedAway.WithLabelValues(w, r)
 		}
 	}
+	f.edgeJoined = m.gauge("edge", "joined", "On an edge: 1 while the link to the hub stands.")
+	f.edgeUnsent = m.gauge("edge", "unsent_entries", "On an edge: entries of the journal that the hub has not got.")
+	f.edgeShare = m.gauge("edge", "journal_share", "On an edge: share of the journal's bound that is taken while the hub has not got all; at 1, readings are refused.")
+	f.fromEdge = m.counterVec("hub", "edge_entries_total", "On a hub: journal entries taken from an edge.", "edge")
+	f.edgeLag = m.gaugeVec("hub", "edge_lag_seconds", "On a hub: age of the entry that was taken last from an edge, when it was taken.", "edge")
 	return f
+}
+
+// Edge says how an edge stands to its hub.
+func (f *Field) Edge(joined bool, unsent uint64, share float64) {
+	f.edgeJoined.Set(0)
+	if joined {
+		f.edgeJoined.Set(1)
+	}
+	f.edgeUnsent.Set(float64(unsent))
+	f.edgeShare.Set(share)
+}
+
+// FromEdge counts entries that a hub has taken.
+func (f *Field) FromEdge(edge string, entries int, age time.Duration) {
+	f.fromEdge.WithLabelValues(edge).Add(float64(entries))
+	f.edgeLag.WithLabelValues(edge).Set(age.Seconds())
 }
 
 // TurnedAway counts one that was turned away.

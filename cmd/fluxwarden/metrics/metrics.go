@@ -20,7 +20,7 @@ const namespace = "fluxwarden"
 
 // Operations are all that can fail and is counted by its name.
 var Operations = []string{"commit", "lease", "lost_partition", "judge", "publish_findings", "purge_journal", "read_archive", "read_journal", "read_changes", "set_aside",
-	"broker", "reload", "disk", "http", "clock", "notify", "credentials", "mqtt", "files", "modbus", "modbus_lost"}
+	"broker", "reload", "disk", "http", "clock", "notify", "credentials", "mqtt", "files", "modbus", "modbus_lost", "edge"}
 
 // NotifyWays are the ways on which the daemon's own messages go out.
 var NotifyWays = []string{"webhook", "mail"}
