@@ -22,6 +22,7 @@ type imbalance struct {
 	Humid  Number  `json:"humid"`  // most humid hour before it began, %
 	Rise   int64   `json:"rise"`   // sunrise before it began
 	Begun  bool    `json:"begun"`
+	Arc    arc     `json:"arc"`   // deviation by the sun's bearing, with a beam
 	Model  model   `json:"model"` // of the cause that the open episode names
 }
 
@@ -106,6 +107,9 @@ const (
 // watchImbalance takes a minute into the imbalance and raises, renames or ends its episode.
 func (w *Watcher) watchImbalance(v *view) {
 	im := &w.slow.Imbalance
+	if w.watchFouled(v) {
+		return
+	}
 	if w.otherCause() {
 		if !w.ownImbalance() {
 			*im = imbalance{} // what has gathered was that cause's doing
@@ -252,6 +256,7 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 		im.First.add(delta)
 	}
 	im.Recent += Number((delta - im.Recent.Float()) / min(float64(im.N), 60))
+	im.Arc.add(v.azimuthDeg, delta)
 	im.Air.add(v.value[rules.AirTemperature])
 	if w.base.skyKnown && v.b() > 0.5*v.clear[rules.Direct] {
 		im.Sky[0].add(v.g()/v.clear[rules.Global] - 1)
@@ -269,6 +274,9 @@ func (w *Watcher) imbalanceScore(v *view, odds float64) {
 	switch {
 	case im.Score <= 0:
 		if open >= 0 {
+			if w.becomesFouled(open, v) {
+				return
+			}
 			w.finish(open, im.Last+1)
 		}
 		*im = imbalance{}

@@ -102,7 +102,10 @@ type KindCarry struct {
 	Since  [2]int64 `json:"since"`  // since when
 	Checks []Check  `json:"checks,omitempty"`
 	During []during `json:"during,omitempty"`
-	Jump   string   `json:"jump,omitempty"` // id of the open episode of a change of gain that only the days show
+	Spot   spot     `json:"spot"`
+	// BeamLow is by which share direct was low, in the minutes in which it missed the sun in part.
+	BeamLow mean   `json:"beam_low"`
+	Jump    string `json:"jump,omitempty"` // id of the open episode of a change of gain that only the days show
 }
 
 // endKinds asks, once a day, the kinds that only days can show.

@@ -17,11 +17,15 @@ func pointingLost(w *Watcher, c *faultCase, v *view) hint {
 		return nothing
 	}
 	k := g / cg
+	if low, ok := w.beamMisses(v, k); ok {
+		w.kinds.BeamLow.add(low)
+		return hint{pointingPartOdds, k}
+	}
 	switch {
 	case b > 0.4*cb && d < 0.75*g:
-		return hint{odds: -0.6}
+		return hint{odds: -0.6 * w.pointingPatience()}
 	case b > 150 && d < 0.9*g:
-		return hint{odds: -0.3} // it sees the sun, if through cloud
+		return hint{odds: -0.3 * w.pointingPatience()} // it sees the sun, if through cloud
 	case v.tracker == HouseOut: // it says so itself
 		return hint{0.4, k}
 	case b < 0.08*cb && math.Abs(d-g) < float64(0.06*g)+10 && k > 0.85 && k < 1.12 && w.followsClear(v):
@@ -42,4 +46,38 @@ func (w *Watcher) followsClear(v *view) bool {
 		}
 	}
 	return true
+}
+
+// pointingPatience is by how much a beam that is well followed counts for less: an axis that is off by a few degrees misses the sun at some hours
+// of each day and meets it at others, and that is one fault.
+func (w *Watcher) pointingPatience() float64 {
+	if w.kinds.BeamLow.N >= 45 {
+		return 0.1
+	}
+	return 1
+}
+
+const (
+	// pointingPartOdds is what a minute of a beam that misses in part says. A uniform veil of cirrus comes near it, so it takes hours.
+	pointingPartOdds = 0.04
+	// pointingPartLow is by which share the beam must be low at least: less is within what aerosol does.
+	pointingPartLow = 0.15
+	// pointingPartDims is what share of the beam that is missing may be missing in global: haze and cirrus take a fifth and more of it away
+	// altogether (common practice: the rest is scattered forward), a pyrheliometer that looks aside takes nothing.
+	pointingPartDims = 0.08
+)
+
+// beamMisses says whether direct is low by a part while global is the clear sky's: what dims the beam in the air dims global too, by a part of
+// it, and warms the sky; a pyrheliometer that looks past the middle of the sun does neither. It gives by which share direct is low.
+func (w *Watcher) beamMisses(v *view, k float64) (low float64, ok bool) {
+	b, cb := v.b(), v.clear[rules.Direct]
+	low = 1 - b/cb
+	if !(low > pointingPartLow && low < 0.92) || v.mu < 0.3 || !(math.Abs(k-1) < 0.05) || !w.followsClear(v) || v.steady != w.prev(0).steady {
+		return 0, false
+	}
+	if lw := v.value[rules.LWDown]; w.base.lwKnown && !math.IsNaN(lw) && lw > v.clear[rules.LWDown]+10 {
+		return 0, false
+	}
+	missing := float64(low*cb) * v.mu
+	return low, v.g() > v.clear[rules.Global]-float64(pointingPartDims*missing)
 }

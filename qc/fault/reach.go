@@ -29,12 +29,16 @@ func Reaches(e *Episode, q rules.Quantity, measured, apparentZenithDeg, azimuthD
 		rail, ok := e.number("rail")
 		return ok && measured > rail-1
 	case rules.PointingLost, rules.ShadeOff, rules.SensorTilted, rules.SensitivityWrong, rules.SensitivityDrift, rules.DomeSoiled,
-		rules.UnitSlip, rules.ChannelsSwapped, rules.PolarityReversed, rules.DomeFouled:
+		rules.UnitSlip, rules.ChannelsSwapped, rules.PolarityReversed:
 		return apparentZenithDeg < sunlit || q.Longwave()
 	case rules.DomeWet, rules.DomeSnow:
 		return apparentZenithDeg < sunlit || q.Longwave()
 	case rules.ClockShift: // at night there is nothing to be early or late with, but in the longwave
 		return apparentZenithDeg < 97 || q.Longwave()
+	case rules.DomeFouled: // a spot reaches its bearings
+		from, ok1 := e.number("bearing_from")
+		to, ok2 := e.number("bearing_to")
+		return apparentZenithDeg < sunlit && (!ok1 || !ok2 || withinArc(azimuthDeg, from, to)) || q.Longwave()
 	case rules.Shadow:
 		from, ok1 := e.number("bearing_from")
 		to, ok2 := e.number("bearing_to")

@@ -147,7 +147,7 @@ func held(before, now []Episode, minute int64) error {
 			}
 			continue
 		}
-		if o := &before[k]; e.Rev < o.Rev || o.To != Open && (e.To != o.To || e.Rev != o.Rev) {
+		if o := &before[k]; e.Rev < o.Rev || o.To != Open && (e.To != o.To || e.Rev != o.Rev && !toldHowItEnded(o, e)) {
 			return fmt.Errorf("%+v became %+v", *o, *e)
 		}
 	}
@@ -157,6 +157,12 @@ func held(before, now []Episode, minute int64) error {
 		}
 	}
 	return nil
+}
+
+// toldHowItEnded says whether all that is new of an episode that is over is what became of its end, which is told once.
+func toldHowItEnded(before, now *Episode) bool {
+	n := len(before.Evidence)
+	return now.Rev == before.Rev+1 && before.Check() == nil && now.Check() != nil && len(now.Evidence) == n+2 && slices.Equal(before.Evidence, now.Evidence[:n])
 }
 
 // setupOf leaves out some of a station's instruments.

@@ -107,6 +107,9 @@ func (w *Watcher) step(i int, c *faultCase, h hint) {
 		}
 	}
 	if s.Score <= 0 {
+		if c.kind == rules.PointingLost {
+			w.kinds.BeamLow = mean{}
+		}
 		*s = suspicion{Since: noMinute}
 		return
 	}
@@ -169,6 +172,9 @@ const hindsightMinutes = 10 * 1440
 
 func (w *Watcher) evidenceOf(c *faultCase, s *suspicion) []Evidence {
 	out := []Evidence{{"minutes", float64(s.For), "min"}}
+	if c.kind == rules.PointingLost && w.kinds.BeamLow.N > s.For/2 {
+		out = append(out, Evidence{"beam_low", roundTo(100*w.kinds.BeamLow.of(), 1), "%"})
+	}
 	if c.number != "" {
 		out = append(out, Evidence{c.number, roundTo(s.mean(), 1000), c.unit})
 	}

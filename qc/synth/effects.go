@@ -78,8 +78,10 @@ const (
 )
 
 func (f *activeFault) pointing(e *effects, n *now) {
-	off := f.Amount
-	if off == 0 {
+	// An azimuth axis that is off by an angle turns the sight line by that angle about the vertical: little under a high sun, most at the horizon.
+	half := exact.Sin(f.Amount / 2 * radPerDeg)
+	off := 2 * exact.Asin(clamp(math.Abs(half)*math.Sqrt(math.Max(0, 1-float64(n.up*n.up))), 0, 1)) / radPerDeg
+	if f.Amount == 0 {
 		at := &f.stopped
 		cos := float64(n.east*at.east) + float64(n.north*at.north) + float64(n.up*at.up)
 		off = exact.Acos(clamp(cos, -1, 1)) / radPerDeg
@@ -87,6 +89,27 @@ func (f *activeFault) pointing(e *effects, n *now) {
 	hit := 1 - ramp(off, slopeAngleDeg, limitAngleDeg)
 	e.pointing *= hit
 	e.beamIn = math.Max(e.beamIn, 1-hit)
+}
+
+// A spot of 8 mm radius on a dome of 25 mm, over a detector of 10 mm, takes its share of the beam while the sun stands within 5 degrees of it and
+// none beyond 41 (the sizes are common practice, the angles their geometry), and a tenth of that of the sky. On a window it takes its share of all.
+const (
+	spotWholeDeg = 5
+	spotNoneDeg  = 41
+	spotOfSky    = 0.1
+)
+
+func (f *activeFault) spot(e *effects, n *now) {
+	if f.onWindow {
+		e.beamPass *= 1 - f.Amount
+		return
+	}
+	at := &f.stopped
+	cos := float64(n.east*at.east) + float64(n.north*at.north) + float64(n.up*at.up)
+	away := exact.Acos(clamp(cos, -1, 1)) / radPerDeg
+	e.beamPass *= 1 - float64(f.Amount*(1-ramp(away, spotWholeDeg, spotNoneDeg)))
+	e.skyPass *= 1 - float64(spotOfSky*f.Amount)
+	e.netPass *= 1 - float64(spotOfSky*f.Amount)
 }
 
 // onDome is what lies on the dome, shades it or moves it.
@@ -112,7 +135,7 @@ func (f *activeFault) onDome(e *effects, n *now, start minute.Stamp) {
 	case rules.DomeSoiled:
 		keepOff(f.Amount * f.passed(start))
 	case rules.DomeFouled:
-		keepOff(f.Amount)
+		f.spot(e, n)
 	case rules.SensorTilted:
 		e.tiltDeg, e.towardsDeg = f.Amount, f.TowardsDeg
 	case rules.Shadow:

@@ -71,12 +71,12 @@ var kinds = [rules.FaultKindCount]kindOfFault{
 	rules.UnitSlip:          {0.001, "factor", anyInstrument, ""},
 	rules.ChannelsSwapped:   {0, "none", anyInstrument, ""},
 	rules.ClockShift:        {600, "s that the clock is ahead", nil, Logger},
-	rules.PointingLost:      {0, "degrees off; 0 is a tracker that stands still", nil, Tracker},
+	rules.PointingLost:      {0, "degrees that the azimuth axis is off; 0 is a tracker that stands still", nil, Tracker},
 	rules.ShadeOff:          {1, "share of the beam", isDiffuse, ""},
 	rules.DomeWet:           {0.2, "share of the beam that is scattered", domed, ""},
 	rules.DomeSnow:          {0.7, "share of the light kept off", domed, ""},
 	rules.DomeSoiled:        {0.08, "share of the light kept off at the end", domed, ""},
-	rules.DomeFouled:        {0.2, "share of the light kept off", domed, ""},
+	rules.DomeFouled:        {0.3, "share of the beam kept off with the sun behind it", domed, ""},
 	rules.SensorTilted:      {3, "degrees", levelled, ""},
 	rules.SensitivityWrong:  {0.06, "share that it reads too much", anyInstrument, ""},
 	rules.SensitivityDrift:  {-0.05, "share at the end", anyInstrument, ""},
@@ -113,7 +113,8 @@ type activeFault struct {
 	Fault
 	instrument int     // -1 for the tracker's and the logger's
 	partner    int     // of a swap
-	stopped    now     // where the sun stood when a tracker stopped
+	stopped    now     // where the sun stood when a tracker stopped, or behind what fell on a dome
+	onWindow   bool    // it fell on a pyrheliometer's window
 	held       *sensed // what a frozen input stands at
 	chance     source
 }
@@ -147,6 +148,9 @@ func (s *Station) AddFault(f Fault) error {
 		}
 	case rules.PointingLost:
 		a.stopped = s.skyAt(f.From)
+	case rules.DomeFouled:
+		a.stopped = s.skyAt(f.From)
+		a.onWindow = s.rules.Instruments[a.instrument].Measures == rules.Direct
 	case rules.Shadow:
 		if f.TowardsDeg == 0 {
 			a.TowardsDeg = s.azimuthAt(f.From)
