@@ -75,6 +75,15 @@ func (st *Station) canonical() string {
 		c.line("instrument", in.ID, in.Measures.String(), in.Class, in.Primary, in.Shaded)
 		p := &in.Input
 		c.line("input", p.Signal, p.SignalUnit, p.Irradiance, p.Case, p.CaseUnit, p.Dome, p.DomeUnit, p.SignalMin, p.SignalMax)
+		for _, f := range in.ShadeRing {
+			c.line("shade_ring", f)
+		}
+		for _, d := range in.Directional {
+			c.line("directional", d[0], d[1])
+		}
+		if in.FieldOfView != 0 || in.Window != "" {
+			c.line("optics", in.FieldOfView, in.Window)
+		}
 		if in.Offset != ByDefault {
 			c.line("thermal_offset", in.Offset == On)
 		}

@@ -28,6 +28,7 @@ func (r *reader) instrument(v *value, station string, use channelUse) Instrument
 		r.take(use, v.at("input").at(key), station, "instrument "+in.ID+" "+key)
 	}
 	in.Input = r.input(v.at("input"), in.Measures, path)
+	r.optics(v, path, &in)
 	if v.given("thermal_offset") {
 		if in.Offset = Off; v.at("thermal_offset").yes {
 			in.Offset = On

@@ -183,6 +183,11 @@ var instrumentField = field{kind: objectKind, doc: "One instrument, or the place
 		{key: "dome_unit", kind: choiceKind, choices: temperatureUnits, fallback: "degC", doc: "Unit of it."},
 		{key: "range", kind: numbersKind, least: 2, most: 2, low: -1e7, high: 1e7, doc: "Least and largest value the logger can give, in the unit of the signal."},
 	}},
+	{key: "shade_ring", kind: numbersKind, least: 1, most: 12, low: 1, high: 1.5, doc: "Factor that a diffuse under a shade ring is multiplied by: one, or twelve from January on."},
+	{key: "directional", kind: listKind, least: 2, most: 40, doc: "Directional response of a global instrument: [zenith angle in degrees, response over the certificate's], by rising angle.",
+		item: &field{kind: numbersKind, least: 2, most: 2, low: 0, high: 90}},
+	{key: "field_of_view", kind: numberKind, unit: "degrees", low: 0.5, high: 20, doc: "Full opening angle of a pyrheliometer; 5 degrees is usual."},
+	{key: "window", kind: choiceKind, choices: []string{"none", "quartz", "sapphire", "glass"}, doc: "Window of a pyrheliometer."},
 	{key: "thermal_offset", kind: boolKind, doc: "Whether the thermal offset of a global or diffuse instrument is taken out by the net longwave beside it (Dutton et al. 2001), as fitted on the station's own nights. Without it: where a pyrgeometer for lw_down sends its own signal."},
 	{key: "status", kind: objectKind, doc: "The status word of a digital instrument.", fields: []field{
 		{key: "channel", kind: nameKind, required: true, form: channelForm, doc: "Channel of the word, a whole number of at most 32 bits."},

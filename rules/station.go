@@ -91,6 +91,10 @@ type Instrument struct {
 	Input        Input
 	Calibrations []Calibration // sorted by From; no overlap
 	Shaded       bool          // a pyrgeometer kept out of the beam
+	ShadeRing    []float64     // what a diffuse under a ring is multiplied by: one, or twelve from January; empty if there is no ring
+	Directional  [][2]float64  // zenith angle, degrees, and the response to a beam from there over the certificate's; rising; empty if not given
+	FieldOfView  float64       // of a pyrheliometer, full opening angle, degrees; 0 if not stated
+	Window       string        // of a pyrheliometer: "none", "quartz", "sapphire" or "glass"; empty if not stated
 	Offset       Switch        // whether its thermal offset is taken out, after Dutton et al. 2001; see Station.TakesOffset
 	Status       string        // channel of the status word of a digital instrument; empty if there is none
 	StatusBits   []StatusBit   // in the file's order

@@ -47,7 +47,7 @@ type Series struct {
 	Quantity   rules.Quantity
 	Primary    bool      // the one whose values stand in the quantity's columns
 	Secondary  bool      // the one whose values stand in the quantity's columns for a second instrument
-	Measured   []float64 // in the quantity's unit, before any correction
+	Measured   []float64 // in the quantity's unit, before any correction but that of optics the site file states; see AsSent
 	Value      []float64 // after corrections; NaN where absent
 	SD         []float64 // of the samples in the minute
 	Min, Max   []float64
@@ -61,6 +61,8 @@ type Series struct {
 	Notes      []rules.NoteSet                  // what people said of this minute; nil is nothing
 	Outcomes   [rules.TestCount][]rules.Outcome // of the tests that this series has; nil for the others
 
+	Uncorrected []float64 // Measured before the optics were corrected; nil where the site file states none
+
 	offset    []float64 // thermal offset that is taken off, W/m2; nil where none is, NaN where it is not known
 	offsetU95 []float64 // U95 of the value without it
 
@@ -68,6 +70,14 @@ type Series struct {
 	marked       []bool    // the logger sent a mark instead of a value
 	bodyC, domeC []float64 // of a pyrgeometer; nil for others
 	net          []float64 // thermopile signal over sensitivity, W/m2; NaN where the logger converts
+}
+
+// AsSent is the mean of each minute before any correction.
+func (s *Series) AsSent() []float64 {
+	if s.Uncorrected != nil {
+		return s.Uncorrected
+	}
+	return s.Measured
 }
 
 // Primary gives the series whose values stand in the quantity's columns, nil if the station has none.
@@ -130,6 +140,9 @@ func (s *seriesPlan) columns(f *floats) Series {
 	}
 	if s.quantity.Longwave() {
 		out.bodyC, out.domeC, out.net = f.cut(), f.cut(), f.cut()
+	}
+	if s.instrument != nil && len(s.instrument.ShadeRing)+len(s.instrument.Directional) > 0 {
+		out.Uncorrected = f.cut()
 	}
 	for t := range out.Outcomes {
 		if s.tests.Has(rules.Test(t)) {

@@ -42,6 +42,7 @@ func (p *Plan) Prepare(j *Judged, block *minute.Block, from, to int) {
 			p.series[i].convert(&j.Series[i], block, p.nothing, air, from, to)
 		}
 	}
+	p.correctOptics(j, from, to)
 	for i := range p.series {
 		p.singleTests(j, &p.series[i], &j.Series[i], block, from, to)
 	}
@@ -57,6 +58,7 @@ func (p *Plan) singleTests(j *Judged, s *seriesPlan, out *Series, block *minute.
 	p.commonTests(s, out, block, from, to)
 	if out.bodyC != nil {
 		p.bodyTests(j, out, from, to)
+		s.brokenBodies(out, block, &p.Station.Limits, from, to)
 	}
 	p.valueLimits(j, s, out, from, to)
 }
@@ -118,6 +120,20 @@ func (p *Plan) bodyTests(j *Judged, out *Series, from, to int) {
 	for r := from; r < to; r++ {
 		if out.Measured[r] == out.Measured[r] && (limit.BodyTemperature(out.bodyC[r], air[r], l) == rules.Miss ||
 			limit.BodyTemperature(out.domeC[r], air[r], l) == rules.Miss) {
+			out.Passed[r] &^= rules.Signal.Of()
+			out.set(rules.Signal, r, rules.Miss)
+		}
+	}
+}
+
+// brokenBodies names the reason where a flux is not known: the case or dome thermometer sent something that cannot mean a temperature, as an
+// open or shorted one does.
+func (s *seriesPlan) brokenBodies(out *Series, block *minute.Block, l *rules.Limits, from, to int) {
+	broken := func(column int, t []float64, r int) bool {
+		return column >= 0 && block.Columns[column].N[r] > 0 && !(t[r] >= l.BodyMinC && t[r] <= l.BodyMaxC)
+	}
+	for r := from; r < to; r++ {
+		if out.Measured[r] != out.Measured[r] && (broken(s.bodyCol, out.bodyC, r) || broken(s.domeCol, out.domeC, r)) {
 			out.Passed[r] &^= rules.Signal.Of()
 			out.set(rules.Signal, r, rules.Miss)
 		}

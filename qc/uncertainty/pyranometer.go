@@ -3,6 +3,7 @@ package uncertainty
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"fluxwarden/rules"
 )
@@ -24,6 +25,13 @@ const levellingDeg = 0.2
 // half of it stays (own choice).
 const zeroCorrectedShare = 0.5
 
+// directionalCorrectedShare is what is left of the directional response where a table over the zenith angle is taken out: that over the azimuth stays
+// (own choice).
+const directionalCorrectedShare = 0.5
+
+// shadeRingShare is how much of a shade ring's correction is not known: the sky is brighter near the sun, where the ring is (own choice).
+const shadeRingShare = 0.25
+
 // pyranometer adds the components of a thermopile that sees the hemisphere.
 //
 // The directional response of a class is stated for a beam of 1000 W/m2 from any direction, so it grows with the beam and not with its cosine.
@@ -35,10 +43,18 @@ func (b *Budget) pyranometer(in *rules.Instrument, cal *rules.Calibration) {
 	b.calibration(byValue, cal, l.CalibrationPercent)
 	b.share("non-stability since the calibration", byValueYears, l.StabilityPercent, source, " a year")
 	if in.Measures == rules.Global {
-		b.add("directional response, beam", byBeam, l.DirectionalWm2/1000, Rectangular, fmt.Sprintf("%s, %g W/m2 at 1000 of beam", source, l.DirectionalWm2))
+		if len(in.Directional) > 0 {
+			b.add("directional response, beam", byBeam, directionalCorrectedShare*l.DirectionalWm2/1000, Rectangular, fmt.Sprintf("%s, half of %g W/m2 at 1000 of beam: a table over zenith is taken out", source, l.DirectionalWm2))
+		} else {
+			b.add("directional response, beam", byBeam, l.DirectionalWm2/1000, Rectangular, fmt.Sprintf("%s, %g W/m2 at 1000 of beam", source, l.DirectionalWm2))
+		}
 		b.add("levelling", byBeamAslant, levellingDeg*(math.Pi/180), Rectangular, "0.2 degrees by the bubble, common practice")
 	}
 	b.add("directional response, sky", bySky, 2*l.DirectionalWm2/1000, Triangular, source+", the same over an even sky")
+	if n := len(in.ShadeRing); n > 0 {
+		most := slices.Max(in.ShadeRing)
+		b.add("shade-ring correction", byValue, shadeRingShare*(most-1)/most, Rectangular, fmt.Sprintf("a quarter of the correction, factor %g: the sky is not even, own choice", most))
+	}
 	b.share("temperature response", byValue, l.TemperaturePercent, source, "")
 	b.share("non-linearity", byValue, l.LinearityPercent, source, "")
 	b.share("spectral", byValue, l.SpectralPercent, source, "")

@@ -56,7 +56,7 @@ func (t *Table) series(q rules.Quantity, at, n int, s *engine.Series) {
 	if int(q) >= rules.RadiationCount {
 		return
 	}
-	t.round(c+offMeasured, at, s.Measured[:n])
+	t.round(c+offMeasured, at, s.AsSent()[:n])
 	t.round(c+offU95, at, s.U95[:n])
 	t.round(c+offSD, at, s.SD[:n])
 	t.round(c+offMin, at, s.Min[:n])

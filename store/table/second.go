@@ -77,7 +77,7 @@ func (t *Table) secondAndBest(at int, j *engine.Judged) {
 		t.round(c+offValue, at, s.Value[:n])
 		t.verdicts(c+offVerdict, at, s.Verdict[:n])
 		t.reasons(c+offReasons, at, s.Missed[:n], s.Faults[:n], notesOf(s)[:n])
-		t.round(c+offSecondMeasured, at, s.Measured[:n])
+		t.round(c+offSecondMeasured, at, s.AsSent()[:n])
 		t.round(c+offSecondU95, at, s.U95[:n])
 		t.round(c+offSecondSD, at, s.SD[:n])
 	}
