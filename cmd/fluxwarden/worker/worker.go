@@ -56,6 +56,8 @@ type Faulty struct {
 	PositionEarly   bool // a commit carries a position beyond what was taken
 	NoJudgingAgain  bool // late readings are kept but change no minute
 	TrustAnyJournal bool // positions are not held against the stream
+	ForgetOwed      bool // a commit does not say which days are still to be judged once more
+	NotesAhead      bool // a note acts on days yet to come only
 	KeepAfterLost   bool // a partition that was lost is worked on as if nothing had been
 }
 

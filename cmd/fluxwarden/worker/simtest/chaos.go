@@ -13,7 +13,7 @@ func (w *world) chaos() {
 	}
 	i := w.rng.IntN(processes)
 	p := &w.procs[i]
-	switch w.rng.IntN(13) {
+	switch w.rng.IntN(14) {
 	case 0, 1: // kill -9
 		*p = process{}
 		w.counts["kills"]++
@@ -40,6 +40,7 @@ func (w *world) chaos() {
 	case 9: // the broker loses power: what it has not acknowledged is gone, and its numbers are given again
 		w.counts["broker power cuts"]++
 		w.resend(w.journal.powerLoss)
+		w.changes.powerLoss()
 	case 10: // the archive's machine loses power
 		w.counts["archive power cuts"]++
 		w.cutPower()
@@ -47,6 +48,8 @@ func (w *world) chaos() {
 		w.clockSlips()
 	case 12:
 		w.brokerFails()
+	case 13:
+		w.changesFail()
 	}
 }
 

@@ -11,6 +11,7 @@ import (
 	"fluxwarden/ingest/wire"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
 )
 
 // Run simulates a seed and says what is wrong at its end; nil if all is well.
@@ -51,7 +52,11 @@ func (w *world) check() error {
 			return wrong("raw has a value that nobody sent: %v", key)
 		}
 	}
-	return w.compareWithClean(kept)
+	notes, err := w.checkNotes()
+	if err != nil {
+		return err
+	}
+	return w.compareWithClean(kept, notes)
 }
 
 // kept is what raw holds.
@@ -109,14 +114,17 @@ func (w *world) keptValues() (*kept, error) {
 	return k, nil
 }
 
-// compareWithClean gives the very readings that raw holds, in order, to one worker that nothing happens to, and compares
+// compareWithClean gives the very readings that raw holds, in order, and the notes before them to one worker that nothing happens to, and compares
 // what comes of them.
-func (w *world) compareWithClean(k *kept) error {
+func (w *world) compareWithClean(k *kept, notes []rules.Note) error {
 	clean, err := newWorld(0, Options{Days: w.o.Days, Calm: true, Backend: w.o.cleanBackend(), Trap: w.o.Trap})
 	if err != nil {
 		return err
 	}
-	clean.arrivals, clean.now = nil, w.now
+	clean.arrivals, clean.now, clean.notes = nil, w.now, nil
+	for _, n := range notes {
+		clean.changes.append(n)
+	}
 	for _, station := range stationNames {
 		readings := k.readings[station]
 		slices.SortStableFunc(readings, func(a, b minute.Reading) int { return cmp.Compare(a.At, b.At) })

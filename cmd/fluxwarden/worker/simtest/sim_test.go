@@ -47,7 +47,8 @@ func TestSimulation(t *testing.T) {
 	}
 	// An attack that is never felt proves nothing.
 	for _, k := range []string{"deaths in a commit", "kills", "zombies", "failed lost_partition", "broker power cuts", "archive power cuts", "duplicates",
-		"late", "days judged again", "gap reused", "gap recreate", "gap purged", "journals remade", "journals trimmed", "acknowledged tails lost"} {
+		"late", "days judged again", "gap reused", "gap recreate", "gap purged", "journals remade", "journals trimmed", "acknowledged tails lost",
+		"notes given", "notes", "notes: stream remade", "notes: tails lost"} {
 		if total[k] == 0 {
 			t.Errorf("no seed saw any of: %s", k)
 		}
@@ -140,10 +141,16 @@ func TestSimulationCanFail(t *testing.T) {
 		"late readings change no minute":         {NoJudgingAgain: true},
 		"positions are trusted in any journal":   {TrustAnyJournal: true},
 		"a partition that was lost is worked on": {KeepAfterLost: true},
+		"what is owed is forgotten at a stop":    {ForgetOwed: true},
+		"a note acts on days to come only":       {NotesAhead: true},
 	} {
 		t.Run(name, func(t *testing.T) {
 			for seed := uint64(1); seed <= 60; seed++ {
-				if _, err := runOne(seed, Options{Days: simulatedDays, Backend: memoryBackend, Faulty: faulty}); err != nil {
+				o := Options{Days: simulatedDays, Backend: memoryBackend, Faulty: faulty}
+				if faulty.ForgetOwed {
+					o.Days = 5 // a note must be about several days for some to be owed still
+				}
+				if _, err := runOne(seed, o); err != nil {
 					t.Logf("caught by seed %d: %v", seed, err)
 					return
 				}

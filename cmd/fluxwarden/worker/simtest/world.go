@@ -11,6 +11,7 @@ import (
 	"fluxwarden/cmd/fluxwarden/worker"
 	"fluxwarden/ingest/wire"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
 )
 
 // Options of a run.
@@ -52,6 +53,11 @@ type world struct {
 	lost     map[int]bool // lost by the journal before the archive had them
 	purged   int
 	counts   map[string]int
+
+	changes    *changeFeed
+	notes      []plannedNote // not yet given
+	ackedNotes map[string]rules.Note
+	lostNotes  map[string]bool // lost by the stream, perhaps before the archive had them
 }
 
 // A process is one life of a worker after another.
@@ -71,6 +77,9 @@ func newWorld(seed uint64, o Options) (*world, error) {
 	w.journal = &journal{w: w, created: w.stamp()}
 	w.arrivals = planArrivals(w.rng, o.Days)
 	w.all = slices.Clone(w.arrivals)
+	w.changes = &changeFeed{w: w, created: w.stamp()}
+	w.ackedNotes, w.lostNotes = map[string]rules.Note{}, map[string]bool{}
+	w.notes = planNotes(w.rng, o.Days)
 	for _, p := range partitions {
 		w.owner[p] = w.rng.IntN(processes)
 	}
@@ -91,6 +100,7 @@ func (w *world) run() {
 	for len(w.arrivals) > 0 {
 		w.step()
 		w.gate()
+		w.say()
 		if !w.o.Calm {
 			w.chaos()
 		}
@@ -103,6 +113,10 @@ func (w *world) run() {
 
 // step lets some time pass: little while something is on its way, much while nothing is.
 func (w *world) step() {
+	if len(w.notes) > 0 && w.notes[0].at.Sub(w.now) <= 4*time.Minute {
+		w.now = w.now.Add(time.Duration(3+w.rng.IntN(60)) * time.Second)
+		return
+	}
 	if gap := w.arrivals[0].at.Sub(w.now); gap > 4*time.Minute {
 		w.now = w.now.Add(min(gap, time.Minute+time.Duration(w.rng.Int64N(int64(12*time.Hour)))))
 		return
@@ -205,7 +219,7 @@ func (w *world) cutPower() {
 
 func (w *world) start(i int) {
 	p := &w.procs[i]
-	p.w = worker.New(worker.Config{Journal: w.journal, Lease: lease{w, i}, Archive: w.backend.open(func() bool { return w.dies(i) }), Rules: w.rules,
+	p.w = worker.New(worker.Config{Journal: w.journal, Lease: lease{w, i}, Changes: w.changes, Archive: w.backend.open(func() bool { return w.dies(i) }), Rules: w.rules,
 		Findings: silent{w}, Aside: silent{w}, Meter: meter{w}, Clock: w, Log: w.o.Log, Program: "simulation", CommitEvery: 40 * time.Minute, CommitRows: 250, Faulty: w.o.Faulty, Trap: w.o.Trap})
 }
 
@@ -235,6 +249,11 @@ func (w *world) dies(i int) bool {
 // finish ends all trouble, gives everything to one process and lets time go on until the last day is sealed.
 func (w *world) finish() {
 	w.sync()
+	for len(w.notes) > 0 {
+		w.changes.append(w.notes[0].note)
+		w.notes = w.notes[1:]
+	}
+	w.changes.sync()
 	for i := range w.procs {
 		w.procs[i] = process{}
 	}
