@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"io/fs"
+	"strings"
 	"time"
 
 	"fluxwarden/store/vfs"
@@ -27,6 +28,9 @@ func (a *Archive) Schedule() ([]RulesFrom, error) {
 	if err != nil {
 		return nil, err
 	}
+	if err := a.checkSchedule(text); err != nil {
+		return nil, err
+	}
 	var list []RulesFrom
 	if err := json.Unmarshal(text, &list); err != nil {
 		return nil, fmt.Errorf("%s: %w; move it away to let the site file hold for all days", scheduleName, err)
@@ -42,6 +46,32 @@ func (a *Archive) Schedule() ([]RulesFrom, error) {
 	return list, nil
 }
 
+// checkSchedule holds the schedule against the sums beside it: of the one there is, or of the next one where the program died between the
+// two. One written before there were sums is taken as it is.
+func (a *Archive) checkSchedule(text []byte) error {
+	sums, err := vfs.ReadFileBytes(a.fs, a.path(scheduleName+".sha256"))
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil
+	}
+	if err != nil {
+		return err
+	}
+	if !strings.Contains(string(sums), sumLine(scheduleName, text)) {
+		return fmt.Errorf("%s: its sha256 is not the one beside it: it was changed by something else than a daemon; restore it, or move both away to let the site file hold for all days",
+			scheduleName)
+	}
+	return nil
+}
+
+// sumBefore is the sum of the schedule that is about to be replaced.
+func sumBefore(a *Archive) string {
+	text, err := vfs.ReadFileBytes(a.fs, a.path(scheduleName))
+	if err != nil {
+		return ""
+	}
+	return sumLine(scheduleName, text)
+}
+
 // KeepSchedule replaces the schedule.
 func (a *Archive) KeepSchedule(list []RulesFrom) error {
 	if a.lock == nil {
@@ -51,7 +81,11 @@ func (a *Archive) KeepSchedule(list []RulesFrom) error {
 	if err != nil {
 		return err
 	}
-	return a.writeAtomic(scheduleName, append(text, '\n'))
+	text = append(text, '\n')
+	if err := a.writeAtomic(scheduleName+".sha256", []byte(sumLine(scheduleName, text)+sumBefore(a))); err != nil {
+		return err
+	}
+	return a.writeAtomic(scheduleName, text)
 }
 
 // verifySchedule looks whether the schedule can be read and its rule sets are kept.

@@ -99,7 +99,7 @@ func (v *verification) run() {
 var (
 	manifestName = regexp.MustCompile(`^manifest/\d\d\.json$`)
 	recordName   = regexp.MustCompile(`^commit/\d\d/\d{12}\.json$`)
-	rulesName    = regexp.MustCompile(`^rules/[^/]+\.yaml(\.sha256)?$`)
+	rulesName    = regexp.MustCompile(`^rules/([^/]+\.yaml(\.sha256)?|schedule\.json\.sha256)$`)
 	leftoverName = regexp.MustCompile(`^(manifest|rules)/[^/]+\.tmp$|^archive\.json\.tmp$`) // of a write that was cut short; the next replaces it
 	hashedName   = regexp.MustCompile(`_e\d+_c\d+_([0-9a-f]{12})\.(parquet|jsonl)$`)
 )

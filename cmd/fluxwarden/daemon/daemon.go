@@ -60,17 +60,18 @@ type Daemon struct {
 	server   *http.Server
 	address  string
 
-	connected atomic.Bool
-	diskLow   atomic.Bool
-	diskFloor atomic.Int64
-	noClock   atomic.Bool
-	working   atomic.Bool
-	caughtUp  atomic.Bool
-	progress  atomic.Int64 // of the worker, wall time in ns
-	cancel    context.CancelFunc
-	done      sync.WaitGroup
-	stopOnce  sync.Once
-	stopErr   error
+	connected  atomic.Bool
+	diskLow    atomic.Bool
+	overBudget atomic.Bool
+	diskFloor  atomic.Int64
+	noClock    atomic.Bool
+	working    atomic.Bool
+	caughtUp   atomic.Bool
+	progress   atomic.Int64 // of the worker, wall time in ns
+	cancel     context.CancelFunc
+	done       sync.WaitGroup
+	stopOnce   sync.Once
+	stopErr    error
 }
 
 // An Unusable is an error of the kind that no restart mends: something in settings or surroundings must be changed first.
@@ -101,6 +102,10 @@ func Start(ctx context.Context, c Config) (*Daemon, error) {
 	run, cancel := context.WithCancel(context.WithoutCancel(ctx))
 	d.cancel = cancel
 	openConsole := func(context.Context) error { d.openConsole(run); return nil }
+	if err := d.checkBudget(); err != nil {
+		cancel()
+		return nil, err
+	}
 	for _, step := range []func(context.Context) error{d.openArchive, d.openNotifier, openConsole, d.openPages, d.openAccess, d.openBroker, d.openWays} {
 		if err := step(ctx); err != nil {
 			_ = d.Stop()
@@ -108,6 +113,7 @@ func Start(ctx context.Context, c Config) (*Daemon, error) {
 		}
 	}
 	d.done.Go(func() { d.watchDisk(run) })
+	d.done.Go(func() { d.watchArchive(run) })
 	d.done.Go(func() { d.watchAccess(run) })
 	if d.embedded != nil { // nothing can keep it waiting: what is wrong is said at once
 		if err := d.bringUp(run); err != nil {
@@ -146,7 +152,7 @@ func (d *Daemon) openArchive(context.Context) error {
 	}
 	d.archive = a
 	today := minute.Stamp(d.config.Clock.Now().UnixMicro()).Day()
-	d.rules, err = openRuleBook(vfs.OS{}, dir, storeKeeper{a.Read}, d.config.Site, d.config.SiteText, today)
+	d.rules, err = openRuleBook(dir, storeKeeper{a.Read}, d.config.Site, d.config.SiteText, today)
 	if err != nil {
 		return err
 	}
@@ -285,7 +291,7 @@ func (d *Daemon) bringUp(ctx context.Context) error {
 		return err
 	}
 	known := d.known()
-	g, err := gate.New(d.broker, gate.Settings{Known: known, Now: d.config.Clock.Now, DiskLow: d.diskLow.Load, NoClock: d.noClock.Load, Meter: d.metrics.Gate(), Log: d.log})
+	g, err := gate.New(d.broker, gate.Settings{Known: known, Now: d.config.Clock.Now, DiskLow: func() bool { return d.diskLow.Load() || d.overBudget.Load() }, NoClock: d.noClock.Load, Meter: d.metrics.Gate(), Log: d.log})
 	if err != nil {
 		return err
 	}
@@ -297,7 +303,7 @@ func (d *Daemon) bringUp(ctx context.Context) error {
 		Journal: &journal{b: d.broker, onFull: d.metrics.Journal, hold: d.holdForHub()}, Lease: d.lease(ctx), Changes: &changes{b: d.broker}, Archive: d.archive, Rules: d.rules,
 		Findings: findings{d.broker, d.config.Clock.Now}, Aside: aside{d.broker, d.config.Clock.Now}, Live: d.hub, Meter: d.metrics.Worker(),
 		Clock: d.config.Clock, Log: d.log, Program: d.config.Program, Grace: time.Duration(d.config.Settings.Grace),
-		CommitEvery: time.Duration(d.config.Settings.CommitEvery)})
+		CommitEvery: time.Duration(d.config.Settings.CommitEvery), KeepRaw: time.Duration(d.config.Settings.KeepRaw)})
 	d.working.Store(true)
 	d.done.Go(func() { d.work(ctx, w) })
 	d.follow(d.rules.newest())
@@ -348,6 +354,8 @@ func (d *Daemon) NotReady() string {
 		return "the clock is not set: it stands before 2020"
 	case d.diskLow.Load():
 		return "the disk is nearly full"
+	case d.overBudget.Load():
+		return "the disk budget is used up"
 	case time.Since(time.Unix(0, d.progress.Load())) > stuckAfter:
 		return "the worker is stuck"
 	case !d.caughtUp.Load():

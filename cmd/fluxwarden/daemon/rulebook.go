@@ -1,11 +1,7 @@
 package daemon
 
 import (
-	"bytes"
-	"encoding/json"
-	"errors"
 	"fmt"
-	"io/fs"
 	"path"
 	"slices"
 	"sync"
@@ -16,15 +12,11 @@ import (
 	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
 	"fluxwarden/store"
-	"fluxwarden/store/vfs"
 )
 
 // A ruleBook says which rule set holds on which UTC day. It is kept in the archive beside the rule sets, so that a day that is judged again
 // after a change, or after a start with another site file, is judged by the rules of that day.
 type ruleBook struct {
-	fs  vfs.FS
-	dir string // of the archive
-
 	mu      sync.RWMutex
 	entries []ruleEntry // by day; the first holds for all days before it too
 }
@@ -35,15 +27,11 @@ type ruleEntry struct {
 	plans map[string]*engine.Plan
 }
 
-// A ruleLine is an entry as it is kept.
-type ruleLine struct {
-	From   string `json:"from"` // UTC day
-	Digest string `json:"digest"`
-}
-
 // keeper is what the rule book needs of the archive.
 type keeper interface {
 	KeepRules(digest string, text []byte) error
+	Schedule() ([]store.RulesFrom, error)
+	KeepSchedule(list []store.RulesFrom) error
 	Rules(digest string) ([]byte, error)
 }
 
@@ -61,16 +49,16 @@ func newEntry(from int64, site *rules.Site) (ruleEntry, error) {
 
 // openRuleBook reads what is kept and lets the site file hold: from the beginning in a new archive, and from the next UTC day where another
 // rule set was in force.
-func openRuleBook(f vfs.FS, dir string, a keeper, site *rules.Site, text []byte, today int64) (*ruleBook, error) {
-	b := &ruleBook{fs: f, dir: dir}
-	lines, err := b.read()
+func openRuleBook(dir string, a keeper, site *rules.Site, text []byte, today int64) (*ruleBook, error) {
+	b := &ruleBook{}
+	lines, err := a.Schedule()
 	if err != nil {
 		return nil, err
 	}
 	for _, l := range lines {
 		from, err := time.Parse(time.DateOnly, l.From)
 		if err != nil {
-			return nil, fmt.Errorf("archive %s: rules/%s: day %q: not a date", dir, scheduleName, l.From)
+			return nil, fmt.Errorf("archive %s: rules: day %q: not a date", dir, l.From)
 		}
 		text, err := a.Rules(l.Digest)
 		if err != nil {
@@ -116,60 +104,20 @@ func (b *ruleBook) add(a keeper, site *rules.Site, text []byte, today int64) err
 		entries = entries[:len(entries)-1]
 	}
 	entries = append(entries, e)
-	if err := b.write(entries); err != nil {
+	if err := keepSchedule(a, entries); err != nil {
 		return fmt.Errorf("rule set is not noted: %w", err)
 	}
 	b.entries = entries
 	return nil
 }
 
-const scheduleName = "schedule.json"
-
-func (b *ruleBook) read() ([]ruleLine, error) {
-	name := path.Join(b.dir, "rules", scheduleName)
-	text, err := vfs.ReadFileBytes(b.fs, name)
-	if errors.Is(err, fs.ErrNotExist) {
-		return nil, nil
-	}
-	if err != nil {
-		return nil, err
-	}
-	var lines []ruleLine
-	if err := json.NewDecoder(bytes.NewReader(text)).Decode(&lines); err != nil {
-		return nil, fmt.Errorf("%s: %w; move it away to let the site file hold for all days", name, err)
-	}
-	return lines, nil
-}
-
-// write replaces the schedule whole, durably.
-func (b *ruleBook) write(entries []ruleEntry) error {
-	var lines []ruleLine
+// keepSchedule replaces the schedule whole, durably.
+func keepSchedule(a keeper, entries []ruleEntry) error {
+	var lines []store.RulesFrom
 	for _, e := range entries {
-		lines = append(lines, ruleLine{time.Unix(e.from*86400, 0).UTC().Format(time.DateOnly), e.site.Digest})
+		lines = append(lines, store.RulesFrom{From: time.Unix(e.from*86400, 0).UTC().Format(time.DateOnly), Digest: e.site.Digest})
 	}
-	text, err := json.MarshalIndent(lines, "", " ")
-	if err != nil {
-		return err
-	}
-	name := path.Join(b.dir, "rules", scheduleName)
-	f, err := b.fs.Create(name + ".tmp")
-	if err != nil {
-		return err
-	}
-	_, err = f.Write(append(text, '\n'))
-	if err == nil {
-		err = f.Sync()
-	}
-	if e := f.Close(); err == nil {
-		err = e
-	}
-	if err == nil {
-		err = b.fs.Rename(name+".tmp", name)
-	}
-	if err != nil {
-		return err
-	}
-	return b.fs.SyncDir(path.Dir(name))
+	return a.KeepSchedule(lines)
 }
 
 // PlanFor implements worker.Rules.
@@ -216,4 +164,13 @@ func (k storeKeeper) KeepRules(digest string, text []byte) error {
 func (k storeKeeper) Rules(digest string) (text []byte, err error) {
 	err = k.read(func(a *store.Archive) error { text, err = a.Rules(digest); return err })
 	return text, err
+}
+
+func (k storeKeeper) Schedule() (list []store.RulesFrom, err error) {
+	err = k.read(func(a *store.Archive) error { list, err = a.Schedule(); return err })
+	return list, err
+}
+
+func (k storeKeeper) KeepSchedule(list []store.RulesFrom) error {
+	return k.read(func(a *store.Archive) error { return a.KeepSchedule(list) })
 }

@@ -19,19 +19,26 @@ import (
 
 // Settings are what the daemon itself needs; nothing of them can change a row. In a file, sizes and durations carry a unit.
 type Settings struct {
-	Archive     string          `yaml:"archive"`      // directory of the archive
-	Listen      string          `yaml:"listen"`       // address of console and metrics; "none" for none
-	Grace       Duration        `yaml:"grace"`        // how long a minute waits for its readings
-	CommitEvery Duration        `yaml:"commit_every"` // how often what was judged is written
-	DiskFloor   Size            `yaml:"disk_floor"`   // with less free than this, no reading is taken
-	Broker      BrokerSettings  `yaml:"broker"`
-	Access      AccessSettings  `yaml:"access"`
-	TLS         TLSSettings     `yaml:"tls"`
-	Ways        WaySettings     `yaml:"ways"`
-	Notify      NotifySettings  `yaml:"notify"`
-	Console     ConsoleSettings `yaml:"console"`
-	Edge        EdgeSettings    `yaml:"edge"`
-	Hub         HubSettings     `yaml:"hub"`
+	Archive     string   `yaml:"archive"`      // directory of the archive
+	Listen      string   `yaml:"listen"`       // address of console and metrics; "none" for none
+	Grace       Duration `yaml:"grace"`        // how long a minute waits for its readings
+	CommitEvery Duration `yaml:"commit_every"` // how often what was judged is written
+	DiskFloor   Size     `yaml:"disk_floor"`   // with less free than this, no reading is taken
+	// DiskBudget is what journal, archive and the floor as a reserve may take together; 0 is the whole disk. Above it no reading is taken. Nothing
+	// is deleted to make room.
+	DiskBudget Size `yaml:"disk_budget"`
+	// KeepRaw is for how long readings as received are kept; 0s is for ever. Days whose readings are gone cannot be judged again.
+	KeepRaw Duration `yaml:"keep_raw"`
+	// KeepSuperseded is how much the replaced revisions may take before the earliest are deleted; 0B is any amount.
+	KeepSuperseded Size            `yaml:"keep_superseded"`
+	Broker         BrokerSettings  `yaml:"broker"`
+	Access         AccessSettings  `yaml:"access"`
+	TLS            TLSSettings     `yaml:"tls"`
+	Ways           WaySettings     `yaml:"ways"`
+	Notify         NotifySettings  `yaml:"notify"`
+	Console        ConsoleSettings `yaml:"console"`
+	Edge           EdgeSettings    `yaml:"edge"`
+	Hub            HubSettings     `yaml:"hub"`
 }
 
 // BrokerSettings say which broker is used. With a URL it is an external one; without, it runs in this process.
@@ -109,6 +116,10 @@ func (s *Settings) Check() error {
 		return fmt.Errorf("settings: grace: %v: give more than 0s and at most 1h", time.Duration(s.Grace))
 	case time.Duration(s.CommitEvery) < time.Second || time.Duration(s.CommitEvery) > 24*time.Hour:
 		return fmt.Errorf("settings: commit_every: %v: give 1s to 24h", time.Duration(s.CommitEvery))
+	case s.KeepRaw != 0 && time.Duration(s.KeepRaw) < worker.KeepRawLeast:
+		return fmt.Errorf("settings: keep_raw: %v: give 0s for ever, or at least %v: a late reading or a note is judged with the month before it", time.Duration(s.KeepRaw), worker.KeepRawLeast)
+	case s.DiskBudget < 0 || s.KeepSuperseded < 0 || s.DiskFloor < 0:
+		return errors.New("settings: disk_budget, keep_superseded, disk_floor: give a size, or 0B")
 	case s.Broker.URL == "" && s.Broker.Store == "":
 		return errors.New("settings: broker: give the url of a broker, or a store directory for the embedded one")
 	case s.Broker.Journal < 1<<20:

@@ -50,6 +50,7 @@ type Metrics struct {
 	notified, notifyFailed, notifyGivenUp          *prometheus.CounterVec
 	notifyWaiting                                  prometheus.Gauge
 	notes                                          prometheus.Counter
+	archiveSize                                    *prometheus.GaugeVec
 	owedDays                                       prometheus.Gauge
 }
 
@@ -133,6 +134,7 @@ func (m *Metrics) archive() {
 	m.commitSeconds = m.histogram("commit", "duration_seconds", "Time that a partition's commit took.", prometheus.ExponentialBuckets(0.004, 2, 14))
 	m.commitRows = m.counter("commit", "readings_total", "Readings committed to the archive.")
 	m.commitFailures = m.counter("commit", "failures_total", "Commits that did not come off; they are tried again.")
+	m.archiveSize = m.gaugeVec("archive", "size_bytes", "Bytes that the archive takes, by folder; superseded holds the replaced revisions.", "folder")
 	m.diskFree = m.gaugeVec("disk", "free_bytes", "Bytes free where the directory lies.", "directory")
 	m.diskFloor = m.gaugeVec("disk", "floor_bytes", "Bytes that must stay free: below it no reading is taken.", "directory")
 	m.reloadGood = m.gauge("rules", "last_reload_successful", "1 if the last site file that was read is in force or will be from the next UTC day; 0 if it was refused.")

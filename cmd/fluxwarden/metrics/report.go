@@ -132,6 +132,11 @@ func (m *Metrics) Disk(directory string, free, floor uint64) {
 	m.diskFloor.WithLabelValues(directory).Set(float64(floor))
 }
 
+// ArchiveSize notes how much a folder of the archive takes.
+func (m *Metrics) ArchiveSize(part string, bytes int64) {
+	m.archiveSize.WithLabelValues(part).Set(float64(bytes))
+}
+
 // Reloaded notes whether a site file was taken.
 func (m *Metrics) Reloaded(ok bool, at time.Time) {
 	if !ok {

@@ -224,10 +224,37 @@ func (w *Worker) commit(ctx context.Context, p *partition, now time.Time) {
 	for i, id := range ids {
 		p.stations[id].settled(ctx, prepared[i])
 	}
-	w.compact(p, ids, now)
+	w.dropRaw(p, ids, now)
+	if w.partitions[p.number] == p {
+		w.compact(p, ids, now)
+	}
 	if passed(w.purged, now, purgeEvery) {
 		w.purged = now
 		w.purge(ctx, now)
+	}
+}
+
+// dropRaw takes readings older than the limit out of the archive, a station's at most once a day.
+func (w *Worker) dropRaw(p *partition, ids []string, now time.Time) {
+	if w.cfg.KeepRaw <= 0 {
+		return
+	}
+	before := minute.Stamp(now.Add(-max(w.cfg.KeepRaw, KeepRawLeast)).UnixMicro()).Day()
+	for _, id := range ids {
+		s := p.stations[id]
+		if s.rawCut >= before {
+			continue
+		}
+		base, err := w.cfg.Archive.DropRaw(p.number, p.base, id, before)
+		switch {
+		case errors.Is(err, ErrLost):
+			w.drop(p.number, "commit", err)
+			return
+		case err != nil:
+			w.fail("commit", "readings that are too old are not dropped; it is tried again", err, "station", id)
+			return
+		}
+		p.base, s.rawCut = base, before
 	}
 }
 
@@ -256,18 +283,24 @@ func (w *Worker) compact(p *partition, ids []string, now time.Time) {
 // purgeEvery is how often the journal is cut.
 const purgeEvery = time.Hour
 
-// purge forgets what the journal holds behind the oldest committed position, less a day. The archive knows the positions of
+// purge forgets what the journal holds behind the oldest committed position, less a day, where every position still holds in the stream. The archive knows the positions of
 // partitions that others own.
 func (w *Worker) purge(ctx context.Context, now time.Time) {
+	st, err := w.cfg.Journal.State(ctx)
+	if err != nil {
+		w.fail("purge_journal", "the journal cannot be cut behind what is committed", err)
+		return
+	}
 	oldest := ^uint64(0)
+	held := map[Position]bool{}
 	for n := range partitionCount {
-		seq, stream := uint64(0), w.stream.Created
+		var at Position
 		p := w.partitions[n]
 		switch {
 		case p != nil && p.base > 0:
-			seq, stream = p.position.Seq, p.position.Created
+			at = p.position
 		case p != nil && p.rows == 0:
-			seq = p.taken.Seq
+			at = p.taken
 		case p != nil:
 			return
 		default:
@@ -279,16 +312,16 @@ func (w *Worker) purge(ctx context.Context, now time.Time) {
 			if base == 0 && len(w.cfg.Rules.Stations(n)) == 0 {
 				continue
 			}
-			at, _ := journalAndChanges(positions)
-			if at.Created == 0 {
+			at, _ = journalAndChanges(positions)
+		}
+		// A position whose number has been given to another message since says nothing of what is committed.
+		if !held[at] {
+			if reason, err := w.mismatch(ctx, at, st); at.Created == 0 || reason != "" || err != nil {
 				return
 			}
-			seq, stream = at.Seq, at.Created
+			held[at] = true
 		}
-		if stream != w.stream.Created {
-			return
-		}
-		oldest = min(oldest, seq)
+		oldest = min(oldest, at.Seq)
 	}
 	if oldest == 0 || oldest == ^uint64(0) {
 		return

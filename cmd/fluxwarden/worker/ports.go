@@ -112,6 +112,9 @@ type Archive interface {
 	// Compact makes one file of a station's month, YYYY-MM, after the record base, and gives the record it made; base where there was
 	// nothing to do.
 	Compact(partition int, base uint64, station, month string) (uint64, error)
+	// DropRaw takes the files of readings that lie wholly before the day out of the archive for good, after the record base, and gives the
+	// record it made; base where there was nothing to do.
+	DropRaw(partition int, base uint64, station string, before int64) (uint64, error)
 }
 
 // A Commit is what is written together.

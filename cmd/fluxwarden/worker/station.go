@@ -44,6 +44,7 @@ type station struct {
 	months     map[string]bool               // not yet compacted, YYYY-MM
 	committed  []fault.Episode               // as the archive has them
 	published  map[string]fault.Episode      // as FINDINGS has them
+	rawCut     int64                         // readings before this day were looked for, to be dropped
 	told       bool                          // episodes have changed since the last commit
 	aside      map[int64]bool                // minutes whose readings have been set aside
 }

@@ -216,6 +216,19 @@ func (s *Store) Owed(partition int) (list []store.Owed, err error) {
 
 // Compact implements Archive.
 func (s *Store) Compact(partition int, base uint64, station, month string) (number uint64, err error) {
+	return s.after(partition, base, func(a *store.Archive) error { return a.Compact(partition, station, month) })
+}
+
+// DropRaw implements Archive.
+func (s *Store) DropRaw(partition int, base uint64, station string, before int64) (number uint64, err error) {
+	return s.after(partition, base, func(a *store.Archive) error {
+		_, _, err := a.DropRaw(partition, station, before)
+		return err
+	})
+}
+
+// after does something that makes a record of its own, if the record base is the last one, and gives the last one then.
+func (s *Store) after(partition int, base uint64, do func(a *store.Archive) error) (number uint64, err error) {
 	lost := false
 	err = s.use(func(a *store.Archive) error {
 		r, _, err := a.Last(partition)
@@ -225,7 +238,7 @@ func (s *Store) Compact(partition int, base uint64, station, month string) (numb
 		if lost = r.Number != base; lost {
 			return ErrLost
 		}
-		if err := a.Compact(partition, station, month); err != nil {
+		if err := do(a); err != nil {
 			return err
 		}
 		r, _, err = a.Last(partition)

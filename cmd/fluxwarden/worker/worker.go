@@ -43,7 +43,9 @@ type Config struct {
 	Program     string        // name and version, for the archive's books
 	Grace       time.Duration // how long a minute waits for its readings after its end
 	CommitEvery time.Duration // by the clock, per partition
-	CommitRows  int           // a partition that has so many readings waiting commits at once
+	// KeepRaw is for how long readings are kept, at least KeepRawLeast; 0 is for ever.
+	KeepRaw    time.Duration
+	CommitRows int // a partition that has so many readings waiting commits at once
 	// Trap is called before the core judges a block's rows from the given one on; a test may panic in it as the core might.
 	Trap func(block *minute.Block, from int)
 	// Faulty plants a bug: a test shows by it that the simulation can fail.
@@ -60,6 +62,9 @@ type Faulty struct {
 	NotesAhead      bool // a note acts on days yet to come only
 	KeepAfterLost   bool // a partition that was lost is worked on as if nothing had been
 }
+
+// KeepRawLeast is for how long readings must be kept so that late data and notes of the last month can be judged with what they look back on.
+const KeepRawLeast = 92 * 24 * time.Hour
 
 // A Worker works on the partitions that it holds a lease for. It is to be used by one goroutine.
 type Worker struct {

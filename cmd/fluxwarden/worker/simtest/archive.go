@@ -152,6 +152,10 @@ func (s *memorySession) Owed(partition int) ([]store.Owed, error) {
 	return slices.Clone(s.m.owed[partition]), nil
 }
 
+func (s *memorySession) DropRaw(_ int, base uint64, _ string, _ int64) (uint64, error) {
+	return base, nil
+}
+
 func (s *memorySession) Compact(_ int, base uint64, _, _ string) (uint64, error) { return base, nil }
 
 // An archive is what a worker stands on, for one life of it.
