@@ -3,6 +3,7 @@ package console
 import (
 	"context"
 	"encoding/json"
+	"errors"
 	"flag"
 	"net/http/httptest"
 	"os"
@@ -214,25 +215,40 @@ func TestBrowserAccessibility(t *testing.T) {
 		t.Fatal(err)
 	}
 	ctx := browser(t, 1200, 900)
+	run(t, ctx, "start", chromedp.Navigate("about:blank"))
 	for _, scheme := range []string{"light", "dark"} {
-		run(t, ctx, scheme, emulation.SetEmulatedMedia().WithFeatures([]*emulation.MediaFeature{{Name: "prefers-color-scheme", Value: scheme}}))
 		paths := []string{"/", "/station/northmoor/day/2026-06-30", faultLink(&episodes[0]), "/station/northmoor/year/2026", "/station/northmoor/residual?from=2026-06-29&to=2026-07-02",
 			"/station/northmoor/report/2026-06", "/sign-in", "/nowhere"}
 		if scheme == "dark" { // colours are all that is different
 			paths = paths[:3]
 		}
 		for _, path := range paths {
-			var found string
-			run(t, ctx, path, chromedp.Navigate(url+path), chromedp.WaitVisible("main"), chromedp.Evaluate(string(script)+";0", nil),
-				chromedp.Evaluate(`axe.run(document, {runOnly: ["wcag2a", "wcag2aa"]}).then(r => JSON.stringify(r.violations.map(v => v.id + ": " + v.nodes[0].html.slice(0, 150) + " " + (v.nodes[0].failureSummary || ""))))`, &found,
-					awaited))
-			var list []string
-			if err := json.Unmarshal([]byte(found), &list); err != nil {
-				t.Fatalf("%s: %q: %v", path, found, err)
+			found, err := violations(ctx, url+path, scheme, string(script))
+			if errors.Is(err, context.DeadlineExceeded) { // a tab that hangs is the browser's; the page is looked at again in another
+				found, err = violations(ctx, url+path, scheme, string(script))
 			}
-			for _, v := range list {
+			if err != nil {
+				t.Errorf("%s, %s: %v", scheme, path, err)
+			}
+			for _, v := range found {
 				t.Errorf("%s, %s: %s", scheme, path, v)
 			}
 		}
 	}
+}
+
+// violations opens a page in a tab of its own and asks the checker.
+func violations(ctx context.Context, url, scheme, script string) (list []string, err error) {
+	tab, cancel := chromedp.NewContext(ctx)
+	defer cancel()
+	tab, cancel = context.WithTimeout(tab, 90*time.Second)
+	defer cancel()
+	var found string
+	err = chromedp.Run(tab, emulation.SetEmulatedMedia().WithFeatures([]*emulation.MediaFeature{{Name: "prefers-color-scheme", Value: scheme}}), chromedp.Navigate(url), chromedp.WaitReady("main"),
+		chromedp.Evaluate(script+";0", nil),
+		chromedp.Evaluate(`axe.run(document, {runOnly: ["wcag2a", "wcag2aa"], preload: false}).then(r => JSON.stringify(r.violations.map(v => v.id + ": " + v.nodes[0].html.slice(0, 150) + " " + (v.nodes[0].failureSummary || ""))))`, &found, awaited))
+	if err != nil {
+		return nil, err
+	}
+	return list, json.Unmarshal([]byte(found), &list)
 }
