@@ -26,6 +26,9 @@ type Limits struct {
 	LWAirDownFactor, LWAirDownAboveWm2                      float64
 	LWAirUpBelowK, LWAirUpAboveK                            float64
 	LWPairBelowWm2, LWPairAboveWm2                          float64
+	RayleighBelowWm2                                        float64
+	ClearDirectFactor, ClearGlobalFactor, ClearAboveWm2     float64
+	ClearLWBelowFactor, ClearLWAboveWm2, ClearGlobalMinutes float64
 	NightZenithDeg, NightZeroExtraWm2                       float64
 	StuckMinutes, StuckNightMinutes                         float64
 	SpikeWm2, SpikeLWWm2                                    float64
@@ -116,6 +119,13 @@ func buildLimitTable() []Limit {
 	one("lw_air.up_above", 25, "K", 0, 100, srcNetwork, func(l *Limits) *float64 { return &l.LWAirUpAboveK })
 	one("lw_pair.below", 300, "W/m2", 0, 600, srcNetwork, func(l *Limits) *float64 { return &l.LWPairBelowWm2 })
 	one("lw_pair.above", 25, "W/m2", 0, 200, srcNetwork, func(l *Limits) *float64 { return &l.LWPairAboveWm2 })
+	one("rayleigh.below", 1, "W/m2", 0, 50, "Long & Shi 2008 (from memory); the class's zero offset is allowed beside it", func(l *Limits) *float64 { return &l.RayleighBelowWm2 })
+	one("clear_sky.direct", 1.05, "1", 1, 2, srcOwn+": of the beam at the least load that the learnt sky's band holds", func(l *Limits) *float64 { return &l.ClearDirectFactor })
+	one("clear_sky.global", 1.3, "1", 1, 3, srcOwn+": cloud edges lift global to 1.2 times and more, but not for long", func(l *Limits) *float64 { return &l.ClearGlobalFactor })
+	one("clear_sky.global_minutes", 20, "min", 1, 240, srcOwn+": for so long on end", func(l *Limits) *float64 { return &l.ClearGlobalMinutes })
+	one("clear_sky.above", 30, "W/m2", 0, 500, srcOwn, func(l *Limits) *float64 { return &l.ClearAboveWm2 })
+	one("clear_sky.lw_below", 0.75, "1", 0, 1, srcOwn+": of the learnt cloudless lw_down; formulas part by 15 % in cold dry air", func(l *Limits) *float64 { return &l.ClearLWBelowFactor })
+	one("clear_sky.lw_above", 30, "W/m2", 0, 200, srcOwn+": above a black body at air temperature, which a low overcast is; inversions lift it", func(l *Limits) *float64 { return &l.ClearLWAboveWm2 })
 	one("night.zenith", 96, "degrees", 91, 120, "own choice: past civil twilight, diffuse is nothing there", func(l *Limits) *float64 { return &l.NightZenithDeg })
 	one("night.extra", 5, "W/m2", 0, 100, srcOwn+": allowed beside the class's zero offset", func(l *Limits) *float64 { return &l.NightZeroExtraWm2 })
 	one("stuck.day", 30, "min", 2, 1440, srcOwn, func(l *Limits) *float64 { return &l.StuckMinutes })

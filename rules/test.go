@@ -22,7 +22,7 @@ const (
 	LWAir                    // longwave against air temperature
 	LWPair                   // longwave down against up
 	Rayleigh                 // diffuse below what a clean sky scatters
-	ClearSky                 // global or direct far above the learnt clear sky
+	ClearSky                 // global or direct far above the learnt clear sky; lw_down outside of what clear and overcast skies give
 	Partner                  // two instruments of one quantity disagree
 	Housekeeping             // fan, supply, tracker or status word out of range
 	Local                    // a test of the site's own, written in CEL

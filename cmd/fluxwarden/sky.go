@@ -24,7 +24,8 @@ const skyRowsMax = 10_000_000
 // cmdSky prints what the judge expects at the instants asked for.
 func cmdSky(args []string) int {
 	fs := flag.NewFlagSet("sky", flag.ContinueOnError)
-	site := fs.String("site", "", "site file")
+	archive := fs.String("archive", "", "folder of an archive: print the learnt sky that its past minutes were judged by")
+	site := fs.String("site", "", "site file; with --archive only if its newest rules are not meant")
 	station := fs.String("station", "", "station; may be left out where the site file has one")
 	from := fs.String("from", "", "first instant: a date or RFC 3339")
 	to := fs.String("to", "", "end, not included")
@@ -33,8 +34,8 @@ func cmdSky(args []string) int {
 	if err := fs.Parse(args); err != nil {
 		return parseCode(err)
 	}
-	if *site == "" || *from == "" || *to == "" || fs.NArg() > 0 || *step <= 0 || *format != "csv" && *format != "table" {
-		return complain(exitUsage, errors.New("sky: want --site FILE [--station S] --from T --to T [--step 1m] [--format csv|table]"))
+	if *site == "" && *archive == "" || *from == "" || *to == "" || fs.NArg() > 0 || *step <= 0 || *format != "csv" && *format != "table" {
+		return complain(exitUsage, errSkyUsage)
 	}
 	begin, err1 := parseInstant(*from)
 	end, err2 := parseInstant(*to)
@@ -43,6 +44,13 @@ func cmdSky(args []string) int {
 	}
 	if !begin.Before(end) || end.Sub(begin) / *step > skyRowsMax {
 		return complain(exitUsage, fmt.Errorf("sky: from %s to %s in steps of %s: want at least one row and at most %d", *from, *to, *step, skyRowsMax))
+	}
+	if *archive != "" {
+		q := &skyQuery{archive: *archive, site: *site, station: *station, begin: begin, end: end, step: *step}
+		if err := printArchiveSky(q, *format); err != nil {
+			return complain(exitProblem, fmt.Errorf("sky: %w", err))
+		}
+		return exitOK
 	}
 	s, err := rules.Load(*site)
 	if err != nil {
@@ -56,17 +64,21 @@ func cmdSky(args []string) int {
 	if err != nil {
 		return complain(exitUsage, fmt.Errorf("sky: %w", err))
 	}
-	out := bufio.NewWriter(os.Stdout)
-	if *format == "csv" {
-		err = printSky(out, plan, st, begin, end, *step, ",")
-	} else {
-		t := tabwriter.NewWriter(out, 0, 4, 2, ' ', tabwriter.AlignRight)
-		err = errors.Join(printSky(t, plan, st, begin, end, *step, "\t"), t.Flush())
-	}
-	if err = errors.Join(err, out.Flush()); err != nil {
+	err = printed(os.Stdout, *format, func(w io.Writer, sep string) error { return printSky(w, plan, st, begin, end, *step, sep) })
+	if err != nil {
 		return complain(exitProblem, fmt.Errorf("sky: %w", err))
 	}
 	return exitOK
+}
+
+// printed writes rows as CSV or as an aligned table.
+func printed(to io.Writer, format string, rows func(w io.Writer, sep string) error) error {
+	out := bufio.NewWriter(to)
+	if format == "csv" {
+		return errors.Join(rows(out, ","), out.Flush())
+	}
+	t := tabwriter.NewWriter(out, 0, 4, 2, ' ', tabwriter.AlignRight)
+	return errors.Join(rows(t, "\t"), t.Flush(), out.Flush())
 }
 
 // limitColumns are the bounds printed, low and high each: of every limit that the sun and the station alone decide.

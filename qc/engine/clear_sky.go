@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"fluxwarden/qc/fault"
+	"fluxwarden/qc/limit"
 	"fluxwarden/qc/minute"
 	"fluxwarden/qc/sky"
 	"fluxwarden/rules"
@@ -76,4 +77,25 @@ func (p *Plan) Cloudless(j *Judged, learnt sky.Learnt) []sky.Irradiance {
 		out[r] = c.At(&m, true)
 	}
 	return out
+}
+
+// clearSky holds global, direct and lw_down against the learnt sky of the minute.
+func (j *Judger) clearSky(r int) {
+	d, l := j.judged, &j.plan.Station.Limits
+	row := &d.sun.rows[r]
+	eclipsed := d.sun.obscured != nil && d.sun.obscured[r] > 0
+	sky, longwave := j.watcher.SkyLearnt()
+	if s := j.plan.primarySeries(d, rules.Global); s != nil {
+		s.set(rules.ClearSky, r, limit.ClearGlobal(s.Measured[r], d.ClearGlobalWm2[r], &j.above, sky, eclipsed, row, l))
+	}
+	if s := j.plan.primarySeries(d, rules.Direct); s != nil {
+		cleanest := d.ClearDirectWm2[r]
+		if s.Measured[r] > cleanest { // seldom enough to ask the model once more
+			cleanest = RoundIrradiance(j.watcher.CleanestDirect(&j.minute))
+		}
+		s.set(rules.ClearSky, r, limit.ClearDirect(s.Measured[r], cleanest, sky, eclipsed, row, l))
+	}
+	if s := j.plan.primarySeries(d, rules.LWDown); s != nil {
+		s.set(rules.ClearSky, r, limit.ClearLongwave(s.Measured[r], d.ClearLWDownWm2[r], j.minute.Value[rules.AirTemperature], longwave, l))
+	}
 }

@@ -25,6 +25,7 @@ type Judger struct {
 	runs    []limit.Run // one a series
 	offsets []offsetState
 	minute  fault.Minute
+	above   int // minutes on end in which global was far above the clear sky, today
 
 	global, direct, diffuse []float64 // measured by the primaries on the day begun; without a value where there is none
 }
@@ -64,6 +65,7 @@ func (j *Judger) BeginWith(judged *Judged) *Judged {
 		}
 	}
 	j.beginOffsets(judged.Day)
+	j.above = 0
 	j.watcher = fault.NewWatcher(j.plan.setup, judged.Day, facts, carry)
 	for i := range j.runs {
 		j.runs[i] = limit.Run{Value: math.NaN()}
@@ -186,6 +188,7 @@ func (j *Judger) watch(r int) {
 	j.watcher.Minute(m)
 	d.ClearGlobalWm2[r], d.ClearDirectWm2[r] = RoundIrradiance(m.Clear[rules.Global]), RoundIrradiance(m.Clear[rules.Direct])
 	d.ClearDiffuseWm2[r], d.ClearLWDownWm2[r] = RoundIrradiance(m.Clear[rules.Diffuse]), RoundIrradiance(m.Clear[rules.LWDown])
+	j.clearSky(r)
 }
 
 // Tick says that nothing more will come before the minute (counted from 1970): gaps are seen by it. It changes no row.

@@ -15,7 +15,9 @@ func testsOf(q rules.Quantity) rules.TestSet {
 	case rules.Global, rules.Direct, rules.Diffuse:
 		all |= rules.Rare.Of() | rules.Stuck.Of() | rules.Spike.Of() | rules.NightZero.Of() | rules.Closure.Of()
 		if q == rules.Diffuse {
-			all |= rules.DiffuseRatio.Of()
+			all |= rules.DiffuseRatio.Of() | rules.Rayleigh.Of()
+		} else {
+			all |= rules.ClearSky.Of()
 		}
 	case rules.Reflected:
 		all |= rules.Rare.Of() | rules.Stuck.Of() | rules.Spike.Of() | rules.NightZero.Of() | rules.Albedo.Of()
@@ -23,6 +25,9 @@ func testsOf(q rules.Quantity) rules.TestSet {
 		all |= rules.Stuck.Of() | rules.NightZero.Of()
 	case rules.LWDown, rules.LWUp:
 		all |= rules.Rare.Of() | rules.Stuck.Of() | rules.Spike.Of() | rules.LWAir.Of() | rules.LWPair.Of()
+		if q == rules.LWDown {
+			all |= rules.ClearSky.Of()
+		}
 	}
 	return all
 }
@@ -207,6 +212,10 @@ func (p *Plan) pairTests(j *Judged, from, to int) {
 			setPair(b, rules.Closure, r, closure)
 			setPair(d, rules.Closure, r, closure)
 			setPair(d, rules.DiffuseRatio, r, limit.DiffuseRatio(gv, dv, sun, l))
+			if d != nil {
+				eclipsed := j.sun.obscured != nil && j.sun.obscured[r] > 0
+				setPair(d, rules.Rayleigh, r, limit.Rayleigh(bv, dv, p.pressureHPa, p.series[p.primary[rules.Diffuse]].zeroAllowance, eclipsed, sun, l))
+			}
 		}
 		if u != nil {
 			setPair(u, rules.Albedo, r, limit.Albedo(partner(u, r), gv, bv, dv, sun, l))

@@ -114,6 +114,23 @@ func (w *Watcher) clearSky(m *Minute) {
 	m.Clear[rules.LWDown] = w.base.kLW * clearLongwave(m.Value[rules.AirTemperature], m.Value[rules.Humidity])
 }
 
+// SkyLearnt says whether the days before have taught of the cloudless sky, of shortwave and of longwave.
+func (w *Watcher) SkyLearnt() (shortwave, longwave bool) { return w.base.skyKnown, w.base.lwKnown }
+
+// cleanestDeviations is how many standard deviations below the expected load the cleanest sky lies.
+const cleanestDeviations = 3
+
+// CleanestDirect is the beam that the least load of the learnt sky's band would leave in a minute that has been watched, W/m2.
+func (w *Watcher) CleanestDirect(m *Minute) float64 {
+	if w.cleanest == nil {
+		w.cleanest = sky.NewTable(w.setup.Sky.Site, w.cloudless.table.State())
+	}
+	st := w.cloudless.table.State()
+	st.Aerosol, _ = w.base.sky.AerosolBand(cleanestDeviations)
+	w.cleanest.Set(st)
+	return w.cleanest.At(m.ZenithDeg, m.Mu, m.SaWm2).DirectWm2
+}
+
 var noClear = func() (c [rules.RadiationCount]float64) {
 	for q := range c {
 		c[q] = math.NaN()

@@ -5,6 +5,7 @@ import (
 	"hash/fnv"
 	"slices"
 
+	"fluxwarden/qc/sky"
 	"fluxwarden/rules"
 )
 
@@ -30,6 +31,7 @@ type Watcher struct {
 	kinds          KindCarry
 	touch          touch
 	cloudless      Cloudless
+	cleanest       *sky.Table // at the least load of the band; nil until it is asked for
 }
 
 const noMinute = int64(-1) << 40
