@@ -3,7 +3,7 @@
 # binary is built twice and must come out the same. Called by "make release".
 set -eu
 cd "$(dirname "$0")/.."
-limit=$((40 * 1024 * 1024))
+limit=44000000
 mkdir -p "$OUT"
 build() { # ARCH FILE; from an empty cache of build results in CACHE
 	GOOS=linux GOARCH="$1" CGO_ENABLED=0 go build -trimpath -buildvcs=false -ldflags "-s -w -buildid= -X main.version=$VERSION" -o "$2" ./cmd/fluxwarden

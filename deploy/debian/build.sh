@@ -25,4 +25,4 @@ for script in postinst prerm postrm; do install -m 0755 "debian/$script" "$root/
 (cd "$root" && find usr lib etc -type f ! -path etc/fluxwarden/settings.yaml -print0 | sort -z | xargs -0 md5sum) >"$root/DEBIAN/md5sums"
 find "$root" -newermt "@$SOURCE_DATE_EPOCH" -exec touch -h -d "@$SOURCE_DATE_EPOCH" {} +
 mkdir -p "$OUT"
-dpkg-deb --root-owner-group -Zxz --build "$root" "$OUT/fluxwarden_${VERSION}_$ARCH.deb"
+dpkg-deb --root-owner-group -Zxz -z1 --build "$root" "$OUT/fluxwarden_${VERSION}_$ARCH.deb"
