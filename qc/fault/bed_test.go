@@ -26,13 +26,14 @@ type stand struct {
 	elevation float64
 	first     string // first day
 	volts     bool   // its logger sends millivolts
+	more      bool   // it has ultraviolet and photosynthetic instruments too
 	without   string // instruments it has not, by the first letter of their ids, w for the weather
 }
 
 // The coordinates are nobody's: chosen for the latitude and for the hour at which their day begins.
 var (
 	moor   = stand{name: "moor", climate: synth.Maritime, latitude: 50.4, longitude: 6.1, elevation: 420, first: "2026-04-20", volts: true}
-	plain  = stand{name: "plain", climate: synth.Desert, latitude: -24.6, longitude: 15.2, elevation: 1100, first: "2026-09-10"}
+	plain  = stand{name: "plain", climate: synth.Desert, latitude: -24.6, longitude: 15.2, elevation: 1100, first: "2026-09-10", more: true}
 	island = stand{name: "island", climate: synth.Tropical, latitude: 9.3, longitude: 164.8, elevation: 4, first: "2026-02-01", volts: true} // noon at 1 h UTC
 	fjord  = stand{name: "fjord", climate: synth.Polar, latitude: 69.4, longitude: 18.2, elevation: 60, first: "2026-04-05", volts: true}
 )
@@ -53,6 +54,9 @@ func (s *stand) rules(t testing.TB) *rules.Station {
 		default:
 			text += fmt.Sprintf("      - {id: %s, measures: %s, class: A, input: {irradiance: %s_wm2}}\n", in.id, in.quantity, in.id)
 		}
+	}
+	if s.more {
+		text += "      - {id: V1, measures: uv, input: {irradiance: V1_wm2}}\n      - {id: Q1, measures: par, input: {irradiance: Q1_umol}}\n"
 	}
 	for _, id := range []string{"L1", "U1"} {
 		if !s.lacks(id[:1]) {

@@ -3,12 +3,14 @@ package fault
 import "fluxwarden/rules"
 
 // caseCount is how many cases catalogueOfCases has. The order is fixed: a carry names them by number.
-const caseCount = 35
+const caseCount = 44
 
 // quietDays is how long an episode that only sunlit minutes can bear out may go without a word for it.
 const quietDays = 36 * 60
 
 var threeShortwave = []rules.Quantity{rules.Global, rules.Direct, rules.Diffuse}
+
+var onlyGlobal = []rules.Quantity{rules.Global}
 
 // catalogueOfCases lists what can be told from single minutes, in the order in which one minute is asked.
 var catalogueOfCases [caseCount]faultCase
@@ -50,6 +52,15 @@ func init() {
 		{kind: rules.VentilationLost, quantity: rules.Reflected, fan: true, raise: 6, most: 9, evidence: fanStopped},
 		{kind: rules.VentilationLost, quantity: rules.LWDown, fan: true, raise: 6, most: 9, evidence: fanStopped},
 		{kind: rules.VentilationLost, quantity: rules.LWUp, fan: true, raise: 6, most: 9, evidence: fanStopped},
+		{kind: rules.SignalFrozen, quantity: rules.Reflected, needs: onlyGlobal, raise: 5, most: 8, evidence: companionFrozen, number: "value", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quantity: rules.Reflected, needs: onlyGlobal, quiet: quietDays, raise: 5, most: 10, evidence: companionReversed, number: "value", unit: "W/m2"},
+		{kind: rules.UnitSlip, quantity: rules.Reflected, needs: onlyGlobal, quiet: quietDays, raise: 5, most: 10, evidence: companionSlip, number: "factor", unit: "1"},
+		{kind: rules.SignalFrozen, quantity: rules.UV, needs: onlyGlobal, raise: 5, most: 8, evidence: companionFrozen, number: "value", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quantity: rules.UV, needs: onlyGlobal, quiet: quietDays, raise: 5, most: 10, evidence: companionReversed, number: "value", unit: "W/m2"},
+		{kind: rules.UnitSlip, quantity: rules.UV, needs: onlyGlobal, quiet: quietDays, raise: 5, most: 10, evidence: companionSlip, number: "factor", unit: "1"},
+		{kind: rules.SignalFrozen, quantity: rules.PAR, needs: onlyGlobal, raise: 5, most: 8, evidence: companionFrozen, number: "value", unit: "W/m2"},
+		{kind: rules.PolarityReversed, quantity: rules.PAR, needs: onlyGlobal, quiet: quietDays, raise: 5, most: 10, evidence: companionReversed, number: "value", unit: "W/m2"},
+		{kind: rules.UnitSlip, quantity: rules.PAR, needs: onlyGlobal, quiet: quietDays, raise: 5, most: 10, evidence: companionSlip, number: "factor", unit: "1"},
 	}
 	for i := range catalogueOfCases {
 		catalogueOfCases[i].index = i
