@@ -146,10 +146,51 @@ func TestDuckDBReadsTheTreeAsOneTable(t *testing.T) {
 	}
 }
 
+// TestDuckDBReadsTheCleanProducts reads each product as one table over months and years, each period once.
+func TestDuckDBReadsTheCleanProducts(t *testing.T) {
+	m := make3Days(t)
+	db, err := sql.Open("duckdb", "")
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer db.Close()
+	want := m.minutes - m.nulls
+	for _, c := range []struct {
+		product            string
+		rows, values, lost int // lost is how many accepted minutes no row counts
+	}{{"minute", m.minutes, want, 0}, {"hour", 4 * 24, -1, 0}, {"day", 4, -1, 0}, {"month", 1, 0, 2 * minute.PerDay}} {
+		var rows, times, values, counted int
+		var sum float64
+		counts := "sum(global_n)"
+		if c.product == "minute" {
+			counts = "count(global)"
+		}
+		q := "SELECT count(*), count(DISTINCT time), count(global), coalesce(sum(global), 0), " + counts + " FROM read_parquet('" + m.dir + "/clean/" + c.product +
+			"/**/*.parquet', hive_partitioning = true, union_by_name = true) WHERE station = 'northmoor'"
+		if err := db.QueryRow(q).Scan(&rows, &times, &values, &sum, &counted); err != nil {
+			t.Fatal(err)
+		}
+		if rows != c.rows || times != c.rows || c.values >= 0 && values != c.values {
+			t.Errorf("%s: %d rows, %d times, %d values; want %d rows, %d values", c.product, rows, times, values, c.rows, c.values)
+		}
+		if c.product == "minute" && sum != m.sum {
+			t.Errorf("minute: sum %v, want %v", sum, m.sum)
+		}
+		if c.lost == 0 && counted != want {
+			t.Errorf("%s: stands on %d minutes, want %d", c.product, counted, want)
+		}
+	}
+	var said int
+	q := "SELECT count(*) FROM parquet_kv_metadata('" + m.dir + "/clean/**/*.parquet') WHERE decode(key) = 'gap_rules'"
+	if err := db.QueryRow(q).Scan(&said); err != nil || said == 0 {
+		t.Errorf("%d files say their gap rules, %v", said, err)
+	}
+}
+
 func TestArrowReadsEveryFile(t *testing.T) {
 	m := make3Days(t)
 	rows, nulls, sum := 0, 0, 0.0
-	for _, pattern := range []string{"minutes/*/*/*.parquet", "raw/*/*/*.parquet", "faults/*/*.parquet"} {
+	for _, pattern := range []string{"minutes/*/*/*.parquet", "raw/*/*/*.parquet", "faults/*/*.parquet", "clean/*/*/*/*.parquet", "clean/month/*/*.parquet"} {
 		files, err := filepath.Glob(filepath.Join(m.dir, pattern))
 		if err != nil || len(files) == 0 {
 			t.Fatalf("%s: %d files, %v", pattern, len(files), err)
@@ -157,7 +198,7 @@ func TestArrowReadsEveryFile(t *testing.T) {
 		for _, name := range files {
 			table := readArrow(t, name)
 			at := table.Schema().FieldIndices("global")
-			if len(at) == 0 {
+			if len(at) == 0 || strings.HasPrefix(pattern, "clean/") {
 				continue
 			}
 			rows += int(table.NumRows())

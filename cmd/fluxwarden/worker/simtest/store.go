@@ -3,6 +3,7 @@ package simtest
 import (
 	"errors"
 	"math/rand/v2"
+	"time"
 
 	"fluxwarden/cmd/fluxwarden/worker"
 	"fluxwarden/store"
@@ -109,9 +110,19 @@ func storeDigests(s *worker.Store) (map[stationDay]string, error) {
 				if err != nil {
 					return err
 				}
-				if digest != "" {
-					digests[stationDay{station, day}] = digest
+				if digest == "" {
+					continue
 				}
+				// The clean products of a sealed day are as much a function of its readings as its rows are.
+				products := ""
+				for _, name := range []string{store.TableCleanMinute, store.TableCleanHour} {
+					d, err := a.ProductDigest(station, name, time.Unix(86400*day, 0).UTC().Format(time.DateOnly))
+					if err != nil {
+						return err
+					}
+					products += " " + d
+				}
+				digests[stationDay{station, day}] = digest + products
 			}
 		}
 		return nil
