@@ -95,7 +95,7 @@ func (j *Judger) beginOffsets(day int64) {
 	}
 }
 
-func quantised(v, steps float64) float64 { return math.RoundToEven(v*steps)/steps + 0 }
+func quantised(v, steps float64) float64 { return float64(math.RoundToEven(v*steps)/steps) + 0 }
 
 // takeOffsets works out the offsets of a row and takes the night's minutes into the sums. It stands behind the diagnosis.
 func (j *Judger) takeOffsets(r int) {
