@@ -110,6 +110,7 @@ func (g *Gate) look(f *flush, r *request, index int, now time.Time) outcome {
 		st.rate.spend(len(readings) + len(o.refused))
 		g.s.Meter.Received(o.sound)
 		if o.sound > 0 {
+			g.watchClock(r, readings)
 			o.part = f.add(st.partition, r.name, readings)
 		}
 	}
@@ -126,6 +127,18 @@ func (g *Gate) look(f *flush, r *request, index int, now time.Time) outcome {
 		}
 	}
 	return o
+}
+
+// watchClock tells how a station's clock stands to ours: its newest stamp against the time of receipt.
+func (g *Gate) watchClock(r *request, readings []minute.Reading) {
+	if g.s.Clock == nil {
+		return
+	}
+	newest := readings[0].At
+	for i := range readings {
+		newest = max(newest, readings[i].At)
+	}
+	g.s.Clock(r.name, time.Duration(newest-r.received)*time.Microsecond)
 }
 
 func whole(r *request, reason wire.Reason, detail string) []wire.Refusal {

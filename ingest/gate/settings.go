@@ -22,7 +22,9 @@ type Settings struct {
 	DiskLow func() bool               // asked before every flush; true: nothing is taken. Optional
 	NoClock func() bool               // likewise, while the clock is not set: a receive time is kept with each reading. Optional
 	Meter   Meter                     // optional
-	Log     *slog.Logger              // optional
+	// Clock is told how far the newest stamp of a payload is ahead of its receipt, negative where it is behind. It must not wait. Optional.
+	Clock func(station string, ahead time.Duration)
+	Log   *slog.Logger // optional
 
 	AheadMark time.Duration // a stamp further ahead of receipt is marked; 2 min
 	AheadMax  time.Duration // and beyond this refused; 26 h

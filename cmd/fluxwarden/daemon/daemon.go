@@ -291,7 +291,8 @@ func (d *Daemon) bringUp(ctx context.Context) error {
 		return err
 	}
 	known := d.known()
-	g, err := gate.New(d.broker, gate.Settings{Known: known, Now: d.config.Clock.Now, DiskLow: func() bool { return d.diskLow.Load() || d.overBudget.Load() }, NoClock: d.noClock.Load, Meter: d.metrics.Gate(), Log: d.log})
+	g, err := gate.New(d.broker, gate.Settings{Known: known, Now: d.config.Clock.Now, DiskLow: func() bool { return d.diskLow.Load() || d.overBudget.Load() }, NoClock: d.noClock.Load, Meter: d.metrics.Gate(), Log: d.log,
+		Clock: d.ways.metrics.Clock})
 	if err != nil {
 		return err
 	}
@@ -301,7 +302,7 @@ func (d *Daemon) bringUp(ctx context.Context) error {
 	d.gate.Store(g)
 	w := worker.New(worker.Config{
 		Journal: &journal{b: d.broker, onFull: d.metrics.Journal, hold: d.holdForHub()}, Lease: d.lease(ctx), Changes: &changes{b: d.broker}, Archive: d.archive, Rules: d.rules,
-		Findings: findings{d.broker, d.config.Clock.Now}, Aside: aside{d.broker, d.config.Clock.Now}, Live: d.hub, Meter: d.metrics.Worker(),
+		Findings: findings{d.broker, d.config.Clock.Now, d.ways.metrics.ClockAhead}, Aside: aside{d.broker, d.config.Clock.Now}, Live: d.hub, Meter: d.metrics.Worker(),
 		Clock: d.config.Clock, Log: d.log, Program: d.config.Program, Grace: time.Duration(d.config.Settings.Grace),
 		CommitEvery: time.Duration(d.config.Settings.CommitEvery), KeepRaw: time.Duration(d.config.Settings.KeepRaw)})
 	d.working.Store(true)

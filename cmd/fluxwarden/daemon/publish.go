@@ -12,13 +12,15 @@ import (
 	"fluxwarden/ingest/wire"
 	"fluxwarden/qc/fault"
 	"fluxwarden/qc/minute"
+	"fluxwarden/rules"
 )
 
 // findings publishes changes of episodes to the stream FINDINGS, a JSON object each: the contract of the command faults, with the
 // moment of publishing beside it.
 type findings struct {
-	b   *broker.Broker
-	now func() time.Time
+	b     *broker.Broker
+	now   func() time.Time
+	clock func(station string) (aheadSeconds float64, ok bool)
 }
 
 // A FindingLine is an episode as FINDINGS and the command faults write it.
@@ -66,6 +68,12 @@ func (f findings) Publish(ctx context.Context, changes []worker.Finding) error {
 	for i := range changes {
 		line := NewFindingLine(&changes[i].Episode)
 		line.Published, line.Withdrawn = &now, changes[i].Withdrawn
+		if changes[i].Episode.Kind == rules.ClockShift && f.clock != nil {
+			// When a reading was received depends on its way: it is told here, and is in no row.
+			if ahead, ok := f.clock(line.Station); ok {
+				line.Evidence["stamps_ahead_of_receipt"] = map[string]any{"value": ahead, "unit": "s"}
+			}
+		}
 		text, err := json.Marshal(line)
 		if err != nil {
 			return fmt.Errorf("episode %s: %w", line.ID, err)
