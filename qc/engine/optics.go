@@ -48,7 +48,7 @@ func (p *Plan) straighten(j *Judged, out *Series, table [][2]float64, from, to i
 		} else {
 			beam = uncertainty.BeamOfGlobal(v, sun.BeamMu, sun.SaWm2)
 		}
-		if off := float64(beam*sun.BeamMu) * (responseAt(table, sun.ApparentZenithDeg) - 1); off == off {
+		if off := float64(beam * sun.BeamMu * (responseAt(table, sun.ApparentZenithDeg) - 1)); off == off {
 			out.Measured[r], out.Min[r], out.Max[r] = RoundIrradiance(v-off), RoundIrradiance(out.Min[r]-off), RoundIrradiance(out.Max[r]-off)
 		}
 	}

@@ -135,7 +135,7 @@ func (b *Budget) OffsetCorrected(c *Conditions, standardWm2 float64) float64 {
 	if c.NetWm2 == c.NetWm2 {
 		infrared = c.NetWm2 * (1 / infraredOfClassWm2)
 	}
-	gone := float64(float64(infrared*infrared)*b.square[byInfrared]) * (1 - float64(zeroCorrectedShare*zeroCorrectedShare))
+	gone := float64(float64(infrared*infrared) * b.square[byInfrared] * (1 - float64(zeroCorrectedShare*zeroCorrectedShare)))
 	return Coverage * math.Sqrt(max(0, float64(u*u)-gone)+float64(standardWm2*standardWm2))
 }
 
