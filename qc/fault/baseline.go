@@ -12,6 +12,7 @@ import (
 type Baseline struct {
 	closure   [sectors]float64 // global over direct on the horizontal plus diffuse, by the sun's sector
 	known     bool             // closure rests on enough sunlit minutes
+	bySector  [sectors]bool    // it does so with the sun there
 	spread    [sectors]float64 // how far its steady minutes scatter within a day: half of what holds the middle half
 	overcast  float64          // global over diffuse without a beam
 	overcastN int
@@ -67,7 +68,7 @@ func learn(s *Setup, day int64, facts []DayFacts) Baseline {
 			b.spread[k] = m
 		}
 		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Sector[k] }); b.known && n >= 100 {
-			b.closure[k] = m
+			b.closure[k], b.bySector[k] = m, true
 		}
 	}
 	if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Overcast }); n >= 60 {

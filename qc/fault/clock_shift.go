@@ -18,8 +18,8 @@ type jump struct {
 	Last  int64  `json:"last"`
 	// Against counts the sunlit minutes since then that fit the stamps as they are: enough of them, and the clock never jumped
 	Against int `json:"against"`
-	// Fits counts those that fit the stamps as they are, whether or not they would fit the shift too
-	Fits int `json:"fits"`
+	// Fine weighs the shift by the minutes whose deviation it would change by less than a sound instrument may err
+	Fine fineShift `json:"fine"`
 }
 
 const (
@@ -29,8 +29,8 @@ const (
 	jumpRaise     = 4.0
 	jumpMost      = 10.0
 	jumpDaysWatch = 10
-	jumpAgainst   = 30  // sunlit minutes that acquit the clock
-	jumpFits      = 150 // sunlit minutes that do so too, if the shift would hardly show
+	jumpAgainst   = 30   // sunlit minutes that acquit the clock
+	jumpAcquits   = -3.0 // log odds of the fine minutes that do so too
 )
 
 // seeHole notes that no record came for some minutes.
@@ -78,7 +78,7 @@ func (w *Watcher) addJump(j jump) {
 func (w *Watcher) putRight(j jump) bool {
 	for i := range w.slow.Jumps {
 		o := w.slow.Jumps[i]
-		if d := o.Shift + j.Shift; d >= -1 && d <= 1 && (w.clockOpen(o) || j.At-o.At < jumpDaysWatch*1440 && o.Score > 0) {
+		if d := o.Shift + j.Shift; d >= -1 && d <= 1 && (w.clockOpen(o) || j.At-o.At < jumpDaysWatch*1440 && o.odds() > 0) {
 			if w.clockOpen(o) {
 				w.finish(w.openIndex(Logger, rules.ClockShift), j.At)
 			}
@@ -92,6 +92,21 @@ func (w *Watcher) putRight(j jump) bool {
 func (w *Watcher) clockOpen(j jump) bool {
 	i := w.openIndex(Logger, rules.ClockShift)
 	return i >= 0 && w.open[i].From == j.At
+}
+
+// clockSuspected says whether a jump is likelier than not to have set the clock wrong.
+func (w *Watcher) clockSuspected() bool {
+	for i := range w.slow.Jumps {
+		if w.slow.Jumps[i].odds() > 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// odds are the log odds of the shift so far.
+func (j *jump) odds() float64 {
+	return j.Score.Float() + max(-jumpMost, min(jumpMost, j.Fine.odds(j.Shift)))
 }
 
 // watchClock holds global against its partners with the sun where the stamp says and where a clock that jumped would have it.
@@ -114,8 +129,15 @@ func (w *Watcher) watchClock(v *view) {
 		then := max(0, w.muMinutesAgo(v, j.Shift))
 		shifted := math.Abs(g - float64(c*(float64(b*then)+d)))
 		odds := jumpOdds(asStamped, shifted, sigma, w.clockOpen(*j))
-		if asStamped < 1.2*sigma {
-			j.Fits++
+		if odds == 0 && asStamped < 2.5*sigma && shifted < 2.5*sigma {
+			if !w.base.bySector[sectorOf(v)] {
+				continue // how the three stand to each other with the sun there is not known well enough
+			}
+			j.Fine.add(v.azimuthDeg > 180, float64(c*b)*(then-v.mu)/v.sum, g/v.sum-1, w.fineScatter(v))
+			if j.Fine.minutes()%fineEvery == 0 {
+				w.clockEpisode(v, j)
+			}
+			continue
 		}
 		if odds < -0.03 && asStamped < 2*sigma {
 			j.Against++
@@ -131,7 +153,7 @@ func (w *Watcher) watchClock(v *view) {
 		w.clockEpisode(v, j)
 	}
 	w.slow.Jumps = slices.DeleteFunc(w.slow.Jumps, func(j jump) bool {
-		return (j.Against >= jumpAgainst || j.Fits >= jumpFits) && j.Score <= 0 && !w.clockOpen(j)
+		return (j.Against >= jumpAgainst || j.Fine.odds(j.Shift) < jumpAcquits) && j.Score <= 0 && !w.clockOpen(j)
 	})
 }
 
@@ -155,23 +177,38 @@ func jumpOdds(asStamped, shifted, sigma float64, open bool) float64 {
 	return max(-0.2, odds)
 }
 
+// likelierJump says whether another jump by about the same shift is likelier: two holes of a length differ by what lies between them.
+func (w *Watcher) likelierJump(j *jump) bool {
+	for i := range w.slow.Jumps {
+		o := &w.slow.Jumps[i]
+		if d := o.Shift - j.Shift; o.At != j.At && d >= -1 && d <= 1 && o.Score.Float()-j.Score.Float()+o.Fine.sooner(&j.Fine) > 0 {
+			return true
+		}
+	}
+	return false
+}
+
 func (w *Watcher) clockEpisode(v *view, j *jump) {
 	open := w.openIndex(Logger, rules.ClockShift)
-	evidence := []Evidence{{"shift", float64(j.Shift), "min"}, {"minutes", float64(j.For), "min"}}
+	odds := j.odds()
+	evidence := []Evidence{{"shift", float64(j.Shift), "min"}, {"minutes", float64(j.For + j.Fine.minutes()), "min"}}
+	if open < 0 && w.likelierJump(j) {
+		return
+	}
 	switch {
-	case open < 0 && j.Score >= jumpRaise && w.imbalanceEpisode() >= 0:
+	case open < 0 && odds >= jumpRaise && w.imbalanceEpisode() >= 0:
 		// what seemed an instrument's was the clock's
 		e := &w.open[w.imbalanceEpisode()]
 		e.Instrument, e.Kind, e.Also, e.Advice = Logger, rules.ClockShift, nil, rules.ClockShift.Entry().Advice
 		e.From, e.Raised, e.Evidence = w.hindsight(j.At), v.minute, evidence
 		e.Rev++
 		w.slow.Episode, w.slow.Imbalance = "", imbalance{}
-	case open < 0 && j.Score >= jumpRaise:
+	case open < 0 && odds >= jumpRaise:
 		w.raise(Episode{Instrument: Logger, Kind: rules.ClockShift, Severity: rules.Act, From: w.hindsight(j.At), Raised: v.minute,
-			Confidence: confidence(2 * j.Score.Float()), Evidence: evidence})
+			Confidence: confidence(2 * odds), Evidence: evidence})
 	case open >= 0 && w.open[open].From == j.At:
 		w.open[open].Evidence = evidence
-		if j.Score <= 0 {
+		if odds <= 0 {
 			w.finish(open, j.Last+1)
 		}
 	}

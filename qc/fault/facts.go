@@ -74,7 +74,7 @@ func (f *gatherFacts) minute(w *Watcher, v *view) {
 		f.overcast.add(g / d)
 	}
 	sum := float64(b*v.mu) + d
-	if b > 200 && v.steady && sum > 100 {
+	if b > 200 && v.steady && sum > 100 && !w.clockSuspected() {
 		f.closure.add(g / sum)
 		f.sector[sectorOf(v)].add(g / sum)
 	}
