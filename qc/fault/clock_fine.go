@@ -69,13 +69,12 @@ func (f *fineShift) odds(minutes int64) float64 {
 	return all
 }
 
-// sooner says how much likelier the one jump is than another by the same shift: what the minutes between the two say.
+// sooner says how much likelier the one jump is than another by the same shift: what the minutes between the two say, c taken for nothing.
 func (f *fineShift) sooner(o *fineShift) float64 {
 	sum := 0.0
 	for k := range f.Half {
-		s, i := f.Half[k].evidence()
-		so, io := o.Half[k].evidence()
-		sum += s - so - float64((i-io)/2)
+		a, b := &f.Half[k], &o.Half[k]
+		sum += (a.XY - b.XY).Float() - float64((a.XX-b.XX).Float()/2)
 	}
 	return sum
 }

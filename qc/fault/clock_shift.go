@@ -74,12 +74,16 @@ func (w *Watcher) addJump(j jump) {
 	}
 }
 
-// putRight ends the open episode if the jump takes back the shift that it names: somebody has set the clock.
+// putRight ends the open episode if the jump takes back the shift that it names, or forgets one that was only suspected: somebody has
+// set the clock.
 func (w *Watcher) putRight(j jump) bool {
-	for i := range w.slow.Jumps {
-		o := w.slow.Jumps[i]
-		if d := o.Shift + j.Shift; d >= -1 && d <= 1 && (w.clockOpen(o) || j.At-o.At < jumpDaysWatch*1440 && o.odds() > 0) {
-			if w.clockOpen(o) {
+	for _, open := range [...]bool{true, false} {
+		for i, o := range w.slow.Jumps {
+			d := o.Shift + j.Shift
+			if d < -1 || d > 1 || w.clockOpen(o) != open || !open && (j.At-o.At >= jumpDaysWatch*1440 || o.odds() <= 0) {
+				continue
+			}
+			if open {
 				w.finish(w.openIndex(Logger, rules.ClockShift), j.At)
 			}
 			w.slow.Jumps = slices.Delete(w.slow.Jumps, i, i+1)
