@@ -12,15 +12,15 @@ type imbalance struct {
 	Score  Number  `json:"score"`
 	Since  int64   `json:"since"` // minute at which the present rise began
 	Last   int64   `json:"last"`
-	N      int     `json:"n"`      // steady minutes with beam
-	Sums   sums    `json:"sums"`   // of their relative deviations, for the fits
-	First  mean    `json:"first"`  // deviation of the first hour of them
-	Recent Number  `json:"recent"` // running mean over the last two hours or so
-	Dull   mean    `json:"dull"`   // deviation of global over diffuse without a beam
-	Sky    [3]mean `json:"sky"`    // global, direct and diffuse over the learnt clear sky, less one, in clear minutes
-	Air    mean    `json:"air"`    // air temperature, degrees C
-	Humid  Number  `json:"humid"`  // most humid hour before it began, %
-	Rise   int64   `json:"rise"`   // sunrise before it began
+	N      int     `json:"n"`       // steady minutes with beam
+	Sums   sums    `json:"sums"`    // of their relative deviations, for the fits
+	First  mean    `json:"first"`   // deviation of the first hour of them
+	Recent Number  `json:"recent"`  // running mean over the last two hours or so
+	Dull   mean    `json:"dull"`    // deviation of global over diffuse without a beam
+	Sky    [3]mean `json:"sky"`     // global, direct and diffuse over the learnt clear sky, less one, in clear minutes
+	Air    mean    `json:"air"`     // air temperature, degrees C
+	DewGap Number  `json:"dew_gap"` // least before it began, K
+	Rise   int64   `json:"rise"`    // sunrise before it began
 	Begun  bool    `json:"begun"`
 	Arc    arc     `json:"arc"`   // deviation by the sun's bearing, with a beam
 	Model  model   `json:"model"` // of the cause that the open episode names
@@ -166,7 +166,7 @@ func (w *Watcher) dullStep(v *view, delta float64) {
 		return
 	}
 	if !im.Begun {
-		*im = imbalance{Begun: true, Since: v.minute, Humid: Number(w.humid()), Rise: w.sunrise}
+		*im = imbalance{Begun: true, Since: v.minute, DewGap: Number(w.leastDewGap()), Rise: w.sunrise}
 	}
 	odds := 0.0
 	switch {
@@ -239,7 +239,7 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 		if odds <= 0 {
 			return
 		}
-		*im = imbalance{Begun: true, Since: v.minute, Humid: Number(w.humid()), Rise: w.sunrise}
+		*im = imbalance{Begun: true, Since: v.minute, DewGap: Number(w.leastDewGap()), Rise: w.sunrise}
 	}
 	if odds > 0 {
 		im.Last = v.minute
@@ -258,7 +258,7 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 	im.Recent += Number((delta - im.Recent.Float()) / min(float64(im.N), 60))
 	im.Arc.add(v.azimuthDeg, delta)
 	im.Air.add(v.value[rules.AirTemperature])
-	if w.base.skyKnown && v.b() > 0.5*v.clear[rules.Direct] {
+	if w.base.skyKnown && (v.b() > 0.5*v.clear[rules.Direct] || w.followsClear(v)) {
 		im.Sky[0].add(v.g()/v.clear[rules.Global] - 1)
 		im.Sky[1].add(v.b()/v.clear[rules.Direct] - 1)
 		im.Sky[2].add(v.d()/v.clear[rules.Diffuse] - 1)
@@ -370,12 +370,14 @@ func (im *imbalance) severity(c cause, v *view) rules.Severity {
 	if c.model.K == 3 {
 		size = math.Sqrt(float64(a*a)+float64(b*b)) * leverAt60
 	}
-	if size < smallDeviation && v.minute-im.Since < smallDays*1440 {
+	if days := float64(v.minute-im.Since) / 1440; size < smallDeviation && days*float64(size*size) < smallDays*smallDeviation*smallDeviation {
 		return rules.Watch
 	}
 	return rules.Act
 }
 
+// A deviation below smallDeviation must have lasted for smallDays, half of it four times as long: what changes from day to day at a sound
+// station averages out as the square root of the days.
 const (
 	smallDeviation = 0.04
 	smallDays      = 2

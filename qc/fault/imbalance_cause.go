@@ -73,7 +73,7 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 			break
 		}
 	}
-	best = im.weather(best, g, v)
+	best = im.weather(best, s, v)
 	if best.kind == rules.SensitivityWrong && im.grows() && best.loss() {
 		best.kind, best.also = rules.DomeSoiled, []rules.FaultKind{rules.SensitivityDrift}
 	}
@@ -81,18 +81,19 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 	return best
 }
 
-// weather turns a gain of global into dew, frost or snow on its dome where the hour and the air speak for it: a thing of the
-// hours after a humid or freezing night, and large.
-func (im *imbalance) weather(c cause, global string, v *view) cause {
-	if c.instrument != global {
+// weather turns a gain of global into dew, frost or snow on its dome, and a loss of the beam into dew or frost on the pyrheliometer's window,
+// where the hour and the air speak for it: a thing of the hours after a humid or freezing night, and large.
+func (im *imbalance) weather(c cause, s *Setup, v *view) cause {
+	global := c.instrument == s.Instruments[rules.Global].ID
+	if !global && !(c.kind == rules.SensitivityWrong && c.model.K == 1 && c.loss()) {
 		return c
 	}
 	size := math.Abs(im.Recent.Float())
 	early := im.Since-im.Rise < 4*60 && v.minute-im.Since < 5*60
 	switch {
-	case im.Air.of() < 2 && im.Recent < -0.15 && v.minute-im.Since < 48*60:
+	case global && im.Air.of() < 2 && im.Recent < -0.15 && v.minute-im.Since < 48*60:
 		c.kind, c.also = rules.DomeSnow, []rules.FaultKind{rules.DomeWet}
-	case early && im.Humid >= 80 && size > 0.09:
+	case early && im.DewGap <= dewGapMost && size > 0.09:
 		c.kind, c.also = rules.DomeWet, []rules.FaultKind{rules.SensitivityWrong}
 		if im.Air.of() < 2 {
 			c.also = []rules.FaultKind{rules.DomeSnow}
@@ -100,6 +101,10 @@ func (im *imbalance) weather(c cause, global string, v *view) cause {
 	}
 	return c
 }
+
+// dewGapMost is how far above its dew point the air may be for a dome that looks at a clear night sky to be wet, K (own choice: by so much does
+// an unventilated one cool below the air).
+const dewGapMost = 3
 
 // grows says whether a loss has grown since it began, as dirt does and a coefficient does not.
 func (im *imbalance) grows() bool {

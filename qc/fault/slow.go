@@ -4,6 +4,8 @@ import (
 	"math"
 	"slices"
 
+	"fluxwarden/qc/exact"
+	"fluxwarden/qc/sensor"
 	"fluxwarden/rules"
 )
 
@@ -17,7 +19,7 @@ type SlowCarry struct {
 	Dips       []dip     `json:"dips,omitempty"`
 	Dip        dip       `json:"dip"`
 	FullBeam   int       `json:"full_beam,omitempty"`
-	Humid      [8]Number `json:"humid"` // mean humidity of the last eight hours, newest first
+	DewGap     [8]Number `json:"dew_gap"` // K, of the last eight hours, newest first
 	Sunrise    int64     `json:"sunrise"`
 }
 
@@ -42,20 +44,35 @@ func (w *Watcher) watchWeather(v *view) {
 	}
 	w.sunrise = w.slow.Sunrise
 	if v.minute%60 == 0 {
-		copy(w.slow.Humid[1:], w.slow.Humid[:7])
-		w.slow.Humid[0] = quantise(v.value[rules.Humidity])
+		copy(w.slow.DewGap[1:], w.slow.DewGap[:7])
+		w.slow.DewGap[0] = quantise(dewGap(v.value[rules.AirTemperature], v.value[rules.Humidity]))
 	}
 }
 
-// humid is the most humid of the last eight hours, %.
-func (w *Watcher) humid() float64 {
-	most := 0.0
-	for _, h := range w.slow.Humid {
+// dewGap is about how far the air is above its dew point, below freezing its frost point, K: the Clausius-Clapeyron relation with the latent
+// heat of condensation, 2.50e6 J/kg (2.83e6 over ice), and the gas constant of vapour, 461.5 J/(kg K). NaN without the weather.
+func dewGap(airC, humidityPercent float64) float64 {
+	tK := airC + sensor.ZeroCelsiusK
+	if !(humidityPercent > 0 && tK > 0) {
+		return math.NaN()
+	}
+	logRatio, perK := exact.Log(humidityPercent/100), 2.50e6/461.5/(tK*tK)
+	if airC < 0 {
+		logRatio += float64((2.83e6 - 2.50e6) / 461.5 * (1/tK - 1/sensor.ZeroCelsiusK))
+		perK = 2.83e6 / 461.5 / (tK * tK)
+	}
+	return -logRatio / perK
+}
+
+// leastDewGap is the least of the last eight hours, K.
+func (w *Watcher) leastDewGap() float64 {
+	least := math.Inf(1)
+	for _, h := range w.slow.DewGap {
 		if !math.IsNaN(h.Float()) {
-			most = max(most, h.Float())
+			least = min(least, h.Float())
 		}
 	}
-	return most
+	return min(least, 99)
 }
 
 func (c SlowCarry) clone() SlowCarry {
