@@ -97,7 +97,7 @@ func settleEpisode(plan *Plan, j *Judged, i int, e *fault.Episode, lo, hi int, r
 			continue
 		}
 		s.Faults[r] |= e.Kind.Of()
-		switch effect := episodeEffect(e, s.Quantity).Verdict(); {
+		switch effect := episodeEffect(e, s).Verdict(); {
 		case ok:
 			s.Value[r], s.Restored[r] = RoundIrradiance(restored), true
 			s.U95[r] = plan.restoredU95(j, i, r, e, s.Value[r])
@@ -108,11 +108,11 @@ func settleEpisode(plan *Plan, j *Judged, i int, e *fault.Episode, lo, hi int, r
 	}
 }
 
-// episodeEffect is what an episode does to a quantity's minutes that it reaches. Longwave moves slowly: under a wrong clock it is seldom
-// far off, and questioned at most.
-func episodeEffect(e *fault.Episode, q rules.Quantity) rules.Effect {
+// episodeEffect is what an episode does to a series' minutes that it reaches. Longwave moves slowly: under a wrong clock it is seldom far off, and
+// questioned at most. So is the dome beside the one that snow was told of.
+func episodeEffect(e *fault.Episode, s *Series) rules.Effect {
 	effect := rules.FaultEffect(e.Kind, e.Severity)
-	if e.Kind == rules.ClockShift && q.Longwave() {
+	if e.Kind == rules.ClockShift && s.Quantity.Longwave() || e.Kind == rules.DomeSnow && e.Instrument != s.Instrument {
 		return min(effect, rules.Question)
 	}
 	return effect

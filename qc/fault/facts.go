@@ -92,7 +92,7 @@ func (w *Watcher) tainted(q rules.Quantity) bool {
 		if e.Severity != rules.Act || accountsForNothing.Has(e.Kind) {
 			continue
 		}
-		if e.Instrument == id || e.Instrument == Logger || e.Instrument == Tracker && (q == rules.Direct || q == rules.Diffuse) {
+		if e.Instrument == id || e.Instrument == Logger || e.Instrument == Tracker && (q == rules.Direct || q == rules.Diffuse) || e.snowOnBoth(w.setup, q) {
 			return true
 		}
 	}

@@ -9,21 +9,21 @@ import (
 // An imbalance is what a station gathers while global, direct and diffuse do not close as they used to: enough to say which
 // of the causes that last for hours or days is the likeliest. It is carried over midnight.
 type imbalance struct {
-	Score  Number  `json:"score"`
-	Since  int64   `json:"since"` // minute at which the present rise began
-	Last   int64   `json:"last"`
-	N      int     `json:"n"`       // steady minutes with beam
-	Sums   sums    `json:"sums"`    // of their relative deviations, for the fits
-	First  mean    `json:"first"`   // deviation of the first hour of them
-	Recent Number  `json:"recent"`  // running mean over the last two hours or so
-	Dull   mean    `json:"dull"`    // deviation of global over diffuse without a beam
-	Sky    [3]mean `json:"sky"`     // global, direct and diffuse over the learnt clear sky, less one, in clear minutes
-	Air    mean    `json:"air"`     // air temperature, degrees C
-	DewGap Number  `json:"dew_gap"` // least before it began, K
-	Rise   int64   `json:"rise"`    // sunrise before it began
-	Begun  bool    `json:"begun"`
-	Arc    arc     `json:"arc"`   // deviation by the sun's bearing, with a beam
-	Model  model   `json:"model"` // of the cause that the open episode names
+	Score   Number  `json:"score"`
+	Since   int64   `json:"since"` // minute at which the present rise began
+	Last    int64   `json:"last"`
+	N       int     `json:"n"`       // steady minutes with beam
+	Sums    sums    `json:"sums"`    // of their relative deviations, for the fits
+	First   mean    `json:"first"`   // deviation of the first hour of them
+	Recent  Number  `json:"recent"`  // running mean over the last two hours or so
+	Dull    mean    `json:"dull"`    // deviation of global over diffuse without a beam
+	Sky     [3]mean `json:"sky"`     // global, direct and diffuse over the learnt clear sky, less one, in clear minutes
+	Coldest Number  `json:"coldest"` // least air temperature of the eight hours before it and since, degrees C
+	DewGap  Number  `json:"dew_gap"` // least before it began, K
+	Rise    int64   `json:"rise"`    // sunrise before it began
+	Begun   bool    `json:"begun"`
+	Arc     arc     `json:"arc"`   // deviation by the sun's bearing, with a beam
+	Model   model   `json:"model"` // of the cause that the open episode names
 }
 
 // A model is what a cause implies for the closure of a minute.
@@ -132,7 +132,7 @@ func (w *Watcher) watchImbalance(v *view) {
 	if g > 60 && d < openCircuitWm2 {
 		return // an open input, not a gain
 	}
-	if b < 2 && d > 60 {
+	if b < 2 && g+d > 30 && d > 5 {
 		w.dullStep(v, g/d/w.base.overcast-1)
 		return
 	}
@@ -157,7 +157,10 @@ func (w *Watcher) closureRoomAt(v *view) float64 {
 // dullStep takes a minute without a beam: global over diffuse is the ratio of the two gains, blind to levelling, clock and tracker.
 func (w *Watcher) dullStep(v *view, delta float64) {
 	im := &w.slow.Imbalance
-	room := dullRoom + float64(3*w.base.dull) + w.moved(v)/v.sum
+	room := dullRoom + float64(3*w.base.dull) + (1+w.moved(v))/v.sum
+	if v.d() < 60 {
+		room += 6 / v.d() // the offsets of good instruments
+	}
 	if w.base.overcastN == 0 {
 		room += dullRoom
 	}
@@ -166,7 +169,7 @@ func (w *Watcher) dullStep(v *view, delta float64) {
 		return
 	}
 	if !im.Begun {
-		*im = imbalance{Begun: true, Since: v.minute, DewGap: Number(w.leastDewGap()), Rise: w.sunrise}
+		*im = imbalance{Begun: true, Since: v.minute, DewGap: Number(w.leastDewGap()), Coldest: Number(w.coldest()), Rise: w.sunrise}
 	}
 	odds := 0.0
 	switch {
@@ -179,10 +182,17 @@ func (w *Watcher) dullStep(v *view, delta float64) {
 		odds = -0.02
 	}
 	im.Dull.add(delta)
-	im.Air.add(v.value[rules.AirTemperature])
+	im.cold(v)
 	im.N++
 	im.Recent += Number((delta - im.Recent.Float()) / min(float64(im.N), 60))
 	w.imbalanceScore(v, odds)
+}
+
+// cold keeps the least air temperature.
+func (im *imbalance) cold(v *view) {
+	if t := v.value[rules.AirTemperature]; t < im.Coldest.Float() {
+		im.Coldest = Number(t)
+	}
 }
 
 // moved is by how much the sum has changed over the last minutes, W/m2: at the edge of a cloud instruments do not follow alike.
@@ -239,7 +249,7 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 		if odds <= 0 {
 			return
 		}
-		*im = imbalance{Begun: true, Since: v.minute, DewGap: Number(w.leastDewGap()), Rise: w.sunrise}
+		*im = imbalance{Begun: true, Since: v.minute, DewGap: Number(w.leastDewGap()), Coldest: Number(w.coldest()), Rise: w.sunrise}
 	}
 	if odds > 0 {
 		im.Last = v.minute
@@ -257,7 +267,7 @@ func (w *Watcher) imbalanceStep(v *view, room, delta, beam float64) {
 	}
 	im.Recent += Number((delta - im.Recent.Float()) / min(float64(im.N), 60))
 	im.Arc.add(v.azimuthDeg, delta)
-	im.Air.add(v.value[rules.AirTemperature])
+	im.cold(v)
 	if w.base.skyKnown && (v.b() > 0.5*v.clear[rules.Direct] || w.followsClear(v)) {
 		im.Sky[0].add(v.g()/v.clear[rules.Global] - 1)
 		im.Sky[1].add(v.b()/v.clear[rules.Direct] - 1)
@@ -328,7 +338,7 @@ func (w *Watcher) imbalanceEpisode() int {
 func (w *Watcher) raiseImbalance(v *view) {
 	im := &w.slow.Imbalance
 	c := im.classify(w, v)
-	if c.lead < 3 && im.N < 240 || math.Abs(im.Recent.Float()) > grossly && im.N < 120 && c.kind != rules.DomeSnow {
+	if c.lead < 3 && im.N < 240 && c.kind != rules.DomeSnow || math.Abs(im.Recent.Float()) > grossly && im.N < 120 && c.kind != rules.DomeSnow {
 		return
 	}
 	e := w.raise(Episode{Instrument: c.instrument, Kind: c.kind, Also: c.also, Severity: im.severity(c, v), From: w.hindsight(im.Since),
@@ -365,6 +375,9 @@ func (w *Watcher) renameImbalance(open int, v *view) {
 
 // severity says whether somebody should act: a few percent are watched until they have lasted for days.
 func (im *imbalance) severity(c cause, v *view) rules.Severity {
+	if c.kind == rules.DomeSnow || c.kind == rules.DomeWet {
+		return rules.Act // they are large
+	}
 	a, b := c.model.A.Float(), c.model.B.Float()
 	size := math.Abs(a)
 	if c.model.K == 3 {

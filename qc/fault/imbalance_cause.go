@@ -42,9 +42,12 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 		fitT += float64((lean - leanMost) * (lean - leanMost))
 	}
 	gainD, fitD := im.fitDiffuse()
+	if im.Sums.XX[0][0] <= 0 && im.Dull.N >= 20 { // no beam so far
+		gainG, gainD = im.Dull.of(), -im.Dull.of()
+	}
 	fitG += absurd(1 + gainG)
-	fitD += absurd(1 + gainD)
-	beamCause := cause{kind: rules.SensitivityWrong, instrument: p, model: model{1, Number(gainP), 0}, misfit: fitP + absurd(1-gainP) + im.elsewhere(0, 0, -gainP),
+	fitD += absurd(1 / (1 - gainD))
+	beamCause := cause{kind: rules.SensitivityWrong, instrument: p, model: model{1, Number(gainP), 0}, misfit: fitP + absurd(1/(1+gainP)) + im.elsewhere(0, 0, -gainP),
 		evidence: []Evidence{{"gain", roundTo(1/(1+gainP), 1000), "1"}}}
 	if gainP < -0.15 && im.Sky[2].N >= 20 && im.Sky[2].of() > 0.5 {
 		// a share of the beam on diffuse closes like a beam read too high, but the beam is as it should be and diffuse is not
@@ -81,26 +84,58 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 	return best
 }
 
-// weather turns a gain of global into dew, frost or snow on its dome, and a loss of the beam into dew or frost on the pyrheliometer's window,
-// where the hour and the air speak for it: a thing of the hours after a humid or freezing night, and large.
+// weather turns a gain into dew, frost or snow where the hour and the air speak for it. Dew and frost come with the hours after a humid or
+// freezing night, on the dome of global or the window of the pyrheliometer; snow with frost, on any dome, and lies for a day or two. Both are
+// large: a coefficient seldom slips by so much at such an hour.
 func (im *imbalance) weather(c cause, s *Setup, v *view) cause {
-	global := c.instrument == s.Instruments[rules.Global].ID
-	if !global && !(c.kind == rules.SensitivityWrong && c.model.K == 1 && c.loss()) {
+	if c.kind != rules.SensitivityWrong {
+		if c.instrument != s.Instruments[rules.Global].ID || c.kind == rules.ShadeOff {
+			return c
+		}
+	}
+	global, beam := c.instrument == s.Instruments[rules.Global].ID, c.model.K == 1
+	size, lasted := math.Abs(im.Recent.Float()), v.minute-im.Since
+	dewy := im.Since-im.Rise < 4*60 && lasted < 5*60 && im.DewGap <= dewGapMost && size > 0.09
+	switch {
+	case beam && c.loss() && dewy:
+		c.kind, c.also = rules.DomeWet, []rules.FaultKind{rules.SensitivityWrong}
+	case im.Coldest < snowAirC && lasted < 48*60 && im.snowLies(&c):
+		// the beam's own gain is no part of it
+		c.kind, c.also, c.instrument = rules.DomeSnow, []rules.FaultKind{rules.DomeWet}, s.Instruments[rules.Global].ID
+		c.lead = math.Inf(1)
+	case global && dewy:
+		c.kind, c.also = rules.DomeWet, []rules.FaultKind{rules.SensitivityWrong}
+	default:
 		return c
 	}
-	size := math.Abs(im.Recent.Float())
-	early := im.Since-im.Rise < 4*60 && v.minute-im.Since < 5*60
-	switch {
-	case global && im.Air.of() < 2 && im.Recent < -0.15 && v.minute-im.Since < 48*60:
-		c.kind, c.also = rules.DomeSnow, []rules.FaultKind{rules.DomeWet}
-	case early && im.DewGap <= dewGapMost && size > 0.09:
-		c.kind, c.also = rules.DomeWet, []rules.FaultKind{rules.SensitivityWrong}
-		if im.Air.of() < 2 {
-			c.also = []rules.FaultKind{rules.DomeSnow}
-		}
+	if c.kind == rules.DomeWet && im.Coldest < snowAirC {
+		c.also = []rules.FaultKind{rules.DomeSnow}
 	}
 	return c
 }
+
+// snowLies says whether the imbalance is one that snow on the domes gives: global reads far too little, or diffuse does, or what would have to be
+// a gain is none that an instrument has.
+func (im *imbalance) snowLies(c *cause) bool {
+	a, recent := c.model.A.Float(), im.Recent.Float()
+	switch c.model.K {
+	case 0:
+		return min(a, recent) < -snowLeast || max(a, recent) > snowLeast && absurd(1+max(a, recent)) > 0
+	case 3:
+		return recent < -snowLeast
+	case 2:
+		return math.Abs(recent) > snowLeast
+	}
+	dull := im.Dull.N >= 20 && math.Abs(im.Dull.of()) > snowLeast // under thick cloud a gain of the beam does not show
+	return math.Abs(recent) > snowLeast && (dull || absurd(1/(1+a)) > 0)
+}
+
+const (
+	// snowAirC is below which air temperature of the hours before snow may have come to lie, degrees C (common practice).
+	snowAirC = 2
+	// snowLeast is the least deviation that is told as snow.
+	snowLeast = 0.15
+)
 
 // dewGapMost is how far above its dew point the air may be for a dome that looks at a clear night sky to be wet, K (own choice: by so much does
 // an unventilated one cool below the air).

@@ -17,7 +17,15 @@ func Concerns(e *Episode, s *Setup, instrument string, q rules.Quantity) bool {
 	if e.Kind == rules.ChannelsSwapped && (q == rules.Global || q == rules.Diffuse) {
 		return instrument == s.Instruments[q].ID
 	}
+	if e.snowOnBoth(s, q) {
+		return instrument == s.Instruments[q].ID
+	}
 	return e.Instrument == instrument
+}
+
+// snowOnBoth says whether an episode of snow on the dome of global concerns diffuse too: it falls on both domes, and lies longer in the shade.
+func (e *Episode) snowOnBoth(s *Setup, q rules.Quantity) bool {
+	return e.Kind == rules.DomeSnow && q == rules.Diffuse && e.Instrument == s.Instruments[rules.Global].ID
 }
 
 // Reaches says whether the episode spoils one minute of one quantity: a clip its rail, gain, tilt, pointing and shade the

@@ -55,6 +55,9 @@ func (w *Watcher) missedMuch(q rules.Quantity, v *view) bool {
 		if v.d() < float64(0.05*v.g()) {
 			return false // no sky gives so little diffuse: it is diffuse that is lost
 		}
+		if v.g() < 0.4*v.clear[rules.Global] || v.d() < 0.3*v.clear[rules.Diffuse] {
+			return false // the sun is not out, or snow lies on the domes
+		}
 		want *= v.mu
 		return want > 50 && want > 4*v.room && want > 0.3*v.g()
 	}

@@ -20,6 +20,7 @@ type SlowCarry struct {
 	Dip        dip       `json:"dip"`
 	FullBeam   int       `json:"full_beam,omitempty"`
 	DewGap     [8]Number `json:"dew_gap"` // K, of the last eight hours, newest first
+	AirC       [8]Number `json:"air_c"`   // degrees C, likewise
 	Sunrise    int64     `json:"sunrise"`
 }
 
@@ -45,6 +46,8 @@ func (w *Watcher) watchWeather(v *view) {
 	w.sunrise = w.slow.Sunrise
 	if v.minute%60 == 0 {
 		copy(w.slow.DewGap[1:], w.slow.DewGap[:7])
+		copy(w.slow.AirC[1:], w.slow.AirC[:7])
+		w.slow.AirC[0] = quantise(v.value[rules.AirTemperature])
 		w.slow.DewGap[0] = quantise(dewGap(v.value[rules.AirTemperature], v.value[rules.Humidity]))
 	}
 }
@@ -64,15 +67,28 @@ func dewGap(airC, humidityPercent float64) float64 {
 	return -logRatio / perK
 }
 
+// forgetWeather starts without any.
+func (c *SlowCarry) forgetWeather() {
+	for i := range c.DewGap {
+		c.DewGap[i], c.AirC[i] = Number(math.NaN()), Number(math.NaN())
+	}
+}
+
 // leastDewGap is the least of the last eight hours, K.
-func (w *Watcher) leastDewGap() float64 {
-	least := math.Inf(1)
-	for _, h := range w.slow.DewGap {
+func (w *Watcher) leastDewGap() float64 { return leastOf(&w.slow.DewGap) }
+
+// coldest is the least air temperature of the last eight hours, degrees C.
+func (w *Watcher) coldest() float64 { return leastOf(&w.slow.AirC) }
+
+// leastOf is the least of some hours, 99 where none is known.
+func leastOf(hours *[8]Number) float64 {
+	least := 99.0
+	for _, h := range hours {
 		if !math.IsNaN(h.Float()) {
 			least = min(least, h.Float())
 		}
 	}
-	return min(least, 99)
+	return least
 }
 
 func (c SlowCarry) clone() SlowCarry {

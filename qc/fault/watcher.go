@@ -66,6 +66,7 @@ func NewWatcher(setup *Setup, day int64, facts []DayFacts, carry *Carry) *Watche
 		w.taught = append(w.taught, facts[i].Kinds)
 	}
 	w.facts.reset(w)
+	w.slow.forgetWeather()
 	for i := range w.cases {
 		w.cases[i].Since = noMinute
 	}
