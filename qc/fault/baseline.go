@@ -25,6 +25,9 @@ type Baseline struct {
 	bodyKnown [2]bool
 	kLW       float64 // measured over modelled clear-sky longwave
 	lwKnown   bool
+	// how far the closure, and global over diffuse under thick cloud, stood off their usual on the days before, yesterday first; NaN where they
+	// were not seen
+	lately [2][latelyDays]float64
 }
 
 // The sun's sectors: morning and afternoon, by height.
@@ -87,6 +90,7 @@ func learn(s *Setup, day int64, facts []DayFacts) Baseline {
 	}
 	b.sky = learnSky(s, day, facts, closure)
 	b.skyKnown = b.sky.Days > 0
+	b.rememberLately(facts)
 	for k := range b.bodyAir {
 		if m, n := medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.BodyAir[k] }); n >= 60 {
 			b.bodyAir[k], b.bodyKnown[k] = m, true
@@ -96,6 +100,27 @@ func learn(s *Setup, day int64, facts []DayFacts) Baseline {
 		b.kLW, b.lwKnown = m, true
 	}
 	return b
+}
+
+// latelyDays is how many days a slow change is looked for in.
+const latelyDays = 10
+
+// rememberLately takes what the last days said of how the instruments stand to each other.
+func (b *Baseline) rememberLately(facts []DayFacts) {
+	usual := [2]float64{math.NaN(), math.NaN()}
+	usual[0], _ = medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Closure })
+	usual[1], _ = medianOf(facts, trustedMinutes, func(f *DayFacts) Fact { return f.Overcast })
+	for k := range latelyDays {
+		b.lately[0][k], b.lately[1][k] = math.NaN(), math.NaN()
+		if k >= len(facts) {
+			continue
+		}
+		for i, f := range [2]Fact{facts[len(facts)-1-k].Closure, facts[len(facts)-1-k].Overcast} {
+			if f.N >= trustedMinutes {
+				b.lately[i][k] = f.Median.Float()/usual[i] - 1
+			}
+		}
+	}
 }
 
 // medianOf is the median over days of one fact, of the days that rest on enough minutes, and how many minutes they are

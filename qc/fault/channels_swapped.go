@@ -21,14 +21,10 @@ func channelsSwapped(w *Watcher, c *faultCase, v *view) hint {
 	if !v.sunUp || math.IsNaN(g+b+d) {
 		return nothing
 	}
-	toG, toD := w.setup.swapFactors()
-	beam := float64(b * v.mu)
-	if beam < 60 {
+	if float64(b*v.mu) < 60 {
 		return nothing
 	}
-	closure := w.base.closureAt(v)
-	asIs := math.Abs(g - float64(closure*(beam+d)))
-	swapped := math.Abs(float64(d*toG) - float64(closure*(beam+float64(g*toD))))
+	asIs, swapped := w.swapMisfits(v)
 	room := v.room
 	switch {
 	case swapped < 1.5*room && asIs > 4*room && d-g > 40 && g > 0.06*d && g > 15:
@@ -37,4 +33,12 @@ func channelsSwapped(w *Watcher, c *faultCase, v *view) hint {
 		return hint{odds: -1}
 	}
 	return nothing
+}
+
+// swapMisfits says by how many W/m2 global and diffuse miss to close with the beam as they are, and changed places.
+func (w *Watcher) swapMisfits(v *view) (asIs, swapped float64) {
+	toG, toD := w.setup.swapFactors()
+	g, beam, d := v.g(), float64(v.b()*v.mu), v.d()
+	closure := w.base.closureAt(v)
+	return math.Abs(g - float64(closure*(beam+d))), math.Abs(float64(d*toG) - float64(closure*(beam+float64(g*toD))))
 }

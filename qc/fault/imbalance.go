@@ -129,7 +129,7 @@ func (w *Watcher) watchImbalance(v *view) {
 	if math.IsNaN(g+b+d) || v.run[rules.Global] > 2 || v.run[rules.Diffuse] > 2 || v.run[rules.Direct] > 2 {
 		return // what stands still is clipped or frozen
 	}
-	if g > 60 && d < openCircuitWm2 {
+	if g > 60 && d < openCircuitWm2 || d > 60 && g < openCircuitWm2 {
 		return // an open input, not a gain
 	}
 	if b < 2 && g+d > 30 && d > 5 {
@@ -334,14 +334,27 @@ func (w *Watcher) imbalanceEpisode() int {
 	return -1
 }
 
+// plainerCause says whether a cause that single minutes show is gathering suspicion: it is given time.
+func (w *Watcher) plainerCause() bool {
+	for _, i := range w.byDay.cases[:w.byDay.n] {
+		if c := &catalogueOfCases[i]; restsOnClosing.Has(c.kind) && c.quantity != rules.LWDown && c.kind != rules.Noise && w.cases[i].Score > 1 {
+			return true
+		}
+	}
+	return false
+}
+
 // raiseImbalance raises the likeliest cause, once no other instrument is nearly as likely or the wait has been long.
 func (w *Watcher) raiseImbalance(v *view) {
 	im := &w.slow.Imbalance
+	if im.N < 240 && w.plainerCause() {
+		return
+	}
 	c := im.classify(w, v)
 	if c.lead < 3 && im.N < 240 && c.kind != rules.DomeSnow || math.Abs(im.Recent.Float()) > grossly && im.N < 120 && c.kind != rules.DomeSnow {
 		return
 	}
-	e := w.raise(Episode{Instrument: c.instrument, Kind: c.kind, Also: c.also, Severity: im.severity(c, v), From: w.hindsight(im.Since),
+	e := w.raise(Episode{Instrument: c.instrument, Kind: c.kind, Also: c.also, Severity: im.severity(c, v), From: w.hindsight(im.Since - c.before),
 		Raised: v.minute, Confidence: confidence(im.Score.Float() / 2), Evidence: c.evidence})
 	if e != nil {
 		w.slow.Episode = e.ID
@@ -363,6 +376,7 @@ func (w *Watcher) renameImbalance(open int, v *view) {
 	}
 	if e.Kind != c.kind || e.Instrument != c.instrument {
 		e.Kind, e.Instrument, e.Advice = c.kind, c.instrument, c.kind.Entry().Advice
+		e.From = min(e.From, w.hindsight(im.Since-c.before))
 		e.Rev++
 	}
 	if e.Severity == rules.Watch && im.severity(c, v) == rules.Act {
@@ -383,7 +397,11 @@ func (im *imbalance) severity(c cause, v *view) rules.Severity {
 	if c.model.K == 3 {
 		size = math.Sqrt(float64(a*a)+float64(b*b)) * leverAt60
 	}
-	if days := float64(v.minute-im.Since) / 1440; size < smallDeviation && days*float64(size*size) < smallDays*smallDeviation*smallDeviation {
+	days, needed := float64(v.minute-im.Since)/1440, float64(smallDays)
+	if c.kind != rules.DomeSoiled { // what has been seen to grow is no chance
+		needed *= smallDeviation * smallDeviation / float64(size*size)
+	}
+	if size < smallDeviation && days < needed {
 		return rules.Watch
 	}
 	return rules.Act

@@ -18,6 +18,7 @@ type cause struct {
 	misfit     float64 // chi squared with its prior: the less the likelier
 	lead       float64 // by which it is likelier than the next of another instrument
 	model      model
+	before     int64 // minutes by which it began before the imbalance did
 }
 
 // Scatter of what the fits are held against (own choice, from the robust scatter of measured months).
@@ -77,7 +78,11 @@ func (im *imbalance) classify(w *Watcher, v *view) cause {
 		}
 	}
 	best = im.weather(best, s, v)
-	if best.kind == rules.SensitivityWrong && im.grows() && best.loss() {
+	days, grew := im.grewBefore(w)
+	if best.kind == rules.SensitivityWrong && best.loss() && (grew || im.grows()) {
+		if grew {
+			best.before = int64(days-1) * 1440
+		}
 		best.kind, best.also = rules.DomeSoiled, []rules.FaultKind{rules.SensitivityDrift}
 	}
 	best.evidence = append(best.evidence, Evidence{"closure_off", roundTo(100*im.Recent.Float(), 10), "%"}, Evidence{"minutes", float64(im.N), "min"})
@@ -103,6 +108,9 @@ func (im *imbalance) weather(c cause, s *Setup, v *view) cause {
 		// the beam's own gain is no part of it
 		c.kind, c.also, c.instrument = rules.DomeSnow, []rules.FaultKind{rules.DomeWet}, s.Instruments[rules.Global].ID
 		c.lead = math.Inf(1)
+		if global && dewy {
+			c.kind = rules.DomeWet
+		}
 	case global && dewy:
 		c.kind, c.also = rules.DomeWet, []rules.FaultKind{rules.SensitivityWrong}
 	default:
@@ -145,6 +153,45 @@ const dewGapMost = 3
 func (im *imbalance) grows() bool {
 	return im.N > 150 && im.Last-im.Since > 20*60 && math.Abs(im.Recent.Float()) > float64(1.3*math.Abs(im.First.of()))+0.008
 }
+
+// grewBefore says whether the days before it began stood off in the same way, the less the longer ago: a loss that grew from nothing within a
+// week, against one that came at once. Both are held against the daily medians of closure, and of global over diffuse under thick cloud. It gives
+// for how many days it had grown.
+func (im *imbalance) grewBefore(w *Watcher) (days int, grew bool) {
+	size := im.First.of()
+	if im.First.N < 20 {
+		size = im.Dull.of()
+	}
+	ago := w.day - im.Since/1440 // how many days ago it began
+	atOnce, grown, n := 0.0, math.Inf(1), 0
+	for lasting := 1; lasting <= 6; lasting++ {
+		misfit := 0.0
+		atOnce, n = 0, 0
+		for k := 1; k <= 6; k++ { // days before it began
+			i := int(ago) + k - 1
+			if i >= latelyDays {
+				break
+			}
+			want := max(0, size*float64(lasting-k)/float64(lasting))
+			for _, series := range w.base.lately {
+				if y := series[i]; !math.IsNaN(y) {
+					misfit += float64((y - want) * (y - want))
+					atOnce += float64(y * y)
+					n++
+				}
+			}
+		}
+		if misfit < grown {
+			grown, days = misfit, lasting
+		}
+	}
+	return days, n >= 2 && (atOnce-grown)/(2*dailyScatter*dailyScatter) > grewOdds
+}
+
+const (
+	dailyScatter = 0.008 // of a day's median closure (own choice, from measured months: 0.1 to 1.3 %)
+	grewOdds     = 1.5
+)
 
 // absurd is the penalty of a gain that no slip of a coefficient gives: half and one and a half are far enough.
 func absurd(gain float64) float64 {

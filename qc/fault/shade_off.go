@@ -17,6 +17,9 @@ func shadeOff(w *Watcher, c *faultCase, v *view) hint {
 	if beam < 100 {
 		return nothing
 	}
+	if asIs, swapped := w.swapMisfits(v); swapped < 1.5*v.room && asIs > 4*v.room {
+		return nothing // changed places they close
+	}
 	want := v.expected[rules.Diffuse]
 	excess := d - want
 	room := v.room
