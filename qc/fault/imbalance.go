@@ -133,6 +133,9 @@ func (w *Watcher) watchImbalance(v *view) {
 		return // an open input, not a gain
 	}
 	if b < 2 && g+d > 30 && d > 5 {
+		if g > 1.3*d && g > 0.5*v.clear[rules.Global] {
+			return // the sun is out, and it is the beam that is lost
+		}
 		w.dullStep(v, g/d/w.base.overcast-1)
 		return
 	}
@@ -290,7 +293,7 @@ func (w *Watcher) imbalanceScore(v *view, odds float64) {
 			w.finish(open, im.Last+1)
 		}
 		*im = imbalance{}
-	case open < 0 && im.Score >= imbalanceRaise && odds > 0:
+	case open < 0 && odds > 0 && (im.Score >= imbalanceRaise || im.Score >= imbalanceRaise-dewPrior && im.dewy(v)):
 		w.raiseImbalance(v)
 	case open >= 0 && im.N%30 == 0 && odds > 0:
 		w.renameImbalance(open, v)
@@ -351,7 +354,10 @@ func (w *Watcher) raiseImbalance(v *view) {
 		return
 	}
 	c := im.classify(w, v)
-	if c.lead < 3 && im.N < 240 && c.kind != rules.DomeSnow || math.Abs(im.Recent.Float()) > grossly && im.N < 120 && c.kind != rules.DomeSnow {
+	if im.Score < imbalanceRaise && c.kind != rules.DomeWet {
+		return
+	}
+	if sure := math.IsInf(c.lead, 1); !sure && (c.lead < 3 && im.N < 240 || math.Abs(im.Recent.Float()) > grossly && im.N < 120) {
 		return
 	}
 	e := w.raise(Episode{Instrument: c.instrument, Kind: c.kind, Also: c.also, Severity: im.severity(c, v), From: w.hindsight(im.Since - c.before),

@@ -99,8 +99,7 @@ func (im *imbalance) weather(c cause, s *Setup, v *view) cause {
 		}
 	}
 	global, beam := c.instrument == s.Instruments[rules.Global].ID, c.model.K == 1
-	size, lasted := math.Abs(im.Recent.Float()), v.minute-im.Since
-	dewy := im.Since-im.Rise < 4*60 && lasted < 5*60 && im.DewGap <= dewGapMost && size > 0.09
+	lasted, dewy := v.minute-im.Since, im.dewy(v)
 	switch {
 	case beam && c.loss() && dewy:
 		c.kind, c.also = rules.DomeWet, []rules.FaultKind{rules.SensitivityWrong}
@@ -120,6 +119,11 @@ func (im *imbalance) weather(c cause, s *Setup, v *view) cause {
 		c.also = []rules.FaultKind{rules.DomeSnow}
 	}
 	return c
+}
+
+// dewy says whether it is the hour for dew or frost, and the imbalance large enough for it.
+func (im *imbalance) dewy(v *view) bool {
+	return im.Since-im.Rise < 4*60 && v.minute-im.Since < 5*60 && im.DewGap <= dewGapMost && math.Abs(im.Recent.Float()) > 0.09
 }
 
 // snowLies says whether the imbalance is one that snow on the domes gives: global reads far too little, or diffuse does, or what would have to be
@@ -148,6 +152,10 @@ const (
 // dewGapMost is how far above its dew point the air may be for a dome that looks at a clear night sky to be wet, K (own choice: by so much does
 // an unventilated one cool below the air).
 const dewGapMost = 3
+
+// dewPrior is by how many log odds dew in its hour is likelier beforehand than a slip of a coefficient in any (own choice: about
+// sevenfold).
+const dewPrior = 2
 
 // grows says whether a loss has grown since it began, as dirt does and a coefficient does not.
 func (im *imbalance) grows() bool {
