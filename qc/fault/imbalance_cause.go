@@ -106,7 +106,9 @@ func (im *imbalance) weather(c cause, s *Setup, v *view) cause {
 	case im.Coldest < snowAirC && lasted < 48*60 && im.snowLies(&c):
 		// the beam's own gain is no part of it
 		c.kind, c.also, c.instrument = rules.DomeSnow, []rules.FaultKind{rules.DomeWet}, s.Instruments[rules.Global].ID
-		c.lead = math.Inf(1)
+		if im.Recent < 0 || !dewy {
+			c.lead = math.Inf(1) // the other way a frosted window of the pyrheliometer looks the same
+		}
 		if global && dewy {
 			c.kind = rules.DomeWet
 		}
@@ -153,9 +155,9 @@ const (
 // an unventilated one cool below the air).
 const dewGapMost = 3
 
-// dewPrior is by how many log odds dew in its hour is likelier beforehand than a slip of a coefficient in any (own choice: about
-// sevenfold).
-const dewPrior = 2
+// dewPrior is by how many log odds dew in its hour is likelier beforehand than a slip of a coefficient in any (own choice: some
+// threefold).
+const dewPrior = 1
 
 // grows says whether a loss has grown since it began, as dirt does and a coefficient does not.
 func (im *imbalance) grows() bool {
