@@ -95,7 +95,7 @@ func (w *Watcher) becomesFouled(open int, v *view) bool {
 	if e.Instrument != w.setup.Instruments[rules.Global].ID || !named.Has(e.Kind) {
 		return false
 	}
-	if im.Since-im.Rise < fouledMorning && im.Humid >= 80 {
+	if im.Since-im.Rise < fouledMorning && im.DewGap <= dewGapMost {
 		return false // dew that dries fades as a spot does
 	}
 	dir := 1
