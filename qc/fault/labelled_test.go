@@ -329,11 +329,7 @@ var floors = [rules.FaultKindCount]floor{
 	rules.ShadeOff:          {8, 8, 8, 4, 0},
 	rules.DomeWet:           {7, 7, 7, 0, 0},
 	rules.DomeSnow:          {3, 2, 1, 0, 0},
-<<<<<<< HEAD
 	rules.DomeSoiled:        {4, 3, 3, 2, 1},
-=======
-	rules.DomeSoiled:        {4, 3, 3, 2, 1},
->>>>>>> 1485d72 (Diagnosis: a frosted pyrheliometer is not told as frost on the dome; floors of the synthetic trials as they now are: soiled dome up, a swap down by one name)
 	rules.DomeFouled:        {4, 3, 3, 3, 1},
 	rules.SensorTilted:      {8, 7, 6.5, 5, 0},
 	rules.SensitivityWrong:  {12, 11, 8, 2, 0},
