@@ -75,6 +75,9 @@ func (st *Station) canonical() string {
 		c.line("instrument", in.ID, in.Measures.String(), in.Class, in.Primary, in.Shaded)
 		p := &in.Input
 		c.line("input", p.Signal, p.SignalUnit, p.Irradiance, p.Case, p.CaseUnit, p.Dome, p.DomeUnit, p.SignalMin, p.SignalMax)
+		if p.Thermistor[0] != 0 {
+			c.line("thermistor", p.Thermistor[0], p.Thermistor[1], p.Thermistor[2])
+		}
 		for _, f := range in.ShadeRing {
 			c.line("shade_ring", f)
 		}

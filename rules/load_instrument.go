@@ -42,6 +42,28 @@ func (r *reader) instrument(v *value, station string, use channelUse) Instrument
 	return in
 }
 
+// Bounds of a thermistor's coefficients: parts of 100 ohm to 1 megohm at 25 degrees C lie well within them (own choice).
+var thermistorBounds = [3][2]float64{{1e-5, 5e-3}, {5e-5, 1e-3}, {1e-9, 1e-5}}
+
+// thermistor reads the curve of body temperatures that come in ohms.
+func (r *reader) thermistor(v *value, path string, in *Input) {
+	const example = "write the three coefficients of its certificate, such as thermistor: [1.0295e-3, 2.391e-4, 1.568e-7]"
+	wanted := in.CaseUnit == "ohm_curve" || in.DomeUnit == "ohm_curve"
+	switch {
+	case wanted && !v.given("thermistor"):
+		r.problem(v.node, example, "%s has a temperature in ohm_curve and no thermistor", path)
+	case !wanted && v.given("thermistor"):
+		r.problem(v.at("thermistor").node, "write case_unit: ohm_curve, or leave it out", "%s has a thermistor's curve and no temperature in ohm_curve", path)
+	case wanted:
+		for i, x := range v.at("thermistor").numbers {
+			if b := thermistorBounds[i]; x < b[0] || x > b[1] {
+				r.problem(v.at("thermistor").node, example, "%s thermistor: %c is %g: no thermistor has less than %g or more than %g", path, 'A'+i, x, b[0], b[1])
+			}
+			in.Thermistor[i] = x
+		}
+	}
+}
+
 func (r *reader) input(v *value, q Quantity, path string) Input {
 	in := Input{Signal: v.textAt("signal", ""), Irradiance: v.textAt("irradiance", ""), SignalMin: math.NaN(), SignalMax: math.NaN(),
 		Case: v.textAt("case", ""), Dome: v.textAt("dome", "")}
@@ -66,6 +88,7 @@ func (r *reader) input(v *value, q Quantity, path string) Input {
 			r.problem(v.at("dome").node, "add case: and its channel", "%s has a dome temperature but no case temperature", path)
 		}
 	}
+	r.thermistor(v, path, &in)
 	if q.Longwave() && v.at("signal") != nil && v.at("case") == nil && v.at("dome") == nil {
 		r.problem(v.at("signal").node, "add case: and its channel", "%s is a pyrgeometer with a signal but no case temperature: the flux cannot be worked out", path)
 	}

@@ -6,9 +6,8 @@ import (
 	"strings"
 
 	"cel.dev/cel-go/cel"
-	"cel.dev/cel-go/checker"
+	"cel.dev/cel-go/common/cost"
 	"cel.dev/cel-go/common/types"
-	"cel.dev/cel-go/common/types/ref"
 	"cel.dev/cel-go/ext"
 )
 
@@ -180,8 +179,8 @@ func appendOnce(list []int, i int) []int {
 // noSizes says nothing of the sizes of values: all of them are numbers.
 type noSizes struct{}
 
-func (noSizes) EstimateSize(checker.AstNode) *checker.SizeEstimate { return nil }
-func (noSizes) EstimateCallCost(string, string, *checker.AstNode, []checker.AstNode) *checker.CallEstimate {
+func (noSizes) EstimateSize(cost.AstNode) *cost.SizeEstimate { return nil }
+func (noSizes) EstimateCallCost(string, string, *cost.AstNode, []cost.AstNode) *cost.CallEstimate {
 	return nil
 }
 
@@ -202,7 +201,7 @@ func (c *celCheck) Outcome(values []float64) Outcome {
 	if err != nil {
 		return RuleBroken
 	}
-	if out.(ref.Val) == types.True {
+	if out == types.True {
 		return Miss
 	}
 	return Pass

@@ -164,7 +164,7 @@ func weatherField(key string, units ...string) field {
 	}}
 }
 
-var temperatureUnits = []string{"degC", "K", "ohm_10k", "ohm_pt100"}
+var temperatureUnits = []string{"degC", "K", "ohm_10k", "ohm_curve", "ohm_pt100"}
 
 var instrumentField = field{kind: objectKind, doc: "One instrument, or the place of one: an exchange is a new serial in its calibrations.", fields: []field{
 	{key: "id", kind: nameKind, required: true, form: instrumentForm, doc: "Short name within the station."},
@@ -178,9 +178,10 @@ var instrumentField = field{kind: objectKind, doc: "One instrument, or the place
 		{key: "irradiance", kind: nameKind, form: channelForm, doc: "Channel that already holds the quantity in its own unit."},
 		{key: "unit", kind: choiceKind, choices: []string{"mV", "uV", "V", "W/m2", "umol/(m2 s)"}, doc: "Unit of the signal."},
 		{key: "case", kind: nameKind, form: channelForm, doc: "Channel of a pyrgeometer's body temperature."},
-		{key: "case_unit", kind: choiceKind, choices: temperatureUnits, fallback: "degC", doc: "Unit of it; ohm_10k is a thermistor of 10 kilohm at 25 degrees C, ohm_pt100 a platinum one (IEC 60751)."},
+		{key: "case_unit", kind: choiceKind, choices: temperatureUnits, fallback: "degC", doc: "Unit of it; ohm_10k is a thermistor of 10 kilohm at 25 degrees C, ohm_curve one with the coefficients of thermistor, ohm_pt100 a platinum one (IEC 60751)."},
 		{key: "dome", kind: nameKind, form: channelForm, doc: "Channel of a pyrgeometer's dome temperature."},
 		{key: "dome_unit", kind: choiceKind, choices: temperatureUnits, fallback: "degC", doc: "Unit of it."},
+		{key: "thermistor", kind: numbersKind, least: 3, most: 3, low: 0, high: 0.01, doc: "Coefficients A, B, C of Steinhart and Hart, 1/T = A + B ln R + C (ln R)^3 with T in kelvin and R in ohm, of temperatures in ohm_curve."},
 		{key: "range", kind: numbersKind, least: 2, most: 2, low: -1e7, high: 1e7, doc: "Least and largest value the logger can give, in the unit of the signal."},
 	}},
 	{key: "shade_ring", kind: numbersKind, least: 1, most: 12, low: 1, high: 1.5, doc: "Factor that a diffuse under a shade ring is multiplied by: one, or twelve from January on."},

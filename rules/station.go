@@ -127,14 +127,15 @@ func (st *Station) TakesOffset(in *Instrument) bool {
 
 // An Input says which channels an instrument reads and in which unit.
 type Input struct {
-	Signal     string  // channel of the thermopile's voltage; empty if Irradiance is given
-	SignalUnit string  // "mV", "uV" or "V"
-	Irradiance string  // channel that already holds the quantity's own unit; empty if Signal is given
-	Case       string  // channel of the body temperature of a pyrgeometer
-	CaseUnit   string  // "degC" (default), "K", "ohm_10k" (thermistor) or "ohm_pt100"
-	Dome       string  // channel of the dome temperature; empty if the dome is coupled or not measured
-	DomeUnit   string  // as CaseUnit
-	SignalMin  float64 // the logger's range in the signal's unit; NaN if not stated
+	Signal     string     // channel of the thermopile's voltage; empty if Irradiance is given
+	SignalUnit string     // "mV", "uV" or "V"
+	Irradiance string     // channel that already holds the quantity's own unit; empty if Signal is given
+	Case       string     // channel of the body temperature of a pyrgeometer
+	CaseUnit   string     // "degC" (default), "K", "ohm_10k" (thermistor), "ohm_curve" (by Thermistor) or "ohm_pt100"
+	Dome       string     // channel of the dome temperature; empty if the dome is coupled or not measured
+	DomeUnit   string     // as CaseUnit
+	Thermistor [3]float64 // A, B, C of Steinhart and Hart 1968, for temperatures in ohm_curve; all 0 where not given
+	SignalMin  float64    // the logger's range in the signal's unit; NaN if not stated
 	SignalMax  float64
 }
 

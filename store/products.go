@@ -46,7 +46,7 @@ func productColumns(tableName string) []table.Column {
 // productSpans cuts a product's rows into what has a digest each: days of minutes and hours, months of days, years of months.
 func productSpans(tableName string, t *table.Table) []monthDay {
 	days := daysOf(t)
-	label := func(day int64) string { return "" }
+	var label func(day int64) string
 	switch tableName {
 	case TableCleanDay:
 		label = monthOf

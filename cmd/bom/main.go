@@ -15,7 +15,6 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
-	"runtime"
 	"runtime/debug"
 	"slices"
 	"strings"
@@ -88,7 +87,11 @@ func run(binary, version, licences string) error {
 	b.Metadata.Component = component{Type: "application", Ref: info.Main.Path, Name: info.Main.Path, Version: version, Licences: licenceOf("Apache-2.0"),
 		Hashes: []hash{{"SHA-256", hex.EncodeToString(sum[:])}}}
 	var texts bytes.Buffer
-	goText, err := os.ReadFile(filepath.Join(runtime.GOROOT(), "LICENSE"))
+	root, err := exec.Command("go", "env", "GOROOT").Output()
+	if err != nil {
+		return fmt.Errorf("go env GOROOT: %w", err)
+	}
+	goText, err := os.ReadFile(filepath.Join(strings.TrimSpace(string(root)), "LICENSE"))
 	if err != nil {
 		return fmt.Errorf("licence of the standard library: %w", err)
 	}

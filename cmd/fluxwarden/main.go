@@ -50,6 +50,7 @@ func commands() []command {
 		{"feed", "bring a logger's files to a daemon elsewhere", cmdFeed},
 		{"simulate", "write a synthetic station's readings with labelled faults", cmdSimulate},
 		{"look", "pages over an archive in a browser: network, days, faults, residuals", cmdLook},
+		{"people", "who may sign in to the console", cmdPeople},
 		{"report", "a station's month as one page to print or send", cmdReport},
 		{"health", "ask a running daemon how it is", cmdHealth},
 		{"version", "print the version", func([]string) int { fmt.Println("fluxwarden", version); return exitOK }},

@@ -102,7 +102,7 @@ func (s *seriesPlan) warmed(out *Series, block *minute.Block, cal *rules.Calibra
 	for r := from; r < to; r++ {
 		t := air[r]
 		if s.bodyCol >= 0 {
-			t = temperatureC(block.Columns[s.bodyCol].Mean[r], s.instrument.Input.CaseUnit)
+			t = temperatureC(block.Columns[s.bodyCol].Mean[r], s.instrument.Input.CaseUnit, &s.instrument.Input)
 		}
 		sens := cal.SensitivityUVPerW
 		if f := response.FactorAt(t); !math.IsNaN(f) {
@@ -175,13 +175,13 @@ func (s *seriesPlan) bodies(out *Series, block *minute.Block, from, to int) {
 	if s.bodyCol >= 0 {
 		body := block.Columns[s.bodyCol].Mean
 		for r := from; r < to; r++ {
-			out.bodyC[r] = temperatureC(body[r], s.instrument.Input.CaseUnit)
+			out.bodyC[r] = temperatureC(body[r], s.instrument.Input.CaseUnit, &s.instrument.Input)
 		}
 	}
 	if s.domeCol >= 0 {
 		dome := block.Columns[s.domeCol].Mean
 		for r := from; r < to; r++ {
-			out.domeC[r] = temperatureC(dome[r], s.instrument.Input.DomeUnit)
+			out.domeC[r] = temperatureC(dome[r], s.instrument.Input.DomeUnit, &s.instrument.Input)
 		}
 	}
 }
@@ -222,7 +222,7 @@ func (s *seriesPlan) pyrgeometer(out *Series, col *minute.Column, cal *rules.Cal
 }
 
 // temperatureC is a body temperature in degrees C from the unit of its channel; NaN where the channel cannot mean one.
-func temperatureC(v float64, unit string) float64 {
+func temperatureC(v float64, unit string, in *rules.Input) float64 {
 	if math.IsNaN(v) || limit.IsMark(v) {
 		return math.NaN()
 	}
@@ -231,6 +231,9 @@ func temperatureC(v float64, unit string) float64 {
 		return v - sensor.ZeroCelsiusK
 	case "ohm_10k":
 		return sensor.Thermistor10k.TemperatureK(v) - sensor.ZeroCelsiusK
+	case "ohm_curve":
+		curve := sensor.SteinhartHart{A: in.Thermistor[0], B: in.Thermistor[1], C: in.Thermistor[2]}
+		return curve.TemperatureK(v) - sensor.ZeroCelsiusK
 	case "ohm_pt100":
 		return sensor.PlatinumC(v, 100)
 	default:

@@ -86,7 +86,11 @@ func TestPyrgeometerDays(t *testing.T) {
 		{"2019-01-01", 0.25537, 1.0079, 2.77, 0.1, "lw_up", "lw_up_net", "lw_up_case_k", "lw_up_dome_k"},
 		{"2019-07-05", 0.25065, 1.0034, 3.50, 0.3, "lw_down", "lw_down_net", "lw_down_case_k", "lw_down_dome_k"},
 	} {
-		for _, unit := range []string{"K", "ohm_10k", "ohm_pt100"} {
+		for _, unit := range []string{"K", "ohm_10k", "ohm_curve", "ohm_pt100"} {
+			curve := ""
+			if unit == "ohm_curve" { // that of ohm_10k, given by its coefficients
+				curve = ", thermistor: [1.0295e-3, 2.391e-4, 1.568e-7]"
+			}
 			t.Run(fmt.Sprintf("%s %s %s", c.date, c.flux, unit), func(t *testing.T) {
 				at, columns := readTable(t, "pyrgeometer/plains_"+c.date+".csv.gz", time.RFC3339)
 				text := fmt.Sprintf(networkText+`
@@ -97,8 +101,8 @@ func TestPyrgeometerDays(t *testing.T) {
     elevation: 318
     time: {label: start, interval: 60s}
     instruments:
-      - {id: L1, measures: %s, input: {signal: u, unit: uV, case: case, case_unit: %s, dome: dome, dome_unit: %s}, calibrations: [{from: 2019-01-01, sensitivity: %.9f, unit: uV/(W/m2), k1: 0, k2: %v, k3: %v}]}
-`, c.flux, unit, unit, 1/c.k1, c.k2, c.k3)
+      - {id: L1, measures: %s, input: {signal: u, unit: uV, case: case, case_unit: %s, dome: dome, dome_unit: %s%s}, calibrations: [{from: 2019-01-01, sensitivity: %.9f, unit: uV/(W/m2), k1: 0, k2: %v, k3: %v}]}
+`, c.flux, unit, unit, curve, 1/c.k1, c.k2, c.k3)
 				p := planOf(t, text)
 				in := map[string][]float64{"u": nil, "case": nil, "dome": nil}
 				for r := range at {
@@ -133,7 +137,7 @@ func TestPyrgeometerDays(t *testing.T) {
 // asSent is a temperature as a logger sends it in the unit.
 func asSent(kelvin float64, unit string) float64 {
 	switch unit {
-	case "ohm_10k":
+	case "ohm_10k", "ohm_curve":
 		return sensor.Thermistor10k.ResistanceOhm(kelvin)
 	case "ohm_pt100":
 		return sensor.PlatinumOhm(kelvin-273.15, 100)

@@ -147,19 +147,22 @@ func (s *Station) appendInstrument(values []minute.ChannelValue, i int, v *sense
 		if t.channel == "" {
 			continue
 		}
-		if x := inBodyUnit(t.celsius, t.unit); !math.IsNaN(x) {
+		if x := inBodyUnit(t.celsius, t.unit, in); !math.IsNaN(x) {
 			values = append(values, minute.ChannelValue{Channel: t.channel, Value: minute.Single(x)})
 		}
 	}
 	return values
 }
 
-func inBodyUnit(celsius float64, unit string) float64 {
+func inBodyUnit(celsius float64, unit string, in *rules.Input) float64 {
 	switch unit {
 	case "K":
 		return resolved(celsius+sensor.ZeroCelsiusK, 1000)
 	case "ohm_10k":
 		return resolved(sensor.Thermistor10k.ResistanceOhm(celsius+sensor.ZeroCelsiusK), 10)
+	case "ohm_curve":
+		curve := sensor.SteinhartHart{A: in.Thermistor[0], B: in.Thermistor[1], C: in.Thermistor[2]}
+		return resolved(curve.ResistanceOhm(celsius+sensor.ZeroCelsiusK), 10)
 	case "ohm_pt100":
 		return resolved(sensor.PlatinumOhm(celsius, 100), 10000)
 	}
