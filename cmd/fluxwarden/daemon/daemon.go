@@ -378,6 +378,7 @@ func (d *Daemon) watchDisk(ctx context.Context) {
 	for {
 		d.lookAtClock()
 		d.lookAtDisk()
+		d.lookAtNotes()
 		d.tellManager()
 		select {
 		case <-ctx.Done():
