@@ -1,13 +1,11 @@
 package console
 
 import (
-	"io"
 	"slices"
 
 	"fluxwarden/qc/fault"
 	"fluxwarden/rules"
 	"fluxwarden/store"
-	"fluxwarden/store/export"
 )
 
 // A library reads an archive that may be opened anew between two reads. Of a station that the archive does not know it has nothing.
@@ -54,11 +52,6 @@ func (l library) days(station string) (days []int64, err error) {
 func (l library) revisions(station string, day int64) (list []store.Revision, err error) {
 	err = l.of(station, func(a *store.Archive) (err error) { list, err = a.Revisions(station, day); return err })
 	return list, err
-}
-
-func (l library) csv(w io.Writer, r export.Request) (rows int, err error) {
-	err = l.of(r.Station, func(a *store.Archive) (err error) { rows, err = export.CSV(w, a, r); return err })
-	return rows, err
 }
 
 func (l library) notes(station string) (list []rules.Note, err error) {

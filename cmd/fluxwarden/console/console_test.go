@@ -138,6 +138,7 @@ func TestBadInput(t *testing.T) {
 		{"/nowhere", 404, "network page"},
 		{"/api/v1/station/northmoor/day/2031-01-01", 404, `"mend"`},
 		{"/station/northmoor/day/2031-01-01/minutes.csv", 404, "Its days go"},
+		{"/station/northmoor/day/2026-06-30/minutes.xls", 404, "minutes.nc"},
 	} {
 		w := ask(t, h, x.path)
 		if w.Code != x.code || !strings.Contains(w.Body.String(), x.word) {
@@ -182,6 +183,17 @@ func TestDayJSON(t *testing.T) {
 	}
 	if compared != minute.PerDay {
 		t.Errorf("%d minutes compared", compared)
+	}
+}
+
+// A day is given as export gives it, in each form.
+func TestDayFiles(t *testing.T) {
+	h := keptConsole(t).Handler()
+	for name, begins := range map[string]string{"minutes.csv": "time,global", "minutes.nc": "CDF", "minutes.parquet": "PAR1"} {
+		w := ask(t, h, "/station/northmoor/day/2026-06-30/"+name)
+		if w.Code != 200 || !strings.HasPrefix(w.Body.String(), begins) || !strings.Contains(w.Header().Get("Content-Disposition"), "northmoor_2026-06-30_"+name) {
+			t.Errorf("%s: %d, %d bytes, %v", name, w.Code, w.Body.Len(), w.Header())
+		}
 	}
 }
 

@@ -121,7 +121,7 @@ func (c *Console) dayPage(w http.ResponseWriter, r *http.Request) error {
 		return err
 	}
 	view := dayView{frame: c.frame(r, st.Name+" "+dayName(day), stationLink(st.ID), link{Text: dayName(day), Here: true}), Station: st, Day: dayName(day), Minutes: s.rows,
-		Before: dayLink(st.ID, day-1), After: dayLink(st.ID, day+1), Whole: dayLink(st.ID, day), Export: dayLink(st.ID, day) + "/minutes.csv",
+		Before: dayLink(st.ID, day-1), After: dayLink(st.ID, day+1), Whole: dayLink(st.ID, day), Export: dayLink(st.ID, day) + "/minutes",
 		Year: fmt.Sprintf("/station/%s/year/%s", url.PathEscape(st.ID), dayName(day)[:4]), API: "/api/v1" + dayLink(st.ID, day)}
 	sky := solarDayOf(st, day)
 	view.Sun = sky.words

@@ -3,11 +3,13 @@ package console
 import (
 	"encoding/json"
 	"fmt"
+	"io"
 	"math"
 	"net/http"
 
 	"fluxwarden/qc/minute"
 	"fluxwarden/rules"
+	"fluxwarden/store"
 	"fluxwarden/store/export"
 )
 
@@ -71,8 +73,18 @@ func writeJSON(w http.ResponseWriter, v any) {
 	_ = json.NewEncoder(w).Encode(v) // into memory: it cannot fail for what we give it
 }
 
-// dayCSV gives the day's minutes as `export` does.
-func (c *Console) dayCSV(w http.ResponseWriter, r *http.Request) error {
+// dayFiles are the forms in which a day is given, as `export` writes them.
+var dayFiles = map[string]struct {
+	kind  string
+	write func(io.Writer, *store.Archive, export.Request) (int, error)
+}{
+	"minutes.csv":     {"text/csv; charset=utf-8", export.CSV},
+	"minutes.nc":      {"application/x-netcdf", export.NetCDF},
+	"minutes.parquet": {"application/vnd.apache.parquet", export.Parquet},
+}
+
+// dayFile gives the day's minutes as a file.
+func (c *Console) dayFile(w http.ResponseWriter, r *http.Request) error {
 	st, err := c.station(r)
 	if err != nil {
 		return err
@@ -81,6 +93,10 @@ func (c *Console) dayCSV(w http.ResponseWriter, r *http.Request) error {
 	if err != nil {
 		return err
 	}
+	form, ok := dayFiles[r.PathValue("file")]
+	if !ok {
+		return notFound(fmt.Sprintf("a day is not given as %s", r.PathValue("file")), "There are minutes.csv, minutes.nc and minutes.parquet.")
+	}
 	s, err := readSpan(c.archive, st.ID, day*minute.PerDay, (day+1)*minute.PerDay, []string{"time"})
 	if err != nil {
 		return err
@@ -88,8 +104,8 @@ func (c *Console) dayCSV(w http.ResponseWriter, r *http.Request) error {
 	if s.rows == 0 {
 		return c.noSuchDay(st, day)
 	}
-	w.Header().Set("Content-Type", "text/csv; charset=utf-8")
-	w.Header().Set("Content-Disposition", fmt.Sprintf("attachment; filename=\"%s_%s.csv\"", st.ID, dayName(day)))
-	_, err = c.archive.csv(w, export.Request{Station: st.ID, From: day * minute.PerDay, To: (day + 1) * minute.PerDay})
-	return err
+	w.Header().Set("Content-Type", form.kind)
+	w.Header().Set("Content-Disposition", fmt.Sprintf("attachment; filename=\"%s_%s_%s\"", st.ID, dayName(day), r.PathValue("file")))
+	request := export.Request{Station: st.ID, Product: "minutes", From: day * minute.PerDay, To: (day + 1) * minute.PerDay}
+	return c.archive.of(st.ID, func(a *store.Archive) error { _, err := form.write(w, a, request); return err })
 }

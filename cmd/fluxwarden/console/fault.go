@@ -19,13 +19,18 @@ type faultView struct {
 	Entry                        *rules.CatalogueEntry
 	Head, From, To, Raised, Sure string
 	Evidence                     []evidenceLine
-	Also, Neighbours             []string
+	Also                         []string
+	Neighbours                   []neighbour
+	Take                         string
 	Figure                       template.HTML
 	Residual, Day, More          string
 	Others                       []episodeLine
 	Said                         []string
 	SayTo                        string
 }
+
+// A neighbour is a kind that this one is confused with, and what tells them apart.
+type neighbour struct{ Title, Told string }
 
 type evidenceLine struct{ Name, Value string }
 
@@ -57,8 +62,10 @@ func (c *Console) faultPage(w http.ResponseWriter, r *http.Request) error {
 	for _, a := range e.Also {
 		v.Also = append(v.Also, a.Entry().Title)
 	}
-	for _, n := range v.Entry.ConfusedWith {
-		v.Neighbours = append(v.Neighbours, n.Entry().Title)
+	page := rules.PageOf(e.Kind)
+	v.Take = page.Take
+	for i, n := range v.Entry.ConfusedWith {
+		v.Neighbours = append(v.Neighbours, neighbour{n.Entry().Title, page.Told[i]})
 	}
 	if v.Figure, v.More, err = c.tellingFigure(st, e); err != nil {
 		return err
