@@ -68,10 +68,15 @@ func (g *Gate) Start() error {
 	if err := sub.SetPendingLimits(unseenMessagesMax, unseenBytesMax); err != nil {
 		return fmt.Errorf("gate: subscribe to %s*: %w", SubjectPrefix, err)
 	}
+	// Once Start is over the broker knows of the gate. Away, it hears of it when it is back, so that not being heard here is no error.
+	_ = g.broker.Conn.FlushTimeout(subscribeWait)
 	g.sub = sub
 	go g.run()
 	return nil
 }
+
+// subscribeWait is how long Start waits for the broker to know of the gate.
+const subscribeWait = 5 * time.Second
 
 // message is called for one request after another.
 func (g *Gate) message(m *nats.Msg) {
