@@ -132,7 +132,7 @@ func TestEveryFieldIsDecided(t *testing.T) {
 		of   any
 		want int
 	}{
-		"Station": {Station{}, 18}, "Products": {Products{}, 1}, "Timing": {Timing{}, 2}, "Instrument": {Instrument{}, 16}, "Input": {Input{}, 9}, "Calibration": {Calibration{}, 13},
+		"Station": {Station{}, 18}, "Products": {Products{}, 1}, "Timing": {Timing{}, 2}, "Instrument": {Instrument{}, 16}, "Input": {Input{}, 10}, "Calibration": {Calibration{}, 13},
 		"WeatherInput": {WeatherInput{}, 3}, "HousekeepingInput": {HousekeepingInput{}, 8}, "Sky": {Sky{}, 7}, "SkyMonths": {SkyMonths{}, 4}, "SkyChannels": {SkyChannels{}, 4},
 	} {
 		if got := reflect.TypeOf(c.of).NumField(); got != c.want {
