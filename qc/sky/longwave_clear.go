@@ -18,14 +18,14 @@ var (
 const saturationLowC = -45
 
 // LongwaveClear is LongwavePrata for air temperature in degrees C (-45..60) and relative humidity in per cent over water (0..105), fast
-// enough for every minute; outside, NaN.
+// enough for every minute; outside, and for more than 100 hPa of vapour, NaN.
 func LongwaveClear(airC, humidityPct float64) float64 {
 	if !(humidityPct >= 0 && humidityPct <= 105) {
 		return math.NaN()
 	}
 	airK := airC + sensor.ZeroCelsiusK
 	vapour := float64(humidityPct/100) * saturationCurve.At(airC)
-	if !(vapour >= 1e-3) {
+	if !(vapour >= 1e-3 && vapour <= 100) { // as in longwaveValid
 		return math.NaN()
 	}
 	w := float64(46.5*vapour) / airK
