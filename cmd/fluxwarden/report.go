@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"fluxwarden/cmd/fluxwarden/console"
+	"fluxwarden/ingest/broker"
 	"fluxwarden/rules"
 	"fluxwarden/store"
 	"fluxwarden/store/vfs"
@@ -57,14 +58,9 @@ func siteOf(a *store.Archive, path string) (*rules.Site, error) {
 	if path != "" {
 		return rules.Load(path)
 	}
-	list, err := a.Schedule()
-	if err != nil || len(list) == 0 {
-		return &rules.Site{}, err
+	stations := a.Stations()
+	if len(stations) == 0 {
+		return &rules.Site{}, nil
 	}
-	digest := list[len(list)-1].Digest
-	text, err := a.Rules(digest)
-	if err != nil {
-		return nil, err
-	}
-	return rules.Parse("rules/"+digest+".yaml of the archive", text)
+	return newestRules(a, broker.PartitionOf(stations[0]))
 }
