@@ -147,6 +147,9 @@ func held(before, now []Episode, minute int64) error {
 			}
 			continue
 		}
+		if o := &before[k]; o.To != Open && e.To == Open && reopened(o, e, minute) {
+			continue
+		}
 		if o := &before[k]; e.Rev < o.Rev || o.To != Open && (e.To != o.To || e.Rev != o.Rev && !toldHowItEnded(o, e)) {
 			return fmt.Errorf("%+v became %+v", *o, *e)
 		}
@@ -157,6 +160,11 @@ func held(before, now []Episode, minute int64) error {
 		}
 	}
 	return nil
+}
+
+// reopened says whether an end was taken back as it may be: soon after, of a kind that can seem to be over, and said by a new revision.
+func reopened(was, is *Episode, minute int64) bool {
+	return restsOnClosing.Has(is.Kind) && is.Kind != rules.SignalLost && is.Rev > was.Rev && is.From <= was.From && minute-was.To < reopenMinutes
 }
 
 // toldHowItEnded says whether all that is new of an episode that is over is what became of its end, which is told once.

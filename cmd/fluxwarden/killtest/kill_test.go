@@ -142,8 +142,9 @@ type sender struct {
 	again   int
 }
 
+// It ends an hour before the present: minutes to come are kept, and judged when they have come.
 func (s *sender) run(ctx context.Context, rng *rand.Rand, at time.Time) {
-	for ctx.Err() == nil {
+	for end := time.Now().Add(-time.Hour); ctx.Err() == nil && at.Before(end); {
 		var readings []minute.Reading
 		for range 1 + rng.IntN(20) {
 			v := float64(rng.IntN(900))
