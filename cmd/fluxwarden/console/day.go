@@ -97,11 +97,7 @@ type shareLine struct {
 }
 
 func (c *Console) dayPage(w http.ResponseWriter, r *http.Request) error {
-	st, err := c.station(r)
-	if err != nil {
-		return err
-	}
-	day, err := parseDay(r.PathValue("day"))
+	st, day, err := c.stationDay(r)
 	if err != nil {
 		return err
 	}

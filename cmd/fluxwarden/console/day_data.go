@@ -15,11 +15,7 @@ import (
 
 // dayJSON gives the day's minutes in columns: what the read-out under the pointer shows.
 func (c *Console) dayJSON(w http.ResponseWriter, r *http.Request) error {
-	st, err := c.station(r)
-	if err != nil {
-		return err
-	}
-	day, err := parseDay(r.PathValue("day"))
+	st, day, err := c.stationDay(r)
 	if err != nil {
 		return err
 	}
@@ -85,11 +81,7 @@ var dayFiles = map[string]struct {
 
 // dayFile gives the day's minutes as a file.
 func (c *Console) dayFile(w http.ResponseWriter, r *http.Request) error {
-	st, err := c.station(r)
-	if err != nil {
-		return err
-	}
-	day, err := parseDay(r.PathValue("day"))
+	st, day, err := c.stationDay(r)
 	if err != nil {
 		return err
 	}

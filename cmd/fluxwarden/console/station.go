@@ -52,6 +52,16 @@ func parseDay(text string) (int64, error) {
 	return t.Unix() / 86400, nil
 }
 
+// stationDay reads the station and the day that a request names.
+func (c *Console) stationDay(r *http.Request) (*rules.Station, int64, error) {
+	st, err := c.station(r)
+	if err != nil {
+		return nil, 0, err
+	}
+	day, err := parseDay(r.PathValue("day"))
+	return st, day, err
+}
+
 func dayName(day int64) string { return time.Unix(day*86400, 0).UTC().Format(time.DateOnly) }
 
 func dayLink(station string, day int64) string {
